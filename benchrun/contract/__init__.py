@@ -1,0 +1,1 @@
+"""What plugins are written against: hooks, roles, settable quantities, actions, readings, clocks."""

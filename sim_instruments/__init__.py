@@ -1,0 +1,1 @@
+"""The simulated bench: one world, five kinds of instrument. Imports nothing of benchrun."""
