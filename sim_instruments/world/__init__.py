@@ -1,1 +1,10 @@
-"""sim_instruments/world."""
+"""The simulated bench's physics: what the sources put in, what the device does, what the receivers see, and the truth.
+
+Nothing here knows of SCPI, VISA or benchrun. Instruments are built on top of `World`.
+"""
+
+from __future__ import annotations
+
+from .world import Damage, Event, World
+
+__all__ = ["Damage", "Event", "World"]
