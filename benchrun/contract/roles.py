@@ -17,6 +17,11 @@ from benchrun.contract.capture import Capture, FloatArray, WaveData
 from benchrun.contract.clock import Clock
 from benchrun.contract.kinds import Readable, Settable
 
+#: A value for a placeholder of a dialect entry: what its kind says, or several of that kind where the entry takes a list.
+Value = float | str | bool | Sequence[float] | Sequence[str]
+#: One use of a dialect entry: its name and the values for its placeholders.
+Call = tuple[str, Mapping[str, Value]]
+
 ROLES = ("wave-receiver", "signal-source", "power-meter", "dc-supply", "thermometer")
 
 
@@ -52,20 +57,32 @@ class Link(Protocol):
     def has(self, entry: str) -> bool:
         """Whether the dialect knows this entry."""
 
-    def send(self, entry: str, *, deadline_s: float | None = None, **values: float | str | bool) -> None:
+    def send(self, entry: str, *, deadline_s: float | None = None, **values: Value) -> None:
         """Write the entry's set form and see it completed and free of errors."""
 
-    def ask(self, entry: str, *, deadline_s: float | None = None, **values: float | str | bool) -> Any:
+    def ask(self, entry: str, *, deadline_s: float | None = None, **values: Value) -> Any:
         """Return the typed reply to the entry's query form."""
 
-    def confirm(self, entry: str, *, deadline_s: float | None = None, **values: float | str | bool) -> Any:
+    def confirm(self, entry: str, *, deadline_s: float | None = None, **values: Value) -> Any:
         """Send the set form, read the query form back in the same exchange, and return what stands.
 
         Raises InstrumentError when what stands differs from what was sent by more than the entry's tolerance.
         """
 
-    def block(self, entry: str, count: int, *, deadline_s: float | None = None, **values: float | str | bool) -> FloatArray:
+    def block(self, entry: str, count: int, *, deadline_s: float | None = None, **values: Value) -> FloatArray:
         """Return exactly `count` float64 from the entry's definite-length block."""
+
+    def exchange(self, sets: Sequence[Call], asks: Sequence[Call] = (), *, deadline_s: float | None = None) -> tuple[Any, ...]:
+        """Send several set forms in order, see them completed, and return the replies to several queries, in one message.
+
+        What send, ask and confirm do one by one; one message costs one wait for the answer.
+        """
+
+    def confirm_all(self, calls: Sequence[Call], *, deadline_s: float | None = None) -> tuple[Any, ...]:
+        """Do confirm() for several entries in one message; returns what stands, in the same order."""
+
+    def sweep_s(self, points: int, if_bandwidth_hz: float) -> float:
+        """Return the time (s) that a sweep of so many points takes, by the dialect's timing."""
 
     def identify(self) -> Identity:
         """Ask *IDN? (and *OPT? where the dialect says it is answered)."""

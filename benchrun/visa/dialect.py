@@ -1,0 +1,377 @@
+"""Dialects: the headers of one make of instrument, as data, and how typed values become text.
+
+An entry has a `set` form, an `ask` form or both. Placeholders stand for values: "SOURce{channel}:VOLTage {voltage}". `carries` gives
+the kind of each, so a value is always written by us (with its unit), and never as text that somebody passed in: it cannot carry a second
+command. A file of a make extends the generic dialect of a driver entry by entry, field by field; an entry of the generic dialect
+that has neither form says what the driver needs where the standard is silent.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Annotated, Any, Literal, cast
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+
+from benchrun.contract.kinds import Kind
+from benchrun.contract.roles import Value
+from benchrun.errors import InstrumentError, QuantityError, ReplyError
+from benchrun.quantities import parse
+from benchrun.visa import scpi
+
+#: Suffixes that numbers are sent with, and what one of them is in the kind's own unit (IEEE 488.2 7.7.3, SCPI-1999 volume 1, 7.2).
+#: The first of each kind is the one used where an entry names none.
+SUFFIXES: dict[str, dict[str, float]] = {
+    "frequency": {"HZ": 1.0, "KHZ": 1e3, "MHZ": 1e6, "GHZ": 1e9},
+    "level": {"DBM": 1.0},
+    "ratio": {"DB": 1.0},
+    "voltage": {"V": 1.0, "MV": 1e-3, "UV": 1e-6},
+    "current": {"A": 1.0, "MA": 1e-3, "UA": 1e-6},
+    "power": {"W": 1.0, "UW": 1e-6},
+    "time": {"S": 1.0, "MS": 1e-3, "US": 1e-6, "NS": 1e-9},
+    "temperature": {"CEL": 1.0},
+    "temperature-difference": {"K": 1.0},
+    "angle": {"RAD": 1.0, "DEG": 0.017453292519943295},
+    "resistance": {"OHM": 1.0, "KOHM": 1e3, "MOHM": 1e6},
+}
+#: The kind in which a tolerance on a kind is written.
+TOLERANCE_KIND: dict[str, str] = {"level": "ratio", "temperature": "temperature-difference"}
+#: Relative difference below which two numbers are the same, whatever the tolerance: text has 15 digits at least.
+SAME = 1e-12
+
+_PLACEHOLDER = re.compile(r"\{([a-z][a-z0-9_]*)\}")
+_NODE = r"[A-Za-z][A-Za-z0-9_]*(?:\{[a-z][a-z0-9_]*\})?"
+_HEADER = rf"(?:\*[A-Z]{{3}}|{_NODE}(?::{_NODE})*)"
+_PARAMETER = r"(?:\{[a-z][a-z0-9_]*\}|[A-Za-z][A-Za-z0-9]*|[+-]?[0-9.]+(?:[Ee][+-]?[0-9]+)?)"
+_PARAMETERS = rf"(?: {_PARAMETER}(?:,{_PARAMETER})*)?"
+SET_PATTERN = rf"^{_HEADER}{_PARAMETERS}$"
+ASK_PATTERN = rf"^{_HEADER}\?{_PARAMETERS}$"
+
+ReplyKind = Kind | Literal["block"]
+
+
+def _spelled_out(given: object) -> object:
+    """Let "frequency" stand for {kind: frequency}."""
+    return {"kind": given} if isinstance(given, str) else given
+
+
+class _Strict(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+class Carried(_Strict):
+    """What a placeholder or a reply carries: its kind, the suffix it travels in, and for text the words that are allowed."""
+
+    kind: ReplyKind
+    unit: str | None = Field(None, description="suffix as sent, such as MHZ; empty for none")
+    list: bool = Field(False, description="several values, separated by commas")
+    words: tuple[str, ...] = Field((), description="for text: the words allowed, in long form with the short form's capitals")
+
+    @model_validator(mode="after")
+    def _known(self) -> Carried:
+        suffixes = SUFFIXES.get(self.kind, {})
+        if self.unit and self.unit not in suffixes:
+            known = ", ".join(suffixes) or "none at all"
+            raise ValueError(f"unit {self.unit!r} does not fit kind {self.kind}; it takes {known}")
+        if self.words and self.kind != "text":
+            raise ValueError(f"words are for kind text, not {self.kind}")
+        for word in self.words:
+            scpi.word(word)
+        return self
+
+    @property
+    def suffix(self) -> str:
+        """The suffix that a value is sent with, "" for none."""
+        return next(iter(SUFFIXES.get(self.kind, {})), "") if self.unit is None else self.unit
+
+    @property
+    def scale(self) -> float:
+        """One of the suffix in the kind's own unit."""
+        return SUFFIXES[self.kind][self.suffix] if self.suffix else 1.0
+
+    def write(self, value: Value) -> str:
+        """Return the text of a value. Raises QuantityError for a value that is not of this kind."""
+        if not self.list:
+            return self._write_one(cast("float | str | bool", value))
+        if isinstance(value, str) or not isinstance(value, Sequence) or not value:
+            raise QuantityError(f"{value!r} is not a list of values")
+        return ",".join(self._write_one(one) for one in value)
+
+    def _write_one(self, value: float | str | bool) -> str:
+        if self.kind == "text":
+            return self._write_word(value)
+        if isinstance(value, str) or not isinstance(value, int | float):
+            raise QuantityError(f"{value!r} is not a {self.kind}")
+        if self.kind == "switch":
+            return _write_switch(value)
+        if self.kind == "count":
+            return scpi.whole_number(value)
+        return scpi.number(value / self.scale, self.suffix)
+
+    def _write_word(self, value: object) -> str:
+        if not isinstance(value, str):
+            raise QuantityError(f"{value!r} is not a word")
+        scpi.word(value)
+        if not self.words:
+            return value
+        for allowed in self.words:
+            if scpi.is_form_of(value, allowed):
+                return scpi.short_form(allowed)
+        raise QuantityError(f"{value!r} is not one of {', '.join(self.words)}")
+
+    def read(self, text: str) -> Any:
+        """Return the typed value of a reply. Raises ReplyError where it is not of this kind, or says it is not known."""
+        if self.list:
+            return tuple(self._read_one(part) for part in scpi.split(text, ","))
+        return self._read_one(text)
+
+    def _read_one(self, text: str) -> float | str | bool:
+        if self.kind == "text":
+            return self._read_word(scpi.parse_text(text))
+        if self.kind == "switch":
+            return scpi.parse_switch(text)
+        value = scpi.parse_number(text) * self.scale
+        if not abs(value) < scpi.INFINITY:
+            raise ReplyError(f"the reply {text.strip()!r} means that there is no valid number ({value})")
+        return value
+
+    def _read_word(self, text: str) -> str:
+        return next((allowed for allowed in self.words if scpi.is_form_of(text, allowed)), text)
+
+
+def _write_switch(value: float) -> str:
+    if value not in (0, 1):
+        raise QuantityError(f"{value!r} is neither on (1) nor off (0)")
+    return "1" if value else "0"
+
+
+CarriedField = Annotated[Carried, BeforeValidator(_spelled_out)]
+
+
+class EntryText(_Strict):
+    """One entry as written in a dialect file."""
+
+    set: str | None = Field(None, pattern=SET_PATTERN, description="the set form; capitals give the short form")
+    ask: str | None = Field(None, pattern=ASK_PATTERN, description="the query form")
+    carries: dict[str, CarriedField] = Field({}, description="kind of each placeholder")
+    reply: CarriedField | None = Field(None, description="kind of the reply; left out where it is what the set form carries")
+    tolerance: str | None = Field(None, description="how far the value read back may be from the value sent, with its unit")
+    deadline: str | None = Field(None, description="longest time the exchange may take, with its unit")
+
+
+class Timing(_Strict):
+    """How long one make takes, for deadlines and estimates. Times with their units."""
+
+    point: str = Field("1 ms", description="time for each point beside the filter's")
+    sweep: str = Field("20 ms", description="time for each sweep beside its points'")
+    filter_periods: float = Field(1.5, alias="filter-periods", description="time in the filter, in periods of the IF bandwidth")
+
+
+class DialectText(_Strict):
+    """A *.dialect.yaml file."""
+
+    benchrun: Literal[1]
+    title: str = ""
+    options: bool | None = Field(None, description="whether *OPT? is answered")
+    timing: Timing | None = None
+    entries: dict[str, EntryText] = {}
+
+
+@dataclass(frozen=True, slots=True)
+class Template:
+    """A header and parameters with placeholders, in short form: alternating text and names."""
+
+    pieces: tuple[str, ...]
+
+    @classmethod
+    def of(cls, text: str) -> Template:
+        """Take a form apart at its placeholders."""
+        pieces = _PLACEHOLDER.split(text)
+        return cls(tuple(piece if index % 2 else scpi.short_form(piece) for index, piece in enumerate(pieces)))
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the placeholders, in order."""
+        return self.pieces[1::2]
+
+    @property
+    def header_names(self) -> tuple[str, ...]:
+        """Names of the placeholders in the header (numeric suffixes)."""
+        found = []
+        for text, name in zip(self.pieces[::2], self.names, strict=False):
+            if " " in text:
+                break
+            found.append(name)
+        return tuple(found)
+
+    def fill(self, carries: Mapping[str, Carried], values: Mapping[str, Value]) -> str:
+        """Return the text with the values in place. Raises QuantityError for a value missing or not of its kind."""
+        if len(self.pieces) == 1:
+            return self.pieces[0]
+        parts = list(self.pieces)
+        for index in range(1, len(parts), 2):
+            parts[index] = _filled(parts[index], carries, values)
+        return "".join(parts)
+
+
+def _filled(name: str, carries: Mapping[str, Carried], values: Mapping[str, Value]) -> str:
+    if name not in values:
+        raise QuantityError(f"no value was given for {{{name}}}")
+    try:
+        return carries[name].write(values[name])
+    except QuantityError as error:
+        raise QuantityError(f"{name}: {error}") from None
+
+
+@dataclass(frozen=True, slots=True)
+class Entry:
+    """One entry, ready for use. `carried` is the placeholder that confirm() compares with the reply, "" for none."""
+
+    name: str
+    set: Template | None
+    ask: Template | None
+    carries: Mapping[str, Carried]
+    reply: Carried | None
+    carried: str
+    tolerance: float
+    deadline_s: float | None
+    level: str = field(default="")
+
+    def set_text(self, values: Mapping[str, Value]) -> str:
+        """Return the set form with these values. Raises InstrumentError where there is none, QuantityError for a bad value."""
+        if self.set is None:
+            raise InstrumentError(f"the dialect has no set form of {self.name!r}")
+        return self.set.fill(self.carries, values)
+
+    def ask_text(self, values: Mapping[str, Value]) -> str:
+        """Return the query form with these values. Raises InstrumentError where there is none, QuantityError for a bad value."""
+        if self.ask is None:
+            raise InstrumentError(f"the dialect has no query form of {self.name!r}")
+        return self.ask.fill(self.carries, values)
+
+    def read(self, text: str) -> Any:
+        """Return the typed reply. Raises ReplyError."""
+        if self.reply is None or self.reply.kind == "block":
+            raise ReplyError(f"the dialect does not say what {self.name!r} answers in text")
+        return self.reply.read(text)
+
+    def agrees(self, sent: Value, stands: Value) -> bool:
+        """Whether what stands is what was sent, within the tolerance."""
+        if isinstance(sent, str) or not isinstance(sent, Sequence):
+            return self._one_agrees(sent, cast("float | str", stands))
+        there = cast("Sequence[float | str]", stands)
+        return len(sent) == len(there) and all(map(self._one_agrees, sent, there))
+
+    def _one_agrees(self, sent: float | str, stands: float | str) -> bool:
+        if isinstance(sent, str) or isinstance(stands, str):
+            return self._word(sent) == self._word(stands)
+        return abs(sent - stands) <= max(self.tolerance, SAME * abs(sent))
+
+    def _word(self, value: float | str) -> str:
+        words = self.carries[self.carried].words
+        return next((word for word in words if scpi.is_form_of(str(value), word)), str(value)).upper()
+
+
+def _carried(text: EntryText, set_form: Template | None) -> str:
+    """Name of the one placeholder that is a parameter of the set form, "" where there is none or more than one."""
+    names = [name for name in set_form.names if name not in set_form.header_names] if set_form else []
+    return names[0] if len(names) == 1 else ""
+
+
+def _tolerance(text: EntryText, reply: Carried | None) -> float:
+    if text.tolerance is None or reply is None:
+        return 0.0
+    return parse(text.tolerance, cast(Kind, TOLERANCE_KIND.get(reply.kind, reply.kind)))
+
+
+def compile_entry(name: str, text: EntryText) -> Entry:
+    """Make an entry ready for use. Raises QuantityError (a tolerance or deadline) or ValueError (forms that do not fit)."""
+    set_form = Template.of(text.set) if text.set else None
+    ask_form = Template.of(text.ask) if text.ask else None
+    for form in filter(None, (set_form, ask_form)):
+        _check_placeholders(form, text.carries)
+    carried = _carried(text, set_form)
+    reply = text.reply or (text.carries[carried] if carried else None)
+    if ask_form and reply is None:
+        raise ValueError("it has a query form, and nothing says what the reply is: add `reply:` with its kind")
+    return Entry(
+        name=name,
+        set=set_form,
+        ask=ask_form,
+        carries=text.carries,
+        reply=reply,
+        carried=carried,
+        tolerance=_tolerance(text, reply),
+        deadline_s=parse(text.deadline, "time") if text.deadline else None,
+        level=next((name for name, one in text.carries.items() if one.kind == "level"), ""),
+    )
+
+
+def _check_placeholders(form: Template, carries: Mapping[str, Carried]) -> None:
+    for name in form.names:
+        if name not in carries:
+            raise ValueError(f"nothing says what {{{name}}} carries; known are {', '.join(carries) or 'none'}")
+    for name in form.header_names:
+        if carries[name].kind != "count" or carries[name].list:
+            raise ValueError(f"{{{name}}} is part of a header, so it can only carry one count")
+
+
+@dataclass(frozen=True, slots=True)
+class Dialect:
+    """All entries of one instrument, by name, and how long things take (seconds)."""
+
+    entries: Mapping[str, Entry]
+    options: bool = False
+    point_s: float = 1e-3
+    sweep_s: float = 20e-3
+    filter_periods: float = 1.5
+
+    def has(self, name: str) -> bool:
+        """Whether the entry is there with a form to send."""
+        entry = self.entries.get(name)
+        return entry is not None and (entry.set is not None or entry.ask is not None)
+
+    def __getitem__(self, name: str) -> Entry:
+        """Return an entry. Raises InstrumentError where there is none."""
+        try:
+            return self.entries[name]
+        except KeyError:
+            raise InstrumentError(f"the dialect has no entry {name!r}; it has {', '.join(self.entries)}") from None
+
+
+def merged(base: DialectText, over: DialectText | None) -> DialectText:
+    """Return `base` with the fields that `over` gives in their place."""
+    if over is None:
+        return base
+    entries = dict(base.entries)
+    for name, entry in over.entries.items():
+        under = entries.get(name, EntryText())
+        changes = {key: getattr(entry, key) for key in entry.model_fields_set}
+        entries[name] = under.model_copy(update={**changes, "carries": {**under.carries, **entry.carries}})
+    update: dict[str, Any] = {key: getattr(over, key) for key in over.model_fields_set}
+    return base.model_copy(update={**update, "entries": entries})
+
+
+def compile_dialect(text: DialectText) -> Dialect:
+    """Make a dialect ready for use. Raises ValueError or QuantityError with the entry's name in front."""
+    entries: dict[str, Entry] = {}
+    for name, entry in text.entries.items():
+        try:
+            entries[name] = compile_entry(name, entry)
+        except (ValueError, QuantityError) as error:
+            raise type(error)(f"entry {name!r}: {error}") from None
+    timing = text.timing or Timing()
+    return Dialect(
+        entries=entries,
+        options=bool(text.options),
+        point_s=parse(timing.point, "time"),
+        sweep_s=parse(timing.sweep, "time"),
+        filter_periods=timing.filter_periods,
+    )
+
+
+def missing(dialect: Dialect, names: Iterable[str]) -> tuple[str, ...]:
+    """Names of the entries that the dialect does not have."""
+    return tuple(name for name in names if not dialect.has(name))

@@ -1,0 +1,283 @@
+"""The seam to VISA: the only module that imports pyvisa. It moves bytes, keeps deadlines, and maps every error to ours.
+
+Known of the libraries, and met here:
+- pyvisa-py's raw socket opens a refused port without complaint, and holds small writes back (Nagle) until TCP_NODELAY is set;
+- the terminator is off while a block is read by its count: a line feed among the data ends nothing, and nothing is searched for;
+- libraries are shared by class and path, and closing a manager ends all of its sessions: so sessions close first, the manager last,
+  and only by the last bus that uses it;
+- after a time-out a link is opened anew and cleared before it is used again.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import errno
+import os
+import socket
+import threading
+import time
+from collections import Counter, deque
+from typing import Any, ClassVar
+
+import pyvisa
+from pyvisa.constants import ResourceAttribute, StatusCode
+from pyvisa.highlevel import VisaLibraryBase
+
+from benchrun.contract.clock import Clock
+from benchrun.errors import BenchError, LinkError, NoAnswerError, ReplyError
+from benchrun.visa import scpi
+from benchrun.visa.dialect import Dialect
+from benchrun.visa.exchange import Exchange
+from benchrun.visa.link import Session
+
+__all__ = ["Bus", "Session", "Wire"]
+
+#: Bytes asked for in one read of text; an answer may be longer.
+CHUNK = 16384
+#: Bytes that pyvisa-py takes from a raw socket at once (its own 4096 costs a block 20 % of its time).
+SOCKET_CHUNK = 1 << 18
+OPEN_DEADLINE_S = 5.0
+QUIET = (StatusCode.success_max_count_read, StatusCode.success_device_not_present)
+
+
+class Wire:
+    """Bytes to and from one resource, over pyvisa. Every failure is a LinkError, NoAnswerError or ReplyError that says where."""
+
+    def __init__(self, manager: pyvisa.ResourceManager, name: str, address: str) -> None:
+        self.name = name
+        self.address = address
+        self._manager = manager
+        self._library: Any = manager.visalib
+        self._resource: Any = None
+        self._handle: Any = None
+        self._timeout_ms = -1
+        self._quiet = contextlib.ExitStack()
+
+    @property
+    def where(self) -> str:
+        """Name and address, as messages begin."""
+        return f"{self.name} ({self.address})"
+
+    def open(self) -> None:
+        """Open the resource. Raises LinkError where nothing listens or the address is none."""
+        try:
+            self._resource = self._manager.open_resource(self.address, open_timeout=int(OPEN_DEADLINE_S * 1000))
+            self._handle = self._resource.session
+            self._quiet.enter_context(self._resource.ignore_warning(*QUIET))
+            self._tune_socket()
+            self._terminate(True)
+        except Exception as error:
+            self.close()
+            raise self._cannot_open(error) from error
+
+    def _tune_socket(self) -> None:
+        """Send small writes at once, and see a refused connection now: only pyvisa-py's raw sockets have one to tune."""
+        session = getattr(self._library, "sessions", {}).get(self._handle)
+        line = getattr(session, "interface", None)
+        if not isinstance(line, socket.socket):
+            return
+        refused = line.getsockopt(socket.SOL_SOCKET, socket.SO_ERROR)
+        if refused:
+            raise OSError(refused, os.strerror(refused))
+        line.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+        session.max_recv_size = SOCKET_CHUNK
+
+    def _cannot_open(self, error: Exception) -> LinkError:
+        code = getattr(error, "error_code", None)
+        if code == StatusCode.error_invalid_resource_name:
+            return LinkError(f"{self.name}: {self.address!r} is not a VISA address (such as TCPIP0::192.0.2.21::hislip0::INSTR)")
+        return LinkError(
+            f"{self.where}: cannot be opened, nothing answers there ({_reason(error)}). "
+            "Check that it is on, the cable, and the address in the bench file"
+        )
+
+    def close(self) -> None:
+        """Close the resource; nothing happens where it is closed already or the link is beyond closing."""
+        resource, self._resource, self._handle, self._timeout_ms = self._resource, None, None, -1
+        with contextlib.suppress(Exception):
+            self._quiet.close()
+        with contextlib.suppress(Exception):
+            if resource is not None:
+                resource.close()
+
+    def reopen(self) -> None:
+        """Close, open and clear: nothing of an exchange that failed is left in the link. Raises LinkError."""
+        self.close()
+        self.open()
+        try:
+            self._resource.clear()
+        except Exception:
+            self.close()
+            self.open()
+
+    def query(self, message: str, deadline_s: float) -> str:
+        """Write a message and return the line that answers it. Raises LinkError, NoAnswerError, ReplyError."""
+        ends = time.monotonic() + deadline_s
+        try:
+            self._write(message, deadline_s)
+            answer = self._read_line(ends)
+        except Exception as error:
+            raise self._failed(error, message, deadline_s) from error
+        return self._text(answer, message)
+
+    def query_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[bytes | None, str]:
+        """Write a message and return the block that answers it, and the text behind it.
+
+        (None, text) where the answer is no block: the instrument had an error to tell of. Raises ReplyError for a block that is
+        shorter than its header says or of another length, and as query() does.
+        """
+        ends = time.monotonic() + deadline_s
+        try:
+            self._write(message, deadline_s)
+            self._terminate(False)
+            head = self._read_exactly(2, ends)
+            payload = self._read_payload(head, payload_bytes, ends) if head[:1] == b"#" else None
+            self._terminate(True)
+            tail = self._read_line(ends)
+        except Exception as error:
+            raise self._failed(error, message, deadline_s) from error
+        return payload, self._text(tail if payload is not None else head + tail, message)
+
+    def _read_payload(self, head: bytes, expected: int, ends: float) -> bytes:
+        digits = scpi.block_digits(head)
+        length = scpi.block_length(self._read_exactly(digits, ends)) if digits else expected
+        if length != expected:
+            raise ReplyError(f"the block's header says {length} bytes, {expected} were expected")
+        try:
+            payload = self._read_exactly(length, ends)
+        except pyvisa.VisaIOError as error:
+            if error.error_code != StatusCode.error_timeout:
+                raise
+            raise ReplyError(f"the block's header says {length} bytes, and fewer arrived before the deadline") from error
+        if len(payload) < length:
+            raise ReplyError(f"the block's header says {length} bytes, {len(payload)} arrived")
+        return payload
+
+    def _write(self, message: str, deadline_s: float) -> None:
+        if self._handle is None:
+            raise LinkError(f"{self.where}: the link is closed")
+        milliseconds = max(1, round(deadline_s * 1000))
+        if milliseconds != self._timeout_ms:
+            self._resource.timeout = milliseconds
+            self._timeout_ms = milliseconds
+        self._library.write(self._handle, message.encode("ascii") + b"\n")
+
+    def _read_line(self, ends: float) -> bytes:
+        chunk, status = self._library.read(self._handle, CHUNK)
+        if status != StatusCode.success_max_count_read:
+            return bytes(chunk)
+        line = bytearray(chunk)
+        while status == StatusCode.success_max_count_read and not line.endswith(b"\n"):
+            self._in_time(ends)
+            chunk, status = self._library.read(self._handle, CHUNK)
+            line += chunk
+        return bytes(line)
+
+    def _read_exactly(self, count: int, ends: float) -> bytes:
+        """Return `count` bytes, fewer only where the instrument ended its message early."""
+        chunk, status = self._library.read(self._handle, count)
+        if len(chunk) == count:
+            return bytes(chunk)
+        data = bytearray(chunk)
+        while len(data) < count and status == StatusCode.success_max_count_read:
+            self._in_time(ends)
+            chunk, status = self._library.read(self._handle, count - len(data))
+            data += chunk
+        return bytes(data)
+
+    @staticmethod
+    def _in_time(ends: float) -> None:
+        if time.monotonic() > ends:
+            raise TimeoutError
+
+    def _terminate(self, on: bool) -> None:
+        self._resource.set_visa_attribute(ResourceAttribute.termchar_enabled, on)
+
+    def _text(self, answer: bytes, message: str) -> str:
+        try:
+            return answer.decode("ascii").rstrip("\r\n")
+        except UnicodeDecodeError as error:
+            raise ReplyError(f"{self.where}: the answer to '{message}' is garbled: {answer[:40]!r}. {CHECK_LINE}") from error
+
+    def _failed(self, error: Exception, message: str, deadline_s: float) -> BenchError:
+        if isinstance(error, ReplyError):
+            return ReplyError(f"{self.where}: answer to '{message}': {error}. {CHECK_LINE}")
+        if isinstance(error, BenchError):
+            return error
+        timed_out = isinstance(error, TimeoutError) or getattr(error, "error_code", None) == StatusCode.error_timeout
+        if timed_out and not self._hung_up():
+            return NoAnswerError(f"{self.where}: did not answer '{message}' within {deadline_s:g} s. {CHECK_LINE}")
+        return LinkError(f"{self.where}: the link broke at '{message}' ({_reason(error)}). {CHECK_LINE}")
+
+    def _hung_up(self) -> bool:
+        """Whether the other end closed a raw socket: pyvisa-py only says time-out then."""
+        line = getattr(getattr(self._library, "sessions", {}).get(self._handle), "interface", None)
+        if not isinstance(line, socket.socket):
+            return False
+        try:
+            return line.recv(1, socket.MSG_PEEK | getattr(socket, "MSG_DONTWAIT", 0)) == b""
+        except OSError as error:
+            return error.errno not in (errno.EAGAIN, errno.EWOULDBLOCK)
+
+
+CHECK_LINE = "Check that it is on, its cable, and that nobody else talks to it"
+
+
+def _reason(error: Exception) -> str:
+    """Return a library's error in one line, without its code's number."""
+    text = str(getattr(error, "description", "") or error).strip().rstrip(".")
+    return " ".join(text.split()) or type(error).__name__
+
+
+class Bus:
+    """Owns the one resource manager. `backend` is a word that pyvisa knows ("py", "ivi") or a VISA library object."""
+
+    _users: ClassVar[Counter[int]] = Counter()
+    _lock: ClassVar[threading.Lock] = threading.Lock()
+
+    def __init__(self, backend: str | VisaLibraryBase = "py") -> None:
+        with self._lock:
+            try:
+                self._manager = pyvisa.ResourceManager(f"@{backend}" if isinstance(backend, str) else backend)
+            except Exception as error:
+                raise LinkError(f"VISA backend {backend!r} cannot be used ({_reason(error)}). Choose another under visa: backend:") from error
+            self._users[id(self._manager)] += 1
+        self._sessions: list[Session] = []
+        self._open = True
+
+    def open(
+        self,
+        name: str,
+        address: str,
+        dialect: Dialect,
+        *,
+        clock: Clock,
+        ceiling_dbm: float | None = None,
+        ramp_db: float | None = None,
+        transcript: deque[Exchange] | None = None,
+    ) -> Session:
+        """Open an instrument. Nothing is said to it yet. Raises LinkError where nothing listens at the address."""
+        wire = Wire(self._manager, name, address)
+        wire.open()
+        session = Session(wire, dialect, clock=clock, ceiling_dbm=ceiling_dbm, ramp_db=ramp_db, transcript=transcript)
+        self._sessions.append(session)
+        return session
+
+    def close(self) -> None:
+        """Close all sessions, then the manager unless another bus still uses it. Twice does no harm."""
+        if not self._open:
+            return
+        self._open = False
+        for session in self._sessions:
+            session.close()
+        with self._lock:
+            self._users[id(self._manager)] -= 1
+            if self._users[id(self._manager)] == 0:
+                del self._users[id(self._manager)]
+                self._manager.close()
+
+    def __enter__(self) -> Bus:
+        return self
+
+    def __exit__(self, *_exception: object) -> None:
+        self.close()
