@@ -5,8 +5,8 @@ from __future__ import annotations
 import click
 
 PLACES = {
-    "bash": "Add to ~/.bashrc:                 eval \"$(benchrun completion bash)\"",
-    "zsh": "Add to ~/.zshrc:                  eval \"$(benchrun completion zsh)\"",
+    "bash": 'Add to ~/.bashrc:                 eval "$(benchrun completion bash)"',
+    "zsh": 'Add to ~/.zshrc:                  eval "$(benchrun completion zsh)"',
     "fish": "Once:   benchrun completion fish > ~/.config/fish/completions/benchrun.fish",
 }
 

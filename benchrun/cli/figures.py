@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from benchrun.contract.kinds import UNIT_SUFFIX
-from benchrun.quantities import show
 
 
 def level_text(level_dbm: float | None) -> str:
@@ -38,6 +37,8 @@ def condition_text(key: str, value: float | str) -> str:
     """Return a condition of a reading for a person: ("pump.level_dbm", 3.0) gives 'pump.level +3.0 dBm'."""
     if isinstance(value, str):
         return f"{key.replace('connected.', 'at ')} {value}"
+    from benchrun.quantities import show
+
     for kind, suffix in UNIT_SUFFIX.items():
         if key.endswith(f"_{suffix}"):
             return f"{key.removesuffix(f'_{suffix}')} {show(value, kind)}"

@@ -59,5 +59,7 @@ def _show(report: LevelReport) -> None:
         say(line)
     say()
     say(f"Time: {duration_text(report.duration_s)}, {count_text(report.operator_actions, 'operator action')}.")
+    for note in report.notes:
+        say(note)
     if not report.table.refused:
         say("Every level is inside its limit.")

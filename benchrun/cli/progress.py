@@ -10,6 +10,7 @@ import sys
 import time
 from collections import Counter
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Self
 
 from benchrun.cli.figures import clock_text, condition_text, duration_text
@@ -21,7 +22,6 @@ if TYPE_CHECKING:
 LIVE_INTERVAL_S = 0.1
 CALM_INTERVAL_S = 30.0
 NAME_WIDTH = 10
-BAR_WIDTH = 12
 
 
 class TerminalProgress:
@@ -71,7 +71,7 @@ class TerminalProgress:
         self._flagged += bool(flags)
         if (now_s := self._now_s()) < self._next_s:
             return
-        where = "   ".join(condition_text(key, conditions[key]) for key in self._varying.names())
+        where = "  ".join(condition_text(key, conditions[key]) for key in self._varying.names())
         self._show(now_s, Line(self._phase, where, (index + 1) / max(total, 1), left_s, bench_left_s, self._flagged))
 
     def message(self, text: str) -> None:
@@ -101,33 +101,40 @@ class TerminalProgress:
         self._live.update(line.fitted(width - 1), refresh=True)
 
 
+@dataclass(frozen=True, slots=True)
 class Line:
-    """The line that says where a run is; drops what is least needed until it fits."""
+    """The line that says where a run is."""
 
-    def __init__(
-        self, phase: str, where: str, fraction: float, left_s: float, bench_left_s: float, flagged: int
-    ) -> None:
-        done = int(fraction * BAR_WIDTH)
-        self._name = f"{phase:<{NAME_WIDTH}}"
-        self._where = where
-        self._bar = "#" * done + "." * (BAR_WIDTH - done)
-        self._percent = f"{fraction * 100:3.0f} %"
-        self._left = f"{clock_text(left_s)} left"
-        self._bench = f"({duration_text(bench_left_s)} of bench time)" if bench_left_s > 2 * left_s + 1 else ""
-        self._flagged = f"{flagged} flagged" if flagged else ""
+    phase: str
+    where: str
+    fraction: float
+    left_s: float
+    bench_left_s: float
+    flagged: int
 
     def fitted(self, width: int | None) -> str:
-        """Return the longest form that is at most `width` columns wide."""
-        name, where, bar, percent, left = self._name, self._where, self._bar, self._percent, self._left
+        """Return the line without its bar, or the longest form that is at most `width` columns wide."""
+        percent = f"{self.fraction * 100:3.0f} %"
+        flagged = f"{self.flagged} flagged" if self.flagged else ""
+        ends = (percent, f"{clock_text(self.left_s)} left")
+        where = f"{self.phase:<{NAME_WIDTH}} {self.where}" if self.where else self.phase
+        bench = ""
+        if self.bench_left_s > 2 * self.left_s + 1:  # worth saying only where bench time is not the time on the wall
+            bench = f"({duration_text(self.bench_left_s)} of bench time)"
         if width is None:
-            return _joined(name.strip(), percent, where, left, self._bench, self._flagged)
+            return _joined(where, *ends, bench, flagged)
         forms = (
-            _joined(name, where, bar, percent, left, self._bench, self._flagged),
-            _joined(name, where, bar, percent, left, self._flagged),
-            _joined(name, where, percent, left, self._flagged),
-            _joined(name, percent, left, self._flagged),
+            _joined(where, self._bar(12), *ends, bench, flagged),
+            _joined(where, self._bar(12), *ends, flagged),
+            _joined(where, self._bar(6), *ends, flagged),
+            _joined(where, *ends, flagged),
+            _joined(self.phase, *ends, flagged),
         )
-        return next((form for form in forms if len(form) <= width), f"{percent} {left}".strip()[: max(width, 1)])
+        return next((form for form in forms if len(form) <= width), percent.strip())
+
+    def _bar(self, width: int) -> str:
+        done = int(self.fraction * width)
+        return "#" * done + "." * (width - done)
 
 
 class Varying:

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 
 GAP = 2
 NARROWEST_TEXT = 16
+TALLEST_HEADING = 3
 
 
 def table(
@@ -19,32 +20,30 @@ def table(
     """
     if not rows:
         return []
-    bodies = [max(len(row[k]) for row in rows) for k in range(len(headings))]
-    widths = [max(body, len(heading)) for body, heading in zip(bodies, headings, strict=True)]
-    if width is not None and _total(widths) > width:
-        words = [max((len(word) for word in heading.split()), default=0) for heading in headings]
-        widths = [max(body, word) for body, word in zip(bodies, words, strict=True)]
-        spare = width - _total(widths[:-1]) - GAP
-        if len(widths) > 1 and widths[-1] > spare:
-            widths[-1] = max(spare, NARROWEST_TEXT)
-        widths = _give_back(widths, [len(heading) for heading in headings], width)
+    widths = _widths(headings, [max(len(row[k]) for row in rows) for k in range(len(headings))], width)
     return _lines(headings, widths, right, bottom=True) + [
         line for row in rows for line in _lines(row, widths, right, bottom=False)
     ]
 
 
+def _widths(headings: Sequence[str], bodies: Sequence[int], width: int | None) -> list[int]:
+    """Return the columns' widths with headings folded into as few lines as fit."""
+    for height in range(1, TALLEST_HEADING + 1):
+        widths = [max(body, _narrowest(heading, height)) for body, heading in zip(bodies, headings, strict=True)]
+        if width is None or _total(widths) <= width:
+            return widths
+    *others, _last = widths
+    return [*others, min(widths[-1], max(width - _total([*others, 0]), NARROWEST_TEXT))]
+
+
+def _narrowest(heading: str, height: int) -> int:
+    """Return the least width at which `heading` folds into at most `height` lines."""
+    folds = ((width, _fold(heading, width)) for width in range(len(heading) + 1))
+    return next(width for width, pieces in folds if len(pieces) <= height and max(map(len, pieces)) <= width)
+
+
 def _total(widths: Sequence[int]) -> int:
     return sum(widths) + GAP * max(len(widths) - 1, 0)
-
-
-def _give_back(widths: list[int], wanted: Sequence[int], width: int) -> list[int]:
-    """Widen the columns with folded headings, from the left, as far as room is left over."""
-    room = width - _total(widths)
-    for k, want in enumerate(wanted):
-        if 0 < want - widths[k] <= room:
-            room -= want - widths[k]
-            widths[k] = want
-    return widths
 
 
 def _lines(cells: Sequence[str], widths: Sequence[int], right: Sequence[int], *, bottom: bool) -> list[str]:
@@ -66,6 +65,7 @@ def _lines(cells: Sequence[str], widths: Sequence[int], right: Sequence[int], *,
 
 
 def _fold(cell: str, width: int) -> list[str]:
+    """Fold a cell between words; one that fits, or is empty, stays as it is."""
     if len(cell) <= width:
         return [cell]
     return textwrap.wrap(cell, max(width, 1), break_long_words=False, break_on_hyphens=False) or [""]
