@@ -213,6 +213,10 @@ class Conversation:
             self._look(None)
             return self._requested and not before
 
+    def summary_byte(self) -> int:
+        """The status byte as a service request carries it: bit 6 set."""
+        return self.instrument.status.byte(message_available=bool(self.replies)) | MASTER_SUMMARY
+
     def await_service(self, timeout_ns: int) -> bool:
         """Let virtual time pass until service is requested, at most `timeout_ns`."""
         with self.rack.lock:

@@ -108,8 +108,12 @@ class VirtualClock:
         """Let bench time pass. Raises ValueError for a negative duration."""
         if not 0.0 <= duration_s < 1e9:
             raise ValueError(f"cannot sleep {duration_s} s")
+        self.sleep_ns(round(duration_s * 1e9))
+
+    def sleep_ns(self, duration_ns: int) -> None:
+        """Let a whole number of nanoseconds pass."""
         with self._rack.lock:
-            self._rack.advance(round(duration_s * 1e9))
+            self._rack.advance(duration_ns)
             self._rack.notice()
 
     def align(self, start_ns: int) -> None:

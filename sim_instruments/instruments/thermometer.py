@@ -36,7 +36,7 @@ class Thermometer(Instrument):
         return number(self._reading_degc + (ZERO_CELSIUS_K if self.value("unit") == "K" else 0.0))
 
     COMMANDS: ClassVar[tuple[Command, ...]] = (
-        setting("UNIT:TEMPerature", "unit", Choice(("C", "K")), "C"),
+        setting("UNIT:TEMPerature", "unit", Choice(("C", "CEL", "K")), "C"),
         Command("FETCh[:SCALar][:TEMPerature]", ask=fetch),
         Command("READ[:SCALar][:TEMPerature]", ask=read),
         Command("MEASure[:SCALar][:TEMPerature]", ask=read),
