@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from typing import TypeGuard
 
 from benchrun.cli.tables import table
 
@@ -53,5 +54,5 @@ def _is_number(value: object) -> bool:
     return value is None or (isinstance(value, int | float) and not isinstance(value, bool))
 
 
-def _is_table(value: object) -> bool:
+def _is_table(value: object) -> TypeGuard[Sequence[Record]]:
     return isinstance(value, list | tuple) and bool(value) and all(isinstance(item, Mapping) for item in value)

@@ -14,7 +14,7 @@ import click
 
 from benchrun.cli.application import application
 from benchrun.cli.streams import OutputError, guard_standard_streams, say, talk
-from benchrun.errors import BenchrunError, DiskError, FileProblemsError, InputError, Problem, StoppedError
+from benchrun.errors import BenchrunError, DiskError, FileProblemsError, InputError, Problem, StoppedError, UnsafeError
 
 DEBUG_VARIABLE = "BENCHRUN_DEBUG"
 
@@ -48,7 +48,7 @@ def report(error: BaseException) -> int:
             report_problems(error.problems, talk)
             code = error.exit_code
         case BenchrunError():
-            talk(str(error))
+            talk(str(error), alarm=isinstance(error, UnsafeError))
             code = error.exit_code
         case _:  # whatever is none of these is our own defect
             report_defect(error)

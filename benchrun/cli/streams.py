@@ -16,6 +16,8 @@ from io import TextIOWrapper
 from pathlib import Path
 from typing import Any, TextIO, cast
 
+import click
+
 #: No reader any more: a closed pipe (EPIPE; EINVAL on Windows) or a terminal that hung up (EIO).
 _NO_READER = {errno.EPIPE, errno.EINVAL, errno.EIO}
 
@@ -79,14 +81,21 @@ def guard_standard_streams() -> None:
         setattr(sys, name, cast(TextIO, GuardedStream(stream, drop_all=name == "stderr")))
 
 
-def say(text: str = "") -> None:
-    """Print a result: a line on standard output, folded to a terminal."""
-    print(folded(text), flush=True)
+def say(text: str = "", *, alarm: bool = False) -> None:
+    """Print a result: a line on standard output, folded to a terminal; an alarm in red where colour is wanted."""
+    print(_coloured(folded(text), sys.stdout) if alarm else folded(text), flush=True)
 
 
-def talk(text: str = "") -> None:
-    """Print talk: a line on standard error, folded to a terminal."""
-    print(folded(text, err=True), file=sys.stderr, flush=True)
+def talk(text: str = "", *, alarm: bool = False) -> None:
+    """Print talk: a line on standard error, folded to a terminal; an alarm in red where colour is wanted."""
+    text = folded(text, err=True)
+    print(_coloured(text, sys.stderr) if alarm else text, file=sys.stderr, flush=True)
+
+
+def _coloured(text: str, stream: TextIO) -> str:
+    """Return `text` in bold red on a terminal that shows colour, unless NO_COLOR is set (https://no-color.org)."""
+    plain = os.environ.get("NO_COLOR") or os.environ.get("TERM") == "dumb" or os.name == "nt"
+    return click.style(text, fg="red", bold=True) if stream.isatty() and not plain else text
 
 
 def say_path(path: Path) -> None:

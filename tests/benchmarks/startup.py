@@ -1,4 +1,4 @@
-"""What `benchrun --help` costs: heavy modules imported, entry points scanned, its time beside that of `import click`."""
+"""What `benchrun --help` costs: heavy modules imported, entry points scanned, its time beside `import click`."""
 
 from __future__ import annotations
 

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import io
 import os
 import subprocess
 import sys
 from pathlib import Path
 
 import pytest
+
+from benchrun.cli.streams import talk
 
 #: A command line whose flow prints a lot; the run's exit code is 4, which must come through whatever happens to output.
 LONG = """
@@ -70,3 +73,40 @@ def test_closed_streams_are_no_reason_to_fail():
 def test_our_own_words_are_ascii():
     for path in (Path(__file__).parents[2] / "benchrun" / "cli").glob("*.py"):
         assert path.read_text(encoding="utf-8").isascii(), path
+
+
+class Terminal(io.StringIO):
+    """A text stream that says a person reads along."""
+
+    def isatty(self) -> bool:
+        return True
+
+
+def alarm(monkeypatch, stream, **environment):
+    monkeypatch.delenv("NO_COLOR", raising=False)
+    monkeypatch.setenv("TERM", "xterm")
+    for name, value in environment.items():
+        monkeypatch.setenv(name, value)
+    monkeypatch.setattr(sys, "stderr", stream)
+    talk("PUMP NOT CONFIRMED", alarm=True)
+    return stream.getvalue()
+
+
+@pytest.mark.skipif(os.name == "nt", reason="no colour there")
+def test_colour_only_adds(monkeypatch):
+    plain = "PUMP NOT CONFIRMED\n"
+    coloured = alarm(monkeypatch, Terminal())
+    assert coloured != plain
+    assert "PUMP NOT CONFIRMED" in coloured
+    assert alarm(monkeypatch, io.StringIO()) == plain
+    assert alarm(monkeypatch, Terminal(), NO_COLOR="1") == plain
+    assert alarm(monkeypatch, Terminal(), TERM="dumb") == plain
+
+
+def test_long_lines_fold_between_words_and_keep_their_indent(monkeypatch):
+    monkeypatch.setattr(sys, "stderr", Terminal())  # 80 columns, where it does not say
+    talk("  a.yaml:1:2: " + "word " * 30)
+    lines = sys.stderr.getvalue().splitlines()
+    assert max(map(len, lines)) <= 80
+    assert [line[:6] for line in lines[1:]] == ["      "] * (len(lines) - 1)
+    assert " ".join(" ".join(lines).split()) == "a.yaml:1:2: " + " ".join(["word"] * 30)

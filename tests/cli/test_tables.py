@@ -58,3 +58,8 @@ def test_every_line_of_one_column_starts_at_one_place(rows):
     lines = table(("first", "second", "third"), [(a or "x", b or "x", c or "x") for a, b, c in rows])
     place = lines[0].index("second")
     assert all(line[place - 1] == " " != line[place] for line in lines)
+
+
+def test_a_note_for_which_nothing_is_left_goes_below_its_row():
+    lines = table(("plane", "level", ""), [("measurement receiver", "-4.2 dBm", "0.08 dB compressed")], width=40)
+    assert lines == ["plane                 level", "measurement receiver  -4.2 dBm", "    0.08 dB compressed"]
