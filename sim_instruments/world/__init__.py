@@ -5,8 +5,9 @@ Nothing here knows of SCPI, VISA or benchrun. Instruments are built on top of `W
 
 from __future__ import annotations
 
+from .inspection import Damage
 from .reference import reference_sha256, reference_world
 from .truth import ErrorTerms, HotTruth, Truth
-from .world import Damage, Event, World
+from .world import Event, World
 
 __all__ = ["Damage", "ErrorTerms", "Event", "HotTruth", "Truth", "World", "reference_sha256", "reference_world"]

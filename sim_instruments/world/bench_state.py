@@ -18,6 +18,8 @@ from .standards import Standards
 
 INPUT, OUTPUT = "input", "output"
 DEVICE = "device"
+# An image that would fall below this is far from anything that the bench passes.
+_LOWEST_HZ = 1e6
 _MOST_KNOWN = 20_000
 # The probe is on the carrier when it is no farther than this.
 ON_CARRIER_HZ = 1.0
@@ -31,6 +33,11 @@ class SourceSetting:
     level_dbm: float = -60.0
     on: bool = False
 
+    @property
+    def key(self) -> tuple[float, float]:
+        """What a reading's noise depends on while the source is on."""
+        return self.frequency_hz, self.level_dbm
+
 
 @dataclass(frozen=True, slots=True)
 class Tone:
@@ -43,7 +50,7 @@ class Tone:
 
 @dataclass(frozen=True, slots=True)
 class DeviceState:
-    """What the device's behaviour depends on besides the waves: bias, and temperature rise in K (rounded, see `World`)."""
+    """What the device's behaviour depends on besides the waves: bias, and temperature rise in K (rounded)."""
 
     bias: Bias
     rise_k: float
@@ -132,14 +139,15 @@ class Bench:
     def device_waves(self, pump: Tone, probe: Tone, state: DeviceState) -> dict[str, PlaneWaves]:
         """Waves at both planes with the device in place (or one of its ports in the air)."""
         points = len(probe.frequency_hz)
-        image_hz = 2.0 * pump.frequency_hz - probe.frequency_hz
-        every_hz = np.concatenate([image_hz, pump.frequency_hz, probe.frequency_hz])
+        every_hz = tones_hz(pump, probe).reshape(-1)
         networks = {plane: self.network(plane, every_hz) for plane in (INPUT, OUTPUT)}
         source2 = self.source_wave(OUTPUT, probe)
         merged = pump.on and probe.on and bool(np.all(np.abs(probe.frequency_hz - pump.frequency_hz) < ON_CARRIER_HZ))
         carrier = self.carrier(pump, state, source2 if merged else None)
         waves = np.zeros((4, 3, points), dtype=np.complex128)
-        waves[:, PUMP] = np.array([np.broadcast_to(w, points) for w in (carrier.a1, carrier.b1, carrier.a2, carrier.b2)])
+        waves[:, PUMP] = np.array(
+            [np.broadcast_to(w, points) for w in (carrier.a1, carrier.b1, carrier.a2, carrier.b2)]
+        )
         if probe.on and not merged:
             sidebands = self.sidebands(pump, probe.frequency_hz, carrier, state)
             v, b = sidebands.solve(*_sideband_terms(networks[INPUT], networks[OUTPUT], source2, points))
@@ -165,11 +173,17 @@ class Bench:
         planes: dict[str, PlaneWaves] = {}
         if DEVICE in (self.connected[INPUT], self.connected[OUTPUT]):
             planes = self.device_waves(pump, probe, state)
-        every_hz = np.concatenate([2.0 * pump.frequency_hz - probe.frequency_hz, pump.frequency_hz, probe.frequency_hz])
+        every_hz = tones_hz(pump, probe).reshape(-1)
         for plane, source, slot in ((INPUT, pump, PUMP), (OUTPUT, probe, PROBE)):
             if self.connected[plane] != DEVICE:
                 planes[plane] = self.terminated_waves(plane, self.connected[plane], source, slot, every_hz)
         return planes
+
+
+def tones_hz(pump: Tone, probe: Tone) -> FloatArray:
+    """Frequencies (3, P) of image, pump and probe."""
+    image_hz = np.maximum(2.0 * pump.frequency_hz - probe.frequency_hz, _LOWEST_HZ)
+    return np.array([image_hz, pump.frequency_hz, probe.frequency_hz])
 
 
 def _sideband_terms(

@@ -5,9 +5,10 @@ In the frame of its input wave (u = a1/|a1|, A = |a1|, x = a2 u*) it gives b = u
     f1 = S11(A) A + S12 x + t12 w(A) x*
     f2 = g(A) A + S22(A) x + t22 w(A) x* + q(A) (e1 x^2 + e2 |x|^2 + e3 x*^2)
 
-with a compressing gain g (Rapp's knee, p = 2, and a smooth phase shift), and w, q growing smoothly from 0. Everything that holds
-near an operating point (S and T coefficients at the sidebands) is the derivative of this one function, so the parts fit together.
-All expressions work on Python numbers and on arrays alike: one reading is scalar arithmetic, a followed sweep is arrays.
+with a compressing gain g (Rapp's knee, p = 2, and a smooth phase shift), and w, q growing smoothly from 0. Everything
+that holds near an operating point (S and T coefficients at the sidebands) is the derivative of this one function, so
+the parts fit together. All expressions work on Python numbers and on arrays alike: one reading is scalar arithmetic,
+a followed sweep is arrays.
 """
 
 from __future__ import annotations
@@ -160,21 +161,26 @@ class Device:
         activity = 1.25 * relative / (relative + 0.25) * knee
         return Bias(drain_v, gate_v, quiescent_a, activity, math.sqrt(activity))
 
-    def coefficients(self, frequency_hz: Value, bias: Bias, rise_k: float) -> Coefficients:
-        """Evaluate the device; the temperature rise acts on the gain."""
-        own = self.own
+    def linear(self, frequency_hz: Value, bias: Bias) -> tuple[Value, Value, Value]:
+        """S11, S12 and S22 at small drive: between the cold device's and the active one's."""
+        own, active = self.own, bias.activity
         cold11, cold22 = self._at("cold_s11", frequency_hz), self._at("cold_s22", frequency_hz)
-        active = bias.activity
         s11 = cold11 + active * (self._at("s11", frequency_hz) - cold11)
         s22 = cold22 + active * (self._at("s22", frequency_hz) - cold22)
-        turn = -2.0 * math.pi * (frequency_hz - self._centre_hz)
+        turn = -2.0 * math.pi * own["s12_delay_s"] * (frequency_hz - self._centre_hz)
         s12_size = wave_ratio(own["return_gain_db"] - own["gain_db"])
-        s12 = s12_size * _turned(math.radians(own["s12_angle_deg"]) + turn * own["s12_delay_s"])
+        return s11, s12_size * _turned(math.radians(own["s12_angle_deg"]) + turn), s22
+
+    def coefficients(self, frequency_hz: Value, bias: Bias, rise_k: float) -> Coefficients:
+        """Evaluate the device; the temperature rise acts on the gain."""
+        own, active = self.own, bias.activity
+        s11, s12, s22 = self.linear(frequency_hz, bias)
         place = (frequency_hz - self._centre_hz) / self._band_hz
         place = place / (1.0 + (place / 6.0) ** 2) ** 0.5
         gain_db = self._gain_db + own["gain_slope_db"] * place + own["gain_curve_db"] * place**2
         gain_db = gain_db + own["gain_db_per_k"] * rise_k
-        angle = math.radians(own["gain_angle_deg"]) + turn * own["gain_delay_s"]
+        turn = -2.0 * math.pi * own["gain_delay_s"] * (frequency_hz - self._centre_hz)
+        angle = math.radians(own["gain_angle_deg"]) + turn
         # A cold device still leaks forward as much as backward: it is a passive, reciprocal two-port.
         gain = s12 + bias.transconductance * (10.0 ** (gain_db / 20.0) * _turned(angle) - s12)
         volts = max(bias.drain_v, 0.02 * own["drain_voltage_v"]) / own["drain_voltage_v"]
@@ -195,20 +201,16 @@ class Device:
             growth=self._growth,
         )
 
-    def linear_at(self, frequency_hz: FloatArray, bias: Bias) -> tuple[ComplexArray, ComplexArray, ComplexArray]:
-        """S11, S12 and S22 at small drive: what changes between a pump and its sidebands."""
-        at = self.coefficients(frequency_hz, bias, 0.0)
-        return at.s11, at.s12, at.s22
-
     def baseband(self, offset_hz: FloatArray) -> ComplexArray:
-        """Bias network's response h(Delta) to the envelope, with h(-Delta) = h(Delta)*: 1 at its resonance, 0 at Delta 0."""
+        """Bias network's response h(Delta) to the envelope, h(-Delta) = h(Delta)*: 1 at its resonance, 0 at Delta 0."""
         own = self.own["bias_resonance"]
         ratio = np.asarray(offset_hz, dtype=np.float64) / own["offset_hz"]
         forward = 1j * ratio / own["quality"]
-        return forward / (1.0 - ratio**2 + forward)
+        response: ComplexArray = forward / (1.0 - ratio**2 + forward)
+        return response
 
     def bias_reaction(self, activity: float) -> tuple[complex, float, float]:
-        """Strength of the bias network's reaction on b2, and the weights of a1 and a2 in the envelope that drives it."""
+        """Strength of the bias network's reaction on b2; weights of a1 and a2 in the envelope that drives it."""
         return self._resonance * activity * self._resonance_phasor, self.own["bias_resonance"]["input_weight"], 1.0
 
     def drain_current_a(self, bias: Bias, output_wave: float) -> float:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from hashlib import blake2b
 
 import numpy as np
@@ -39,10 +40,11 @@ def phasor(seed: int, *key: Key) -> complex:
 def complex_normal(seed: int, *key: Key) -> complex:
     """Circular complex normal number with unit mean square."""
     real, imaginary = stream(seed, *key).standard_normal(2)
-    return complex(real, imaginary) / np.sqrt(2.0)
+    return complex(real, imaginary) * math.sqrt(0.5)
 
 
 def complex_normals(generator: np.random.Generator, *shape: int) -> npt.NDArray[np.complex128]:
     """Circular complex normal numbers with unit mean square."""
     pairs = generator.standard_normal((*shape, 2))
-    return (pairs[..., 0] + 1j * pairs[..., 1]) * np.sqrt(0.5)
+    numbers: npt.NDArray[np.complex128] = (pairs[..., 0] + 1j * pairs[..., 1]) * math.sqrt(0.5)
+    return numbers

@@ -36,4 +36,5 @@ def power_ratio(ratio_db: float) -> float:
 
 def delayed(frequency_hz: FloatArray, delay_s: float) -> ComplexArray:
     """Phase factor of a delay, exp(-j 2 pi f tau)."""
-    return np.exp(-2j * np.pi * frequency_hz * delay_s)
+    factor: ComplexArray = np.exp(-2j * np.pi * frequency_hz * delay_s)
+    return factor

@@ -1,8 +1,9 @@
 """The operating point: what the pump makes of the device between the two sides of the bench.
 
-Carrier: a1 = s1 + G1 b1, a2 = s2 + G2 b2 with the device's b(a1, a2), by fixed-point iteration (the loop gain is small).
-Sidebands: the device is linear in (a1(+), a1(-)*, a2(+), a2(-)*) around that point, with its derivatives as coefficients;
-the bench reflects each sideband at its own frequency.
+Carrier: a1 = s1 + G1 b1, a2 = s2 + G2 b2 with the device's b(a1, a2), by fixed-point iteration (the loop
+gain is small).
+Sidebands: the device is linear in (a1(+), a1(-)*, a2(+), a2(-)*) around that point, its derivatives being the
+coefficients; the bench reflects each sideband at its own frequency.
 """
 
 from __future__ import annotations
@@ -57,9 +58,9 @@ def solve_carrier(
         f1, f2 = coefficients.outputs(abs(a1), a2 * frame.conjugate())
         b1, b2 = frame * f1, frame * f2
         next1, next2 = source1 + reflection1 * b1, source2 + reflection2 * b2
-        change, size = abs(next1 - a1) + abs(next2 - a2), abs(next1) + abs(next2)
+        settled = abs(next1 - a1) + abs(next2 - a2) <= _TOLERANCE * (abs(next1) + abs(next2))
         a1, a2 = next1, next2
-        if np.all(change <= _TOLERANCE * size):
+        if settled if isinstance(settled, bool) else settled.all():
             break
     return Carrier(coefficients, a1, b1, a2, b2)
 
@@ -81,15 +82,16 @@ def _wirtinger(frame: Value, size: Value, x: Value, f: Value, slopes: tuple[Valu
 
 @dataclass(frozen=True, slots=True)
 class Sidebands:
-    """The device around its operating point: b = matrix v, v = (a1(+), a1(-)*, a2(+), a2(-)*), b alike; shape (P, 4, 4)."""
+    """The device around its operating point: b = matrix v, v = (a1(+), a1(-)*, a2(+), a2(-)*); shape (P, 4, 4)."""
 
     matrix: ComplexArray
 
     def solve(self, reflection: ComplexArray, source: ComplexArray) -> tuple[ComplexArray, ComplexArray]:
         """v and b, shape (P, 4), for the bench's reflections and sources in the order of v (conjugated where v is)."""
         loop = np.eye(4) - reflection[:, :, None] * self.matrix
-        v = np.linalg.solve(loop, source[:, :, None])[:, :, 0]
-        return v, (self.matrix @ v[:, :, None])[:, :, 0]
+        v: ComplexArray = np.linalg.solve(loop, source[:, :, None])[:, :, 0].astype(np.complex128, copy=False)
+        b: ComplexArray = (self.matrix @ v[:, :, None])[:, :, 0]
+        return v, b
 
     def from_output(self, reflection1: ComplexArray) -> ComplexArray:
         """What port 2 shows with port 1 closed by the bench: (b2(+), b2(-)*) per (a2(+), a2(-)*), shape (P, 2, 2)."""
@@ -123,7 +125,7 @@ def _add_dispersion(
 ) -> None:
     """The passive parts of the device at the sidebands' own frequencies."""
     points = len(probe_hz)
-    s11, s12, s22 = device.linear_at(np.concatenate([pump_hz, probe_hz, 2.0 * pump_hz - probe_hz]), bias)
+    s11, s12, s22 = device.linear(np.concatenate([pump_hz, probe_hz, 2.0 * pump_hz - probe_hz]), bias)
     for (row, column), values in (((0, 0), s11), ((0, 2), s12), ((2, 2), s22)):
         centre, plus, minus = values.reshape(3, points)
         matrix[:, row, column] += plus - centre

@@ -19,7 +19,7 @@ _KNEE = 4.0
 def nominal_loss_db(loss: float | Mapping[str, Sequence[float]], frequency_hz: FloatArray) -> FloatArray:
     """Loss of a part by its description, a number or a table; the table's ends hold beyond it."""
     if isinstance(loss, Mapping):
-        return np.interp(frequency_hz, loss["frequency_hz"], loss["loss_db"])
+        return np.interp(frequency_hz, loss["frequency_hz"], loss["loss_db"]).astype(np.float64)
     return np.full(len(frequency_hz), float(loss))
 
 
@@ -35,7 +35,8 @@ class Ripple:
     def at(self, frequency_hz: FloatArray) -> ComplexArray:
         """Complex ratio at each frequency."""
         turn = 2.0 * np.pi * self._delay_s * (frequency_hz - self._centre_hz) + self._angle_rad
-        return 1.0 + self._size * np.exp(-1j * turn)
+        ratio: ComplexArray = 1.0 + self._size * np.exp(-1j * turn)
+        return ratio
 
 
 class Part:
@@ -59,7 +60,8 @@ class Part:
     def transmission(self, frequency_hz: FloatArray) -> ComplexArray:
         """Wave ratio from one side to the other."""
         loss_db = nominal_loss_db(self._loss, frequency_hz) + self._error_db
-        return 10.0 ** (-loss_db / 20.0) * self._ripple.at(frequency_hz) * delayed(frequency_hz, self._delay_s)
+        ratio: FloatArray = 10.0 ** (-loss_db / 20.0)
+        return ratio * self._ripple.at(frequency_hz) * delayed(frequency_hz, self._delay_s)
 
     def carry(self, wave: Wave, transmission: Wave) -> Wave:
         """Return the wave behind the part."""

@@ -1,6 +1,6 @@
 """What a wave receiver makes of the waves at its inputs: compression, crosstalk, drift, filters, noise, phase.
 
-Arrays are (tones, receivers, points); "present" tones are those that stand at the inputs, "tuned" ones those that are asked for.
+Arrays are (tones, receivers, points). Some tones are present at the inputs; the tunings are those that are asked for.
 """
 
 from __future__ import annotations
@@ -47,7 +47,7 @@ class Incoming:
 
 
 def kappa_per_w(constants: Mapping[str, Any]) -> complex:
-    """kappa of y = x (1 - kappa |x|^2): k (1 + j r), with k such that the loss at the quoted level is the quoted one."""
+    """kappa of y = x (1 - kappa |x|^2): k (1 + j r), with k from the quoted loss at the quoted level."""
     own = constants["receiver"]
     power_w = power_ratio(own["compression_at_dbm"] - 30.0)
     ratio = own["kappa_imaginary_ratio"]
@@ -55,14 +55,14 @@ def kappa_per_w(constants: Mapping[str, Any]) -> complex:
     # |1 - k P (1 + j r)|^2 = remaining, the smaller root.
     a, b, c = 1.0 + ratio**2, -2.0, 1.0 - remaining
     k = (-b - math.sqrt(b * b - 4.0 * a * c)) / (2.0 * a * power_w)
-    return k * complex(1.0, ratio)
+    return float(k) * complex(1.0, ratio)
 
 
 def intermodulate(waves: ComplexArray, kappa: complex) -> ComplexArray:
     """y = x (1 - kappa |x|^2) for the sum x of three tones at equal distances, as it stands at each of the three.
 
-    `waves`: (3, ...) in the order image, pump, probe. Every product i + j - l that falls on a tone is counted. Products that fall
-    beside the three tones are left out.
+    `waves`: (3, ...) in the order image, pump, probe. Every product i + j - l that falls on a tone is counted. Products
+    that fall beside the three tones are left out.
     """
     image, pump, probe = waves
     power = np.abs(waves) ** 2
@@ -97,7 +97,9 @@ class Receivers:
         self._instrument, self._connected, self._seed, self._on = instrument, tuple(connected), seed, imperfections
         self._own = constants["receiver"]
         self.kappa = kappa_per_w(constants) if imperfections.compression else 0j
+        self._drift_side = 0.5 * sign(seed, "drift", instrument)
         self._gains: dict[str, complex] = {}
+        self._mixing: dict[tuple[str, ...], ComplexArray] = {}
         source = constants["source"]
         self._skirt_log_hz = np.log10(source["skirt_offset_hz"])
         self._skirt_db = np.asarray(source["skirt_dbc_per_hz"])
@@ -113,7 +115,7 @@ class Receivers:
         """Drift since time 0 for a change of the ambient temperature: common to all receivers, and between them."""
         own = self._own
         place = self._connected.index(label) if label in self._connected else 0
-        side = 0.5 * sign(self._seed, "drift", self._instrument) * (-1.0) ** place
+        side = self._drift_side * (-1.0) ** place
         gain_db = own["gain_drift_common_db_per_k"] + side * own["gain_drift_between_db_per_k"]
         angle_deg = own["phase_drift_common_deg_per_k"] + side * own["phase_drift_between_deg_per_k"]
         angle_rad = math.radians(angle_deg * change_k)
@@ -123,22 +125,30 @@ class Receivers:
         """Wave ratio of the pump's noise in a bandwidth to the pump, log-interpolated (METHODS section 5)."""
         distance = np.clip(np.abs(offset_hz), 1e-3, None)
         level_db = np.interp(np.log10(distance), self._skirt_log_hz, self._skirt_db)
-        return 10.0 ** ((level_db + 10.0 * math.log10(bandwidth_hz)) / 20.0)
+        ratio: FloatArray = 10.0 ** ((level_db + 10.0 * math.log10(bandwidth_hz)) / 20.0)
+        return ratio
 
     def _rejection(self, distance_hz: FloatArray, if_bandwidth_hz: float) -> FloatArray:
         """Wave ratio that the IF filter leaves of a tone at a distance from the tuning."""
         relative = np.maximum(np.abs(distance_hz) / if_bandwidth_hz, 1.0)
         own = self._own
         loss_db = np.minimum(own["if_rejection_slope_db"] * np.log10(relative), own["if_rejection_limit_db"])
-        return 10.0 ** (-loss_db / 20.0)
+        left: FloatArray = 10.0 ** (-loss_db / 20.0)
+        return left
 
     def _crossed(self, waves: ComplexArray, labels: Sequence[str]) -> ComplexArray:
         """Every receiver hears the others a little."""
         if not self._on.crosstalk or len(labels) < 2:
             return waves
-        size = wave_ratio(self._own["crosstalk_db"])
-        leak = np.array([[phasor(self._seed, "crosstalk", self._instrument, one, other) for other in labels] for one in labels])
-        mixed: ComplexArray = np.einsum("rs,tsp->trp", np.eye(len(labels)) + size * (leak * (1.0 - np.eye(len(labels)))), waves)
+        key = tuple(labels)
+        if key not in self._mixing:
+            size = wave_ratio(self._own["crosstalk_db"])
+            leak = [
+                [phasor(self._seed, "crosstalk", self._instrument, one, other) for other in labels] for one in labels
+            ]
+            same = np.eye(len(labels), dtype=np.complex128)
+            self._mixing[key] = same + size * np.array(leak) * (1.0 - same)
+        mixed: ComplexArray = self._mixing[key] @ waves
         return mixed
 
     def read(
@@ -162,7 +172,9 @@ class Receivers:
         turns = np.exp(2j * np.pi * random.random((4, tones, points)))
         if self._on.skirt:
             # A tone beside the tuning leaves a residue that turns by unknown angles from one average to the next.
-            residue = self._rejection(distance, how.if_bandwidth_hz) / math.sqrt(how.averages) * turns[:3].swapaxes(0, 1)
+            residue = (
+                self._rejection(distance, how.if_bandwidth_hz) / math.sqrt(how.averages) * turns[:3].swapaxes(0, 1)
+            )
             through = np.where(through == 0j, residue, through)
         readings: ComplexArray = np.einsum("ktp,twp->kwp", through, heard)
         if self._on.skirt:
@@ -175,7 +187,7 @@ class Receivers:
             floor_dbm = self._own["floor_dbm_in_1khz"] + 10.0 * math.log10(how.noise_bandwidth_hz / 1e3)
             readings = readings + wave_ratio(floor_dbm - 30.0) * noise[1]
         if not coherent:
-            # Retuned receivers start each tone anew: its phase is common to its waves and says nothing about the other tones.
+            # Retuned receivers start each tone anew: its phase is common to its waves, and unknown to the other tones.
             readings = readings * turns[3][:, None, :]
         return readings
 
@@ -185,7 +197,9 @@ class Receivers:
         """The pump's noise at each tuning; on the pump itself it is part of the carrier."""
         ratio = self.skirt_ratio(offset_hz, how.noise_bandwidth_hz)
         ratio = np.where(np.abs(offset_hz) > how.if_bandwidth_hz, ratio, 0.0)
-        noise: ComplexArray = (ratio * complex_normals(random, *offset_hz.shape))[:, None, :] * incoming.skirt[None, :, :]
+        noise: ComplexArray = (ratio * complex_normals(random, *offset_hz.shape))[:, None, :] * incoming.skirt[
+            None, :, :
+        ]
         return noise
 
     def _response(self, label: str, change_k: float) -> complex:

@@ -30,7 +30,7 @@ def reference_sha256(name: str = "R1") -> str:
 
 
 def overlaid(constants: Mapping[str, Any], changes: Mapping[str, Any]) -> dict[str, Any]:
-    """Return a copy with some numbers replaced, at any depth. Raises ValueError for a name that the constants do not have."""
+    """Return a copy with some numbers replaced, at any depth. Raises ValueError for a name that is not there."""
     unknown = sorted(set(changes) - set(constants))
     if unknown:
         raise ValueError(f"the reference world has no {', '.join(unknown)}; it has: {', '.join(sorted(constants))}")

@@ -5,8 +5,8 @@ Waves at a plane: `a` towards the device, `b` away from it. At each frequency th
     a = reflection b + transfer s            s: the wave that the feed delivers
     x = toward a + away b                    x: the wave at a receiver's input
 
-so the readings of two receivers at one coupler are a linear map of (a, b), whatever the source and its match: the one-port
-error model (METHODS section 2) holds exactly, with e11 = -Qr/Pr, e00 = Pm/Pr, e10e01 = Qm/Pr + e00 e11 and K = 1/Pr.
+so the readings of two receivers at one coupler are a linear map of (a, b), whatever the source and its match: the
+one-port error model holds exactly, with e11 = -Qr/Pr, e00 = Pm/Pr, e10e01 = Qm/Pr + e00 e11, and a = r/Pr where b is 0.
 """
 
 from __future__ import annotations
@@ -89,7 +89,8 @@ class Coupler:
         error_db = own["coupling_error_db"]
         self._error_db = {arm: error_db * normal(seed, "coupling", name, arm) for arm in ("incident", "reflected")}
         self._ripple = {
-            arm: Ripple(constants, seed, f"{name} {arm}", own["coupling_ripple_db"]) for arm in ("incident", "reflected")
+            arm: Ripple(constants, seed, f"{name} {arm}", own["coupling_ripple_db"])
+            for arm in ("incident", "reflected")
         }
 
     def _arm(self, arm: str, frequency_hz: FloatArray) -> ComplexArray:
@@ -100,7 +101,7 @@ class Coupler:
         return self._directivity * self._leak_phasor[arm] * delayed(frequency_hz, self._own["directivity_delay_s"])
 
     def _adapter(self, frequency_hz: FloatArray) -> tuple[ComplexArray, ComplexArray, ComplexArray]:
-        """S11 (coupler's side), S21 = S12, S22 (plane's side) of a lossless adapter and the parts between it and the plane."""
+        """S11 (coupler's side), S21 = S12, S22 (plane's side) of a lossless adapter and the parts beyond it."""
         size = wave_ratio(self._own["adapter_reflection_db"])
         delay = delayed(frequency_hz, self._own["adapter_delay_s"])
         near = size * self._adapter_phasor * delay
@@ -127,10 +128,12 @@ class Coupler:
             "source in": source_in,
             "source out": _sum((back, main), (source_in, source_end)),
             "incident": _scaled(
-                _sum((source_in, 1.0), (back, self._leak("incident", frequency_hz))), self._arm("incident", frequency_hz)
+                _sum((source_in, 1.0), (back, self._leak("incident", frequency_hz))),
+                self._arm("incident", frequency_hz),
             ),
             "reflected": _scaled(
-                _sum((back, 1.0), (source_in, self._leak("reflected", frequency_hz))), self._arm("reflected", frequency_hz)
+                _sum((back, 1.0), (source_in, self._leak("reflected", frequency_hz))),
+                self._arm("reflected", frequency_hz),
             ),
         }
 
@@ -139,11 +142,9 @@ def _scaled(pair: Pair, factor: ComplexArray) -> Pair:
     return pair[0] * factor, pair[1] * factor
 
 
-def _sum(*terms: tuple[Pair, ComplexArray | float]) -> Pair:
-    return (
-        sum((pair[0] * factor for pair, factor in terms), start=np.complex128(0)),
-        sum((pair[1] * factor for pair, factor in terms), start=np.complex128(0)),
-    )
+def _sum(first: tuple[Pair, ComplexArray | float], second: tuple[Pair, ComplexArray | float]) -> Pair:
+    (one, one_factor), (other, other_factor) = first, second
+    return one[0] * one_factor + other[0] * other_factor, one[1] * one_factor + other[1] * other_factor
 
 
 class Side:
@@ -186,7 +187,8 @@ class Side:
         """Reflection of the connection made at the mating with this number."""
         size = self._constants["connection_repeatability"]
         error = size * complex_normal(self._seed, "mating", self.plane, mating)
-        return error * delayed(frequency_hz - self._constants["centre_hz"], 0.3e-9)
+        turned: ComplexArray = error * delayed(frequency_hz - self._constants["centre_hz"], 0.3e-9)
+        return turned
 
     def ideal_network(self, frequency_hz: FloatArray) -> SideNetwork:
         """The side with a perfect connection: what a calibration is after."""

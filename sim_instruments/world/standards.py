@@ -14,7 +14,7 @@ _Z0_OHM = 50.0
 
 
 def _polynomial(coefficients: Sequence[float], frequency_hz: FloatArray) -> FloatArray:
-    return np.polynomial.polynomial.polyval(frequency_hz, np.asarray(coefficients, dtype=np.float64))
+    return np.polyval(np.asarray(coefficients[::-1], dtype=np.float64), frequency_hz).astype(np.float64)
 
 
 def _behind_line(
@@ -62,9 +62,7 @@ class Standards:
         loss, line_ohm = spec.get("loss_ohm_per_s", 0.0), spec.get("line_ohm", _Z0_OHM)
         return _behind_line(termination, frequency_hz, delay_s, loss, line_ohm)
 
-    def _termination(
-        self, what: str, spec: Mapping[str, Any], frequency_hz: FloatArray
-    ) -> tuple[float, ComplexArray]:
+    def _termination(self, what: str, spec: Mapping[str, Any], frequency_hz: FloatArray) -> tuple[float, ComplexArray]:
         """Offset delay in s, and reflection of what ends the offset line."""
         omega = 2.0 * np.pi * frequency_hz
         delay_s = spec.get("delay_s", 0.0)
@@ -101,4 +99,5 @@ class Standards:
     def _empty(self, frequency_hz: FloatArray) -> ComplexArray:
         own = self._constants["unconnected"]
         load = 2j * np.pi * frequency_hz * own["capacitance_f"] * _Z0_OHM
-        return own["magnitude"] * (1.0 - load) / (1.0 + load)
+        reflection: ComplexArray = own["magnitude"] * (1.0 - load) / (1.0 + load)
+        return reflection

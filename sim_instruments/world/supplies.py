@@ -61,7 +61,7 @@ class Supplies:
         """Bias that a channel feeds, or its own place."""
         for name, place in self._places.items():
             if place == (instrument, number):
-                return name
+                return str(name)
         return f"{instrument} channel {number}"
 
     def bias(self, name: str) -> Channel:

@@ -1,7 +1,7 @@
 """The device's temperature rise: first-order stages, heated by what the device dissipates.
 
-The rise at a time depends on the changes of the settings and on the time alone, never on how often somebody looked: between two
-changes the integration goes over a fixed grid of steps.
+The rise at a time depends on the changes of the settings and on the time alone, never on how often somebody looked:
+between two changes the integration goes over a fixed grid of steps.
 """
 
 from __future__ import annotations

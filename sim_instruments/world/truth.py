@@ -33,10 +33,11 @@ class ErrorTerms:
 class HotTruth:
     """The device around its operating point; arrays over points. Ratios are of waves at the device's own planes.
 
-    reflection: b2(+)/a2(+) with a2(-) = 0 and this bench at port 1. conversion: b2(-)/a2(+)* likewise, with its phase counted
-    from twice the phase of a1(0); conversion_to_b2: counted from twice the phase of b2(0). s22, t22: the device alone (a1 = 0 at
-    the sidebands). drive_dbm: power that the pump's side delivers to a matched meter at the device-input plane; input_dbm, output_dbm: |a1|^2, |b2|^2
-    with this bench; matched_output_dbm: |B|^2, into a reflection of 0.
+    reflection: b2(+)/a2(+) with a2(-) = 0 and this bench at port 1. conversion: b2(-)/a2(+)* likewise, with its phase
+    counted from twice the phase of a1(0); conversion_to_b2: counted from twice the phase of b2(0). s22, t22: the device
+    alone (a1 = 0 at the sidebands). drive_dbm: power that the pump's side delivers to a matched meter at the
+    device-input plane; input_dbm, output_dbm: |a1|^2, |b2|^2 with this bench; matched_output_dbm: |B|^2, into a
+    reflection of 0.
     """
 
     probe_hz: FloatArray
@@ -75,7 +76,7 @@ class Truth:
         return tuple(self._readings)
 
     def reading(self, start_ns: int) -> HotTruth:
-        """Return the truth at the conditions of a reading: its sources, bias and temperature, with the connections of now."""
+        """Return the truth at a reading's sources, bias and temperature, with the connections of now."""
         pump, probe, state = self._readings[start_ns]
         return self._hot(pump, probe.frequency_hz, state)
 
@@ -90,8 +91,9 @@ class Truth:
     ) -> HotTruth:
         """Return the truth for probe frequencies with the pump `offset_hz` beside them.
 
-        The pump's level is given at its output, or as drive: the power into a matched meter at the device-input plane. Bias is
-        the present one, or the nominal one while the drain is off; the temperature rise is the present one unless given.
+        The pump's level is given at its output, or as drive: the power into a matched meter at the device-input plane.
+        Bias is the present one, or the nominal one while the drain is off; the temperature rise is the present one
+        unless given. Raises ValueError unless exactly one of drive and level is given.
         """
         probe_hz = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         pump_hz = probe_hz + offset_hz
@@ -156,7 +158,7 @@ class Truth:
 
     def quiescent_gate_v(self) -> float:
         """Gate voltage at which this specimen draws its nominal quiescent current."""
-        return self._world.bench.device.nominal_gate_v
+        return float(self._world.bench.device.nominal_gate_v)
 
     def _levels_for(self, drive_dbm: float, pump_hz: FloatArray) -> FloatArray:
         """Levels of the pump that bring a drive, by bisection: the chain compresses, but it rises."""
@@ -165,7 +167,8 @@ class Truth:
             middle = 0.5 * (low + high)
             below = self._drive_dbm(pump_hz, middle) < drive_dbm
             low, high = np.where(below, middle, low), np.where(below, high, middle)
-        return 0.5 * (low + high)
+        level_dbm: FloatArray = 0.5 * (low + high)
+        return level_dbm
 
     def _drive_dbm(self, pump_hz: FloatArray, level_dbm: FloatArray) -> FloatArray:
         bench = self._world.bench
@@ -188,20 +191,17 @@ class Truth:
             pump_hz=pump.frequency_hz,
             reflection=shown[:, 0, 0],
             conversion=image / frame**2,
-            conversion_to_b2=image / output_frame**2,
+            conversion_to_b2=np.asarray(image / output_frame**2, dtype=np.complex128),
             s22=sidebands.matrix[:, 2, 2],
             t22=np.conj(sidebands.matrix[:, 3, 2]) / frame**2,
             drive_dbm=self._drive_dbm(pump.frequency_hz, pump.level_dbm) if pump.on else np.full(points, -400.0),
             input_dbm=np.broadcast_to(_dbm(carrier.a1), points),
             output_dbm=np.broadcast_to(_dbm(carrier.b2), points),
-            matched_output_dbm=np.broadcast_to(self._matched_dbm(carrier.coefficients, carrier.a1), points),
+            matched_output_dbm=np.broadcast_to(
+                _dbm(carrier.coefficients.outputs(abs(carrier.a1), 0.0 * carrier.a1)[1]), points
+            ),
             rise_k=state.rise_k,
         )
-
-    @staticmethod
-    def _matched_dbm(coefficients: object, a1: ComplexArray | complex) -> FloatArray:
-        _, f2 = coefficients.outputs(abs(a1), 0.0 * a1)  # type: ignore[attr-defined]
-        return _dbm(f2)
 
 
 def _dbm(wave: ComplexArray | complex) -> FloatArray:

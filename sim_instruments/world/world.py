@@ -1,31 +1,28 @@
-"""The one world that all simulated instruments share: settings in, readings out, time only when somebody lets it pass."""
+"""The one world that all simulated instruments share: settings in, readings out, time when somebody lets it pass."""
 
 from __future__ import annotations
 
-import logging
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any, NamedTuple
 
 import numpy as np
 
-from .bench_state import DEVICE, INPUT, OUTPUT, Bench, DeviceState, PlaneWaves, SourceSetting, Tone
+from .bench_state import DEVICE, INPUT, OUTPUT, Bench, DeviceState, PlaneWaves, SourceSetting, Tone, tones_hz
 from .imperfections import Imperfections
+from .inspection import Damage, Inspector
 from .keyed import Key, normal, stream
 from .levels import BoolArray, ComplexArray, FloatArray, dbm, power_ratio
 from .operating import Carrier
-from .overloads import Overload, along_feed, from_plane
-from .receivers import IMAGE, PROBE, PUMP, Filter, Incoming, Receivers, ambient_k
+from .receivers import PUMP, Filter, Incoming, Receivers, ambient_k
 from .reference import overlaid, reference_world
 from .supplies import DRAIN, GATE, Supplies
 from .thermal import Stage, Thermal
 from .truth import Truth
 
-_LOG = logging.getLogger("benchrun_sim.world")
 # The device's behaviour is worked out on this grid of temperature rises: 0.00004 dB of gain apart.
 _RISE_GRID_K = 0.002
 _DISSIPATION_GRID_K = 0.05
-# RF above this at a connector that is opened or closed is recorded as a hazard.
-_HAZARD_DBM = 0.0
 
 Follow = Mapping[str, tuple[Sequence[float], Sequence[float]]]
 
@@ -37,21 +34,12 @@ class Event(NamedTuple):
     event: str
 
 
-class Damage(NamedTuple):
-    """Something that would have been destroyed, or would have hurt somebody, on a real bench."""
-
-    ns: int
-    item: str
-    what: str
-    value: float
-    limit: float
-
-
 class World:
     """The bench of a wiring document (see DEVELOPERS.md), with a seed for everything that differs from bench to bench.
 
-    `wiring["rehearsal"]` names the reference world, switches imperfections off (see `Imperfections`) and may replace constants:
-    {"world": "R1", "noise": false, "device": {"gain_db": 15.0}}. Raises ValueError for a name that the world does not have.
+    `wiring["rehearsal"]` names the reference world, switches imperfections off (see `Imperfections`) and may replace
+    constants: {"world": "R1", "noise": false, "device": {"gain_db": 15.0}}. Raises ValueError for a name that the world
+    does not have.
     """
 
     def __init__(self, wiring: Mapping[str, Any], seed: int) -> None:
@@ -70,15 +58,16 @@ class World:
         self.thermal = Thermal(
             [Stage(**stage) for stage in own["thermal"]], self._dissipated_w, memory=self.imperfections.thermal_memory
         )
-        self.damage: list[Damage] = []
+        self._inspector = Inspector(wiring, self.constants, self.bench, self.supplies)
+        self.damage: list[Damage] = self._inspector.damage
         self.record: list[Event] = []
         self.truth = Truth(self)
         self._now_ns = 0
         self._sources: dict[str, SourceSetting] = {}
         self._receivers: dict[str, Receivers] = {}
-        self._worst: dict[tuple[str, str], float] = {}
+        self._heat_w: dict[int, float] = {}
 
-    # Time ---------------------------------------------------------------------------------------------------------------
+    # --- Time
 
     @property
     def now_ns(self) -> int:
@@ -91,37 +80,37 @@ class World:
             raise ValueError(f"time does not run backwards ({duration_ns} ns)")
         self._now_ns += duration_ns
 
-    # Settings -----------------------------------------------------------------------------------------------------------
+    # --- Settings
 
     def set_source(self, instrument: str, *, frequency_hz: float, level_dbm: float, on: bool) -> None:
         """Set a generator, or the analyser's own source, to a frequency and a level at its output, RF on or off."""
-        before = self._sources.get(instrument, SourceSetting())
+        before = self.source(instrument)
         after = SourceSetting(float(frequency_hz), float(level_dbm), bool(on))
         if after == before:
             return
-        self.thermal.settle(self._now_ns)
+        if instrument == self.bench.sides[INPUT].feed.instrument:
+            self._before_change()
         self._sources[instrument] = after
         if after.on != before.on:
             self._note(f"rf-on {instrument} {level_dbm:.2f} dBm" if on else f"rf-off {instrument}")
         elif on and after.level_dbm != before.level_dbm:
             self._note(f"level {instrument} {level_dbm:.2f} dBm")
-        self._inspect_rf()
+        if (after.level_dbm, after.on) != (before.level_dbm, before.on):
+            self._inspect_rf()
 
-    def set_supply(
-        self, instrument: str, channel: int, *, voltage_v: float, current_limit_a: float, on: bool
-    ) -> None:
+    def set_supply(self, instrument: str, channel: int, *, voltage_v: float, current_limit_a: float, on: bool) -> None:
         """Set one channel of a dc supply."""
         place, name = self.supplies.channel(instrument, channel), self.supplies.name_of(instrument, channel)
         if (place.voltage_v, place.current_limit_a, place.on) == (voltage_v, current_limit_a, on):
             return
-        self.thermal.settle(self._now_ns)
+        self._before_change()
         was_on, was_v = place.on, place.voltage_v
         place.set(self._now_ns, float(voltage_v), float(current_limit_a), bool(on))
         if on != was_on:
             self._note(f"{name} on {voltage_v:.3f} V" if on else f"{name} off")
         elif on and voltage_v != was_v:
             self._note(f"{name} set {voltage_v:.3f} V")
-        self._inspect_bias()
+        self._inspector.bias(self._now_ns, self._bias_now())
         self._inspect_rf()
 
     def connect(self, plane: str, what: str) -> None:
@@ -133,14 +122,14 @@ class World:
             raise ValueError(f"there is no plane {plane!r}; there is: {', '.join(self.bench.sides)}")
         if what != DEVICE:
             self.bench.standards.reflection(what, np.array([self.constants["centre_hz"]]))
-        self._inspect_hands(plane)
-        self.thermal.settle(self._now_ns)
+        self._inspector.hands(self._now_ns, plane, self._standing(INPUT), self._standing(OUTPUT))
+        self._before_change()
         self.bench.connected[plane] = what
         self.bench.matings[plane] += 1
         self._note(f"connect {plane} {what}")
         self._inspect_rf()
 
-    # Readings -----------------------------------------------------------------------------------------------------------
+    # --- Readings
 
     def supply_reading(self, instrument: str, channel: int) -> tuple[float, float]:
         """Voltage in V and current in A, as the supply itself reads them at its terminals."""
@@ -171,16 +160,17 @@ class World:
     ) -> tuple[ComplexArray, BoolArray]:
         """Raw waves of an analyser's receivers, root-watt, shape (T, W, P), and flags (W,): above the linear limit.
 
-        `receivers` are the instrument's labels ("R3"); one that is not connected reads its noise. The analyser's own source sits
-        at the grid's frequency; other sources stay where they are, or go with the grid by `follow`: (frequencies in Hz, levels in
-        dBm) for each such instrument. `offsets_hz` are the tunings from the grid. `coherent`: all tones of a point share one time
-        reference; otherwise each tone's phase is arbitrary, but common to its waves.
+        `receivers` are the instrument's labels ("R3"); one that is not connected reads its noise. The analyser's own
+        source sits at the grid's frequency; other sources stay where they are, or go with the grid by `follow`:
+        (frequencies in Hz, levels in dBm) for each such instrument. `offsets_hz` are the tunings from the grid.
+        `coherent`: all tones of a point share one time reference; otherwise each tone's phase is arbitrary, but common
+        to its waves.
         """
         grid_hz = np.asarray(frequencies_hz, dtype=np.float64)
-        pump, probe = (self._tone(plane, instrument, grid_hz, follow or {}) for plane in (INPUT, OUTPUT))
+        pump, probe = _in_sight(*(self._tone(plane, instrument, grid_hz, follow or {}) for plane in (INPUT, OUTPUT)))
         state = self.device_state()
         planes = self.bench.waves(pump, probe, state)
-        self._inspect_waves(planes, pump, probe)
+        self._inspector.waves(self._now_ns, planes, pump, probe)
         how = Filter(if_bandwidth_hz, averages)
         key = self._key(receivers, pump, probe, np.asarray(offsets_hz, dtype=np.float64), how, coherent, start_ns)
         incoming = self._incoming(instrument, receivers, planes, pump, probe, key)
@@ -199,26 +189,29 @@ class World:
         error_db = own["error_db"] * normal(self.seed, "power meter") if self.imperfections.power_meter else 0.0
         floor_w, noise = power_ratio(own["floor_dbm"] - 30.0), 0.0
         if self.imperfections.noise:
-            key = (instrument, float(frequency_hz), repr(sorted(self._sources.items())), start_ns)
+            on = sorted((name, *setting.key) for name, setting in self._sources.items() if setting.on)
+            key = (instrument, float(frequency_hz), repr(on), start_ns)
             noise = own["noise"] * normal(self.seed, "power", *key)
         return dbm(power_w * power_ratio(error_db) * (1.0 + noise) + floor_w * (1.0 + 0.3 * abs(noise)))
 
     def temperature_degc(self, start_ns: int) -> float:
         """Reading of the thermometer beside the bench, degree Celsius."""
         own = self.constants["ambient"]
-        reading = own["mean_degc"] + ambient_k(self.constants, start_ns)
+        reading = float(own["mean_degc"]) + ambient_k(self.constants, start_ns)
         if self.imperfections.noise:
             reading += own["thermometer_error_k"] * normal(self.seed, "thermometer")
             reading += own["thermometer_noise_k"] * normal(self.seed, "thermometer", start_ns)
         return reading
 
-    # Inside -------------------------------------------------------------------------------------------------------------
+    # --- Inside
 
     def receivers_of(self, instrument: str) -> Receivers:
         """Return the receivers of an analyser."""
         if instrument not in self._receivers:
             connected = [arm.label for arm in self._arms(instrument)]
-            self._receivers[instrument] = Receivers(instrument, connected, self.constants, self.seed, self.imperfections)
+            self._receivers[instrument] = Receivers(
+                instrument, connected, self.constants, self.seed, self.imperfections
+            )
         return self._receivers[instrument]
 
     def device_state(self, grid_k: float = _RISE_GRID_K) -> DeviceState:
@@ -267,7 +260,11 @@ class World:
         start_ns: int,
     ) -> tuple[Key, ...]:
         """The effective settings of a reading, for its noise."""
-        tones = [part for tone in (pump, probe) for part in (tone.frequency_hz.tobytes(), tone.level_dbm.tobytes(), tone.on)]
+        tones = [
+            part
+            for tone in (pump, probe)
+            for part in ((tone.frequency_hz.tobytes(), tone.level_dbm.tobytes()) if tone.on else ("off",))
+        ]
         return ",".join(receivers), *tones, offsets_hz.tobytes(), how.if_bandwidth_hz, how.averages, coherent, start_ns
 
     def _incoming(
@@ -293,8 +290,7 @@ class World:
                 toward, away = (part[name].reshape(3, points) for part in (at.network.toward, at.network.away))
                 waves[:, place] = (toward * at.a + away * at.b) * turn
                 skirt[place] = waves[PUMP, place]
-        frequencies = np.array([2.0 * pump.frequency_hz - probe.frequency_hz, pump.frequency_hz, probe.frequency_hz])
-        return Incoming(waves, frequencies, skirt)
+        return Incoming(waves, tones_hz(pump, probe), skirt)
 
     def _incident_w(self, plane: str) -> float:
         """Power that goes into what is connected to a plane, from the side's own source as it stands."""
@@ -314,128 +310,41 @@ class World:
         carrier = self.carrier_now(state)
         return -2e-4 + 1e-3 * float(carrier.coefficients.growth_at(abs(carrier.a1))) * state.bias.activity
 
+    def _before_change(self) -> None:
+        """Bring the temperature up to now, before what heats the device changes."""
+        self.thermal.settle(self._now_ns)
+        self._heat_w.clear()
+
     def _dissipated_w(self, rise_k: float) -> float:
-        """Power that stays in the device as the supplies are set now."""
+        """Power that stays in the device as everything is set now."""
+        step = round(rise_k / _DISSIPATION_GRID_K)
+        if step not in self._heat_w:
+            self._heat_w[step] = self._heat_at(step * _DISSIPATION_GRID_K)
+        return self._heat_w[step]
+
+    def _heat_at(self, rise_k: float) -> float:
         drain, gate = self.supplies.bias(DRAIN), self.supplies.bias(GATE)
         bias = self.bench.device.bias(drain.target_v, gate.target_v)
-        state = DeviceState(bias, round(rise_k / _DISSIPATION_GRID_K) * _DISSIPATION_GRID_K)
-        carrier = self.carrier_now(state)
+        carrier = self.carrier_now(DeviceState(bias, rise_k))
         a1, b1, a2, b2 = (float(abs(wave)) ** 2 for wave in (carrier.a1, carrier.b1, carrier.a2, carrier.b2))
         current_a = self.bench.device.drain_current_a(bias, b2**0.5)
         if drain.on:
             current_a = min(current_a, drain.current_limit_a)
         return max(0.0, bias.drain_v * current_a + a1 - b1 + a2 - b2)
 
-    # Damage -------------------------------------------------------------------------------------------------------------
+    def _inspect_rf(self) -> None:
+        """Look at the levels everywhere, with the sources as they stand."""
+        pump, probe = _in_sight(self._standing(INPUT), self._standing(OUTPUT))
+        if not (pump.on or probe.on):
+            return
+        state = self.device_state()
+        self._inspector.waves(self._now_ns, self.bench.waves(pump, probe, state), pump, probe)
+        self._inspector.open_output(self._now_ns, dbm(float(abs(self.carrier_now(state).b2)) ** 2), state)
 
     def _note(self, event: str) -> None:
         self.record.append(Event(self._now_ns, event))
 
-    def _harm(self, item: str, what: str, value: float, limit: float) -> None:
-        """Record damage, loudly; again only when it gets worse."""
-        worst = self._worst.get((item, what))
-        if worst is not None and abs(value) < abs(worst) + 0.5:
-            return
-        self._worst[item, what] = value
-        self.damage.append(Damage(self._now_ns, item, what, float(value), float(limit)))
-        _LOG.critical("DAMAGE at %.6f s: %s: %s %.2f, limit %.2f", self._now_ns * 1e-9, item, what, value, limit)
 
-    def _inspect_bias(self) -> None:
-        own = self.constants["device"]
-        drain, gate = self.supplies.bias(DRAIN), self.supplies.bias(GATE)
-        drain_v = drain.at(self._now_ns)
-        released_v = self.wiring.get("bias", {}).get(DRAIN, {}).get("released_below_v", 1.0)
-        if drain_v > released_v and not gate.on:
-            self._harm("device", "gate released under drain voltage", drain_v, released_v)
-        if drain_v > own["drain_maximum_v"]:
-            self._harm("device", "drain voltage", drain_v, own["drain_maximum_v"])
-        if gate.target_v < own["gate_minimum_v"]:
-            self._harm("device", "gate voltage", gate.target_v, own["gate_minimum_v"])
-        if gate.target_v > own["gate_maximum_v"]:
-            self._harm("device", "gate voltage", gate.target_v, own["gate_maximum_v"])
-        current_a = min(self._bias_now().quiescent_a, drain.current_limit_a if drain.on else 0.0)
-        if current_a > own["drain_maximum_a"]:
-            self._harm("device", "drain current", current_a, own["drain_maximum_a"])
-
-    def _inspect_hands(self, plane: str) -> None:
-        """Somebody touches a connector."""
-        setting = self.source(self.bench.sides[plane].feed.instrument)
-        live = [self._standing_dbm(side) for side in (INPUT, OUTPUT)] if setting.on else []
-        pump_on = self.source(self.bench.sides[INPUT].feed.instrument).on
-        if live and max(live) > _HAZARD_DBM:
-            self._harm("operator", f"connector at {plane} handled under RF", max(live), _HAZARD_DBM)
-        elif pump_on and self._standing_dbm(INPUT) > _HAZARD_DBM:
-            self._harm("operator", f"connector at {plane} handled under RF", self._standing_dbm(INPUT), _HAZARD_DBM)
-        drain_v = self.supplies.bias(DRAIN).at(self._now_ns)
-        if self.bench.connected[plane] == DEVICE and drain_v > 1.0:
-            self._harm("operator", f"connector at {plane} handled under drain voltage", drain_v, 1.0)
-
-    def _standing_dbm(self, plane: str) -> float:
-        wave = self.bench.source_wave(plane, self._standing(plane))
-        return dbm(float(np.abs(wave[0])) ** 2)
-
-    def _inspect_rf(self) -> None:
-        """Levels everywhere, with the sources as they stand."""
-        pump, probe = self._standing(INPUT), self._standing(OUTPUT)
-        if pump.on or probe.on:
-            self._inspect_waves(self.bench.waves(pump, probe, self.device_state()), pump, probe)
-
-    def _inspect_waves(self, planes: Mapping[str, PlaneWaves], pump: Tone, probe: Tone) -> None:
-        for found in self._overloads(planes, pump, probe):
-            self._harm(*found)
-
-    def _overloads(self, planes: Mapping[str, PlaneWaves], pump: Tone, probe: Tone) -> list[Overload]:
-        found: list[Overload] = []
-        powers = {
-            plane: (_highest_dbm(at.a), _highest_dbm(at.b))
-            for plane, at in planes.items()
-        }
-        for plane, source in ((INPUT, pump), (OUTPUT, probe)):
-            side = self.bench.sides[plane]
-            if source.on:
-                found += along_feed(side, source.frequency_hz, source.level_dbm)
-            if plane in powers:
-                found += from_plane(side, *powers[plane], probe.frequency_hz, self.wiring["instruments"])
-                found += self._overloads_at(plane, *powers[plane])
-        return found
-
-    def _overloads_at(self, plane: str, toward_dbm: float, away_dbm: float) -> list[Overload]:
-        """Overloads of what is connected to a plane."""
-        limits = self.wiring.get("device", {})
-        what, found = self.bench.connected[plane], []
-        if what == DEVICE:
-            level_dbm, side = (toward_dbm, "input") if plane == INPUT else (away_dbm, "output")
-            limit_dbm = limits.get(f"maximum_{side}_dbm")
-            if limit_dbm is not None and level_dbm > limit_dbm:
-                found.append(Overload("device", f"{side} level", level_dbm, limit_dbm))
-        if what == "meter":
-            found += self._meter_overload(toward_dbm)
-        if plane == OUTPUT and self.bench.connected[INPUT] == DEVICE and what != DEVICE:
-            found += self._open_output()
-        return found
-
-    def _meter_overload(self, level_dbm: float) -> list[Overload]:
-        sensors = [
-            (name, spec.get("sensor", {}).get("damage_dbm"))
-            for name, spec in self.wiring["instruments"].items()
-            if spec["role"] == "power-meter"
-        ]
-        return [
-            Overload(name, "input level", level_dbm, limit) for name, limit in sensors if limit is not None and level_dbm > limit
-        ]
-
-    def _open_output(self) -> list[Overload]:
-        """A biased device that is driven into an empty connector."""
-        state = self.device_state()
-        level_dbm = dbm(float(abs(self.carrier_now(state).b2)) ** 2)
-        if state.bias.activity > 0.05 and level_dbm > 20.0:
-            return [Overload("device", "driven into an open output", level_dbm, 20.0)]
-        return []
-
-
-__all__ = ["IMAGE", "PROBE", "PUMP", "Damage", "Event", "World"]
-
-
-def _highest_dbm(waves: ComplexArray) -> float:
-    """Highest total power of the tones over the points."""
-    return dbm(float((np.abs(waves) ** 2).sum(axis=0).max()))
+def _in_sight(pump: Tone, probe: Tone) -> tuple[Tone, Tone]:
+    """A pump that is off stands nowhere: put it where the probe is, whatever it was set to once."""
+    return (pump if pump.on else replace(pump, frequency_hz=probe.frequency_hz)), probe
