@@ -52,7 +52,8 @@ class Levelling:
         if np.any(beyond := outside(self.frequency_hz, wanted)):
             raise CalibrationError(
                 f"levelling '{self.name}' covers {self.frequency_hz[0] / 1e9:.6g} to "
-                f"{self.frequency_hz[-1] / 1e9:.6g} GHz; {wanted[beyond][0] / 1e9:.6g} GHz is wanted. Level over that range."
+                f"{self.frequency_hz[-1] / 1e9:.6g} GHz; {wanted[beyond][0] / 1e9:.6g} GHz is wanted. "
+                "Level over that range."
             )
         return np.ascontiguousarray(interpolate(self.frequency_hz, self.power_dbm, wanted).T)
 
@@ -78,7 +79,8 @@ class Levelling:
             at = int(np.argmax(unreached))
             raise CalibrationError(
                 f"levelling '{self.name}' reaches {power[at, 0]:.2f} to {high[at]:.2f} dBm at "
-                f"{frequency[at] / 1e9:.6g} GHz; a drive of {wanted[at]:.2f} dBm is wanted. Level over more of the {self.signal}'s range."
+                f"{frequency[at] / 1e9:.6g} GHz; a drive of {wanted[at]:.2f} dBm is wanted. "
+                f"Level over more of the {self.signal}'s range."
             )
 
     def check_fits(self, part_hash: str, date_utc: str, origin: str, parts: Mapping[str, str] | None = None) -> None:
@@ -101,9 +103,15 @@ class Levelling:
         """Return the levelling that to_document wrote. Raises CalibrationError for another text."""
         require_kind(document, "levelling")
         try:
-            arrays = {k: np.asarray(document[k], dtype=np.float64) for k in _ARRAYS}
-            names = {k: document[k] for k in _NAMES}
-            return cls(**names, **arrays, circumstances=Circumstances(**document["circumstances"]))
+            return cls(
+                str(document["name"]),
+                str(document["signal"]),
+                str(document["plane"]),
+                np.asarray(document["level_dbm"], dtype=np.float64),
+                np.asarray(document["frequency_hz"], dtype=np.float64),
+                np.asarray(document["power_dbm"], dtype=np.float64),
+                Circumstances(**document["circumstances"]),
+            )
         except (KeyError, TypeError, ValueError) as error:
             raise CalibrationError(
                 f"this levelling document is damaged ({error!r}). Derive it again from its run."

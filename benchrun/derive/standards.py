@@ -105,7 +105,8 @@ class MeasuredStandard:
         if np.any(beyond := outside(self.frequency_hz, f)):
             raise DataSetError(
                 f"{self.source}: its data run from {_show_hz(self.frequency_hz[0])} to "
-                f"{_show_hz(self.frequency_hz[-1])}; {_show_hz(f[beyond][0])} lies outside. Measure inside that range, or take another definition."
+                f"{_show_hz(self.frequency_hz[-1])}; {_show_hz(f[beyond][0])} lies outside. "
+                "Measure inside that range, or take another definition."
             )
         return refer(interpolate(self.frequency_hz, self.values, f), self.impedance_ohm, reference_ohm)
 
