@@ -65,9 +65,11 @@ class Carried(_Strict):
     """What a placeholder or a reply carries: its kind, the suffix it travels in, and for text the words that are allowed."""
 
     kind: ReplyKind
-    unit: str | None = Field(None, description="suffix as sent, such as MHZ; empty for none")
-    list: bool = Field(False, description="several values, separated by commas")
-    words: tuple[str, ...] = Field((), description="for text: the words allowed, in long form with the short form's capitals")
+    unit: str | None = Field(default=None, description="suffix as sent, such as MHZ; empty for none")
+    list: bool = Field(default=False, description="several values, separated by commas")
+    words: tuple[str, ...] = Field(
+        default=(), description="for text: the words allowed, in long form with the short form's capitals"
+    )
 
     @model_validator(mode="after")
     def _known(self) -> Carried:
@@ -153,20 +155,26 @@ CarriedField = Annotated[Carried, BeforeValidator(_spelled_out)]
 class EntryText(_Strict):
     """One entry as written in a dialect file."""
 
-    set: str | None = Field(None, pattern=SET_PATTERN, description="the set form; capitals give the short form")
-    ask: str | None = Field(None, pattern=ASK_PATTERN, description="the query form")
-    carries: dict[str, CarriedField] = Field({}, description="kind of each placeholder")
-    reply: CarriedField | None = Field(None, description="kind of the reply; left out where it is what the set form carries")
-    tolerance: str | None = Field(None, description="how far the value read back may be from the value sent, with its unit")
-    deadline: str | None = Field(None, description="longest time the exchange may take, with its unit")
+    set: str | None = Field(default=None, pattern=SET_PATTERN, description="the set form; capitals give the short form")
+    ask: str | None = Field(default=None, pattern=ASK_PATTERN, description="the query form")
+    carries: dict[str, CarriedField] = Field(default={}, description="kind of each placeholder")
+    reply: CarriedField | None = Field(
+        default=None, description="kind of the reply; left out where it is what the set form carries"
+    )
+    tolerance: str | None = Field(
+        default=None, description="how far the value read back may be from the value sent, with its unit"
+    )
+    deadline: str | None = Field(default=None, description="longest time the exchange may take, with its unit")
 
 
 class Timing(_Strict):
     """How long one make takes, for deadlines and estimates. Times with their units."""
 
-    point: str = Field("1 ms", description="time for each point beside the filter's")
-    sweep: str = Field("20 ms", description="time for each sweep beside its points'")
-    filter_periods: float = Field(1.5, alias="filter-periods", description="time in the filter, in periods of the IF bandwidth")
+    point: str = Field(default="1 ms", description="time for each point beside the filter's")
+    sweep: str = Field(default="20 ms", description="time for each sweep beside its points'")
+    filter_periods: float = Field(
+        default=1.5, alias="filter-periods", description="time in the filter, in periods of the IF bandwidth"
+    )
 
 
 class DialectText(_Strict):
@@ -174,7 +182,7 @@ class DialectText(_Strict):
 
     benchrun: Literal[1]
     title: str = ""
-    options: bool | None = Field(None, description="whether *OPT? is answered")
+    options: bool | None = Field(default=None, description="whether *OPT? is answered")
     timing: Timing | None = None
     entries: dict[str, EntryText] = {}
 

@@ -24,10 +24,14 @@ def levels_of(value: Value) -> tuple[float, ...]:
 def check_ceiling(levels_dbm: Sequence[float], ceiling_dbm: float | None) -> None:
     """Raise InstrumentError for a level above the ceiling, for any level where there is none, and for what is not a number."""
     if ceiling_dbm is None:
-        raise InstrumentError("the bench file gives no ceiling for this instrument, so no level is sent; add `ceiling:`")
+        raise InstrumentError(
+            "the bench file gives no ceiling for this instrument, so no level is sent; add `ceiling:`"
+        )
     for level in levels_dbm:
         if not level <= ceiling_dbm:
-            raise InstrumentError(f"{show(level, 'level')} is above its ceiling in the bench file, {show(ceiling_dbm, 'level')}")
+            raise InstrumentError(
+                f"{show(level, 'level')} is above its ceiling in the bench file, {show(ceiling_dbm, 'level')}"
+            )
 
 
 def check_rises(levels_dbm: Sequence[float], ramp_db: float | None) -> None:

@@ -11,8 +11,8 @@ from __future__ import annotations
 
 import threading
 from collections import deque
-from collections.abc import Sequence
-from typing import Any, Protocol
+from collections.abc import Callable, Sequence
+from typing import Any, Protocol, TypeVar
 
 from benchrun.contract.capture import FloatArray
 from benchrun.contract.clock import Clock
@@ -26,8 +26,13 @@ DEADLINE_S = 2.0
 #: How long the error queue may take to say why an exchange was not answered.
 EXPLAIN_S = 0.5
 REMEMBERED = 64
+#: How often a link is opened anew before it is given up.
+REOPENINGS = 3
 #: Entries read from an error queue before it counts as never empty.
 LONGEST_QUEUE = 100
+
+
+T = TypeVar("T")
 
 
 class Wire(Protocol):
@@ -117,7 +122,9 @@ class Session:
         """Send the set form, read it back in the same message, and return what stands. Raises BenchError."""
         return self.confirm_all([(entry, values)], deadline_s=deadline_s)[0]
 
-    def exchange(self, sets: Sequence[Call], asks: Sequence[Call] = (), *, deadline_s: float | None = None) -> tuple[Any, ...]:
+    def exchange(
+        self, sets: Sequence[Call], asks: Sequence[Call] = (), *, deadline_s: float | None = None
+    ) -> tuple[Any, ...]:
         """Send set forms, see them completed, and return the replies to queries, in one message. Raises BenchError.
 
         A single level is not taken here: confirm() raises it by the ramp and reads it back.
@@ -126,7 +133,9 @@ class Session:
         with self._lock:
             for use in wanted:
                 if self._checked_levels(use) and use.entry.ask:
-                    raise InstrumentError(f"{self._wire.where}: {use.entry.name!r} carries a level: it is confirmed, not only sent")
+                    raise InstrumentError(
+                        f"{self._wire.where}: {use.entry.name!r} carries a level: it is confirmed, not only sent"
+                    )
             return self._run(wanted, uses(self._dialect, asks), deadline_s)
 
     def confirm_all(self, calls: Sequence[Call], *, deadline_s: float | None = None) -> tuple[Any, ...]:
@@ -168,9 +177,14 @@ class Session:
         with self._lock:
             self.suspect = True
             self._stands_dbm.clear()
-            self._wire.reopen()
-            self._synchronise()
-            self.suspect = False
+            for _ in range(REOPENINGS):
+                self._wire.reopen()
+                if self._synchronised():
+                    self.suspect = False
+                    return
+            raise ReplyError(
+                f"{self._wire.where}: answers out of turn, even on a fresh link. Check that nobody else talks to it"
+            )
 
     def close(self) -> None:
         """Close the link; twice does no harm."""
@@ -231,10 +245,10 @@ class Session:
                 raise self._complaint(answer.error, message)
             return self._understood(message, lambda: read_values(answer, bool(sets), asks))
 
-    def _unsent(self, compose_message: Any) -> str:
+    def _unsent(self, compose_message: Callable[[], str]) -> str:
         """Return a message composed from values; a bad value is refused here."""
         try:
-            return str(compose_message())
+            return compose_message()
         except (QuantityError, InstrumentError) as error:
             raise InstrumentError(f"{self._wire.where}: {error}. Nothing was sent") from None
 
@@ -282,7 +296,7 @@ class Session:
 
     # Errors
 
-    def _understood(self, message: str, read: Any) -> Any:
+    def _understood(self, message: str, read: Callable[[], T]) -> T:
         """Return what `read` makes of an answer; an answer that makes no sense leaves the link suspect."""
         try:
             return read()
@@ -301,7 +315,9 @@ class Session:
         except BenchError:
             entries = [first]
         listed = "; ".join(map(str, entries))
-        error = InstrumentError(f"{self._wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual")
+        error = InstrumentError(
+            f"{self._wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual"
+        )
         self.exchanges.append(Exchange(self._clock.now_ns(), message, listed, str(error)))
         return error
 
@@ -316,18 +332,23 @@ class Session:
             entries.append(entry)
         return entries
 
-    def _synchronise(self) -> None:
-        """Read the error queue of a fresh link until it is empty; late answers and old entries go to the transcript only."""
+    def _synchronised(self) -> bool:
+        """Read the error queue of a fresh link until it is empty; False where an answer comes that is none to that question.
+
+        What was in the queue belongs to the exchange that failed, and goes to the transcript only.
+        """
         for _ in range(LONGEST_QUEUE):
             started_ns = self._clock.now_ns()
             text = self._wire.query(ERROR_QUERY, DEADLINE_S)
             self.exchanges.append(Exchange(started_ns, ERROR_QUERY, text, "after opening the link anew"))
             try:
                 if scpi.parse_error(text).number == 0:
-                    return
+                    return True
             except ReplyError:
-                continue
-        raise LinkError(f"{self._wire.where}: its error queue is never empty. Switch it off and on, with RF and drain off")
+                return False
+        raise LinkError(
+            f"{self._wire.where}: its error queue is never empty. Switch it off and on, with RF and drain off"
+        )
 
 
 def _four_fields(text: str) -> tuple[str, str, str, str]:

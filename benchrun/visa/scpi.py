@@ -145,9 +145,10 @@ NO_ERROR = '0,"No error"'
 def parse_error(text: str) -> ErrorEntry:
     """Read one entry of SYSTem:ERRor?: -113,"Undefined header". Raises ReplyError."""
     code, *rest = split(text.strip(), ",")
-    if not re.fullmatch(r"[+-]?\d{1,5}", code.strip(), re.ASCII) or not rest:
+    message = ",".join(rest).strip()
+    if not re.fullmatch(r"[+-]?\d{1,5}", code.strip(), re.ASCII) or message[:1] not in ('"', "'"):
         raise ReplyError(f'{text!r} is not an entry of the error queue (such as 0,"No error")')
-    return ErrorEntry(int(code), parse_text(",".join(rest)))
+    return ErrorEntry(int(code), parse_text(message))
 
 
 def block_digits(head: bytes) -> int:

@@ -17,6 +17,7 @@ import socket
 import threading
 import time
 from collections import Counter, deque
+from collections.abc import Iterator
 from typing import Any, ClassVar
 
 import pyvisa
@@ -72,20 +73,26 @@ class Wire:
 
     def _tune_socket(self) -> None:
         """Send small writes at once, and see a refused connection now: only pyvisa-py's raw sockets have one to tune."""
-        session = getattr(self._library, "sessions", {}).get(self._handle)
-        line = getattr(session, "interface", None)
-        if not isinstance(line, socket.socket):
+        line = self._socket()
+        if line is None:
             return
         refused = line.getsockopt(socket.SOL_SOCKET, socket.SO_ERROR)
         if refused:
             raise OSError(refused, os.strerror(refused))
         line.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
-        session.max_recv_size = SOCKET_CHUNK
+        self._library.sessions[self._handle].max_recv_size = SOCKET_CHUNK
+
+    def _socket(self) -> socket.socket | None:
+        session = getattr(self._library, "sessions", {}).get(self._handle)
+        line = getattr(session, "interface", None)
+        return line if isinstance(line, socket.socket) else None
 
     def _cannot_open(self, error: Exception) -> LinkError:
         code = getattr(error, "error_code", None)
         if code == StatusCode.error_invalid_resource_name:
-            return LinkError(f"{self.name}: {self.address!r} is not a VISA address (such as TCPIP0::192.0.2.21::hislip0::INSTR)")
+            return LinkError(
+                f"{self.name}: {self.address!r} is not a VISA address (such as TCPIP0::192.0.2.21::hislip0::INSTR)"
+            )
         return LinkError(
             f"{self.where}: cannot be opened, nothing answers there ({_reason(error)}). "
             "Check that it is on, the cable, and the address in the bench file"
@@ -133,7 +140,7 @@ class Wire:
             head = self._read_exactly(2, ends)
             payload = self._read_payload(head, payload_bytes, ends) if head[:1] == b"#" else None
             self._terminate(True)
-            tail = self._read_line(ends)
+            tail = self._read_tail(payload, ends)
         except Exception as error:
             raise self._failed(error, message, deadline_s) from error
         return payload, self._text(tail if payload is not None else head + tail, message)
@@ -143,15 +150,39 @@ class Wire:
         length = scpi.block_length(self._read_exactly(digits, ends)) if digits else expected
         if length != expected:
             raise ReplyError(f"the block's header says {length} bytes, {expected} were expected")
-        try:
+        with self._short_block(length):
             payload = self._read_exactly(length, ends)
-        except pyvisa.VisaIOError as error:
-            if error.error_code != StatusCode.error_timeout:
-                raise
-            raise ReplyError(f"the block's header says {length} bytes, and fewer arrived before the deadline") from error
         if len(payload) < length:
             raise ReplyError(f"the block's header says {length} bytes, {len(payload)} arrived")
         return payload
+
+    def _read_tail(self, payload: bytes | None, ends: float) -> bytes:
+        """Return the text behind a block, or the rest of the line that came in its place.
+
+        A block that is shorter than it says swallows what follows it: so what follows must begin as it should.
+        """
+        if payload is None:
+            return self._read_line(ends)
+        with self._short_block(len(payload)):
+            tail = self._read_line(ends)
+        if tail[:1] != b";":
+            raise ReplyError(
+                f"the block's header says {len(payload)} bytes, and its end is not there: fewer or more arrived"
+            )
+        return tail
+
+    @staticmethod
+    @contextlib.contextmanager
+    def _short_block(length: int) -> Iterator[None]:
+        """Turn running into the deadline in the middle of a block into what it means."""
+        try:
+            yield
+        except pyvisa.VisaIOError as error:
+            if error.error_code != StatusCode.error_timeout:
+                raise
+            raise ReplyError(
+                f"the block's header says {length} bytes, and fewer arrived before the deadline"
+            ) from error
 
     def _write(self, message: str, deadline_s: float) -> None:
         if self._handle is None:
@@ -197,7 +228,9 @@ class Wire:
         try:
             return answer.decode("ascii").rstrip("\r\n")
         except UnicodeDecodeError as error:
-            raise ReplyError(f"{self.where}: the answer to '{message}' is garbled: {answer[:40]!r}. {CHECK_LINE}") from error
+            raise ReplyError(
+                f"{self.where}: the answer to '{message}' is garbled: {answer[:40]!r}. {CHECK_LINE}"
+            ) from error
 
     def _failed(self, error: Exception, message: str, deadline_s: float) -> BenchError:
         if isinstance(error, ReplyError):
@@ -211,8 +244,8 @@ class Wire:
 
     def _hung_up(self) -> bool:
         """Whether the other end closed a raw socket: pyvisa-py only says time-out then."""
-        line = getattr(getattr(self._library, "sessions", {}).get(self._handle), "interface", None)
-        if not isinstance(line, socket.socket):
+        line = self._socket()
+        if line is None:
             return False
         try:
             return line.recv(1, socket.MSG_PEEK | getattr(socket, "MSG_DONTWAIT", 0)) == b""
@@ -240,7 +273,9 @@ class Bus:
             try:
                 self._manager = pyvisa.ResourceManager(f"@{backend}" if isinstance(backend, str) else backend)
             except Exception as error:
-                raise LinkError(f"VISA backend {backend!r} cannot be used ({_reason(error)}). Choose another under visa: backend:") from error
+                raise LinkError(
+                    f"VISA backend {backend!r} cannot be used ({_reason(error)}). Choose another under visa: backend:"
+                ) from error
             self._users[id(self._manager)] += 1
         self._sessions: list[Session] = []
         self._open = True

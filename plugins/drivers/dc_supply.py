@@ -94,7 +94,7 @@ class GenericDcSupply(OverLink):
 
     def make_safe(self) -> None:
         """Outputs off, the last-named bias first, each seen released before the next. Raises BenchError where one is not."""
-        for bias in reversed(self.bench.channels):
+        for bias in reversed(list(self.bench.channels)):
             self.output(bias, on=False)
             self._see_released(bias)
 
@@ -104,13 +104,17 @@ class GenericDcSupply(OverLink):
             if abs(volts) < RELEASED_V:
                 return
             self.link.clock.sleep(LOOK_S)
-        raise InstrumentError(f"{self.link.name}: {bias} is off and still at {volts:.2f} V; the outputs before it were not touched")
+        raise InstrumentError(
+            f"{self.link.name}: {bias} is off and still at {volts:.2f} V; the outputs before it were not touched"
+        )
 
     def _channel(self, bias: str) -> int:
         try:
             return self.bench.channels[bias]
         except KeyError:
-            raise InstrumentError(f"{self.link.name} has no output {bias!r}; it has {', '.join(self.bench.channels)}") from None
+            raise InstrumentError(
+                f"{self.link.name} has no output {bias!r}; it has {', '.join(self.bench.channels)}"
+            ) from None
 
 
 SPEC = DriverSpec(

@@ -55,7 +55,9 @@ class OverLink:
 
     def _known(self, quantity: str, known: Mapping[str, object]) -> None:
         if quantity not in known:
-            raise InstrumentError(f"{self.link.name} has no {quantity!r} to do this with; it has {', '.join(known) or 'none'}")
+            raise InstrumentError(
+                f"{self.link.name} has no {quantity!r} to do this with; it has {', '.join(known) or 'none'}"
+            )
 
     def _available(self, *calls: Call) -> list[Call]:
         """Return the calls whose entries the dialect has."""

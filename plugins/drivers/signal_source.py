@@ -42,9 +42,13 @@ class GenericSignalSource(OverLink):
         """
         absent = [entry for entry in LIST_ENTRIES if not self.link.has(entry)]
         if absent:
-            raise InstrumentError(f"{self.link.name} has no list: its dialect lacks {', '.join(absent)}. Step it point by point")
+            raise InstrumentError(
+                f"{self.link.name} has no list: its dialect lacks {', '.join(absent)}. Step it point by point"
+            )
         if not frequencies_hz or len(frequencies_hz) != len(levels_dbm):
-            raise InstrumentError(f"{self.link.name}: {len(frequencies_hz)} frequencies and {len(levels_dbm)} levels make no list")
+            raise InstrumentError(
+                f"{self.link.name}: {len(frequencies_hz)} frequencies and {len(levels_dbm)} levels make no list"
+            )
         self.leave_list()
         self.link.confirm("level", level=levels_dbm[0])
         self.link.confirm_all([

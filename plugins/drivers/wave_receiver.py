@@ -64,7 +64,9 @@ class GenericWaveReceiver(OverLink):
         found = self.link.ask("capture") == "COHerent"
         if found != self.bench.coherent:
             said, does = ("coherent", "retuned") if self.bench.coherent else ("retuned", "coherent")
-            raise IdentityError(f"{self.link.name}: the bench file says `tones: {said}`, the instrument says {does}. Correct the bench file")
+            raise IdentityError(
+                f"{self.link.name}: the bench file says `tones: {said}`, the instrument says {does}. Correct the bench file"
+            )
 
     def set(self, quantity: str, value: float) -> float:
         """Set the probe's frequency (Hz) or level (dBm) and return what stands. Raises BenchError."""
@@ -99,7 +101,9 @@ class GenericWaveReceiver(OverLink):
     def _receivers(self, capture: Capture) -> list[Call]:
         missing = [wave for wave in capture.waves if wave not in self.bench.receivers]
         if missing:
-            raise InstrumentError(f"{self.link.name} has no receiver for {', '.join(missing)}; the bench file names {list(self.bench.receivers)}")
+            raise InstrumentError(
+                f"{self.link.name} has no receiver for {', '.join(missing)}; the bench file names {list(self.bench.receivers)}"
+            )
         waves: list[Call] = []
         if capture.waves:
             waves = [("waves", {"receivers": tuple(self.bench.receivers[wave] for wave in capture.waves)})]
