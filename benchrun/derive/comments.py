@@ -48,7 +48,8 @@ def tail(provenance: Provenance, calibration: Calibration) -> tuple[str, ...]:
     residuals = ", ".join(f"{name} {rms:.4f}" for name, rms in calibration.residuals.items())
     return (
         f"Calibration: {calibration.name}, {calibration.plane} plane, made {there.made_utc}, "
-        f"valid until {there.valid_until_utc}, kit {there.kit or 'unnamed'}, parts {there.part_hash}, readings {there.readings_hash or 'unhashed'}",
+        f"valid until {there.valid_until_utc}, kit {there.kit or 'unnamed'}, "
+        f"parts {there.part_hash}, readings {there.readings_hash or 'unhashed'}",
         f"Calibration residuals (rms of corrected less defined reflection): {residuals}",
         f"Uncertainty: not evaluated in full; {_spread(calibration)}",
         f"Readings: {provenance.readings_hash or 'unhashed'}; schedule: {provenance.schedule_hash or 'unhashed'}",

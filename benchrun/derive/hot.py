@@ -97,6 +97,18 @@ def distance_bound(return_gain_db: float, input_match_db: float) -> float:
     return float(return_gain * match / (1.0 - match))
 
 
+def output_reflection(
+    s11: ComplexArray, s12: ComplexArray, s21: ComplexArray, s22: ComplexArray, source: ComplexArray
+) -> ComplexArray:
+    """Return the reflection (...) seen at the output of a device with `source` at port 1, where T is negligible.
+
+        Gamma_out = S22 + S12 S21 Gs1 / (1 - S11 Gs1)
+
+    Source: Pozar, Microwave Engineering, two-port power gains; METHODS section 1.
+    """
+    return np.asarray(s22 + s12 * s21 * source / (1.0 - s11 * source))
+
+
 def memoryless(
     gain: npt.ArrayLike, slope: npt.ArrayLike, amplitude: npt.ArrayLike
 ) -> tuple[ComplexArray, ComplexArray]:

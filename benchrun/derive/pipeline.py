@@ -269,7 +269,7 @@ def _drive_note(work: _Work, name: str | None, points: Points) -> str:
             f"there is no levelling '{name}' for the drive. Make it first, or pick one with --calibration."
         )
     if not isinstance(levelling, Levelling):
-        return "drive is power at the device-input plane, computed from the bench's parts and not levelled; gain refers to it"
+        return "drive is power at the device-input plane, computed from the bench's parts and not levelled"
     facts = work.facts(levelling.plane)
     levelling.check_fits(facts.part_hash, points.ended_utc, work.provenance.origin, facts.parts)
     made = levelling.circumstances.made_utc
