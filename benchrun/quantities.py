@@ -105,6 +105,11 @@ def parse(text: str | float, kind: Kind) -> float:
     return _with_unit(text.strip(), kind)
 
 
+def example(kind: Kind) -> str:
+    """Return how a quantity of this kind is written, as an example."""
+    return _EXAMPLE[kind]
+
+
 def _a(kind: Kind) -> str:
     return ("an " if kind[0] in "aio" else "a ") + kind.replace("-", " ")
 
