@@ -57,6 +57,7 @@ class Conversation:
         self._broken = False
         self._silenced = False
         self._summary = self._requested = False
+        self._rises = 0
 
     @property
     def instrument(self) -> Instrument:
@@ -238,6 +239,8 @@ class Conversation:
             message_available=available if message_available is None else message_available
         )
         summary = bool(byte & MASTER_SUMMARY)
-        self._requested = (self._requested or not self._summary) if summary else False
-        self._summary = summary
+        rises = self.instrument.service_rises
+        rose = not self._summary or rises != self._rises
+        self._requested = summary and (self._requested or rose)
+        self._summary, self._rises = summary, rises
         return byte

@@ -1,7 +1,7 @@
 """The HiSLIP protocol, server side (IVI-6.1, version 1.0 messages, synchronized mode; cited from memory).
 
-One server for each instrument, with the sub-address hislip0. A client opens two connections, synchronous and asynchronous;
-the second names the session that the first was given. Rules kept here:
+One server for each instrument, with the sub-address hislip0. A client opens two connections, synchronous and
+asynchronous; the second names the session that the first was given. Rules kept here:
 - a response carries the MessageID of the message that asked for it;
 - a message that comes before the response to the one before was read (its RMT-delivered bit says so) interrupts: -410,
   Interrupted and AsyncInterrupted;
@@ -326,7 +326,7 @@ class HislipSession:
         return self.locks.request(self.identifier, key, message.parameter / 1000.0)
 
     def _remote_local(self, control: int) -> None:
-        """Local lockout is the front panel's lock (IVI-6.1 table 20: 4 and 5 lock out, 0, 2 and 6 give the panel back)."""
+        """Lock the front panel (control codes 4 and 5) or give it back (0, 2 and 6)."""
         if control in {0, 2, 4, 5, 6}:
             with self.conversation.rack.lock:
                 self.conversation.instrument.panel_locked = control in {4, 5}

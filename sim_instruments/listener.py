@@ -16,7 +16,7 @@ _JOIN_S = 5.0
 class Listener:
     """Accepts connections and runs `serve(connection)` for each in a thread of its own.
 
-    What goes wrong on one connection ends that connection alone. More than MOST_CONNECTIONS at a time are closed at once.
+    What goes wrong on one connection ends that connection alone. Connections beyond MOST_CONNECTIONS are turned away.
     """
 
     def __init__(self, name: str, serve: Callable[[socket.socket], None]) -> None:

@@ -34,7 +34,7 @@ class MessageSplitter:
         self._buffer += data.decode("latin-1")
         messages = self._complete()
         if end and self._buffer:
-            messages.append(self._buffer.removesuffix("\r"))
+            messages.append(self._buffer)
             self.clear()
         if len(self._buffer) > INPUT_LIMIT:
             self.clear()
@@ -44,7 +44,7 @@ class MessageSplitter:
     def _complete(self) -> list[str]:
         messages: list[str] = []
         while (end := self._terminator()) >= 0:
-            messages.append(self._buffer[:end].removesuffix("\r"))
+            messages.append(self._buffer[:end])
             self._buffer, self._searched = self._buffer[end + 1 :], 0
         return messages
 

@@ -18,7 +18,7 @@ from zlib import crc32
 from .scpi_errors import ScpiError
 from .scpi_headers import CommandTable
 from .scpi_lexer import Token, Unit, units
-from .scpi_status import OPERATION_COMPLETE, RegisterGroup, Status
+from .scpi_status import MASTER_SUMMARY, OPERATION_COMPLETE, RegisterGroup, Status
 from .scpi_values import Boolean, LimitName, Number, Parameter
 
 MESSAGE_NS = 1_000_000
@@ -117,6 +117,8 @@ class Instrument:
         self.panel_locked = False
         self.busy_until_ns: int | None = None
         self._completion_wanted = False
+        self.service_rises = 0  # how often the master summary has risen, so that a fall and rise in one message is seen
+        self._summary = False
         self.power_on()
 
     # ---- life -------------------------------------------------------------------------------------------------
@@ -222,6 +224,7 @@ class Instrument:
         except ScpiError as error:
             self.status.error(error.number, error.detail)
         self.settle()
+        self._watch_summary()
         return b";".join(answers) + b"\n" if answers else b""
 
     def by_hand(self, message: str) -> bool:
@@ -247,6 +250,12 @@ class Instrument:
                     raise
                 self.status.error(error.number, error.detail)
             closed = closed or (unit.query and command.indefinite)
+            self._watch_summary()
+
+    def _watch_summary(self) -> None:
+        summary = bool(self.status.service_enable and self.status.byte(message_available=False) & MASTER_SUMMARY)
+        self.service_rises += summary and not self._summary
+        self._summary = summary
 
     def _perform(self, unit: Unit, command: Command, suffixes: tuple[int, ...], answers: list[bytes]) -> None:
         if unit.query:

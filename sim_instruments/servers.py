@@ -73,5 +73,6 @@ class ServedBench:
 
     def close(self) -> None:
         """Stop serving."""
-        for server in (*self._hislip.values(), *self._sockets.values(), self._channel):
+        servers: list[HislipServer | SocketServer | ChannelServer] = [self._channel]
+        for server in (*servers, *self._hislip.values(), *self._sockets.values()):
             server.close()

@@ -51,9 +51,10 @@ class _Session:
         self.refresh()
 
     def _first_values(self, resource: str) -> dict[int, Any]:
+        board = str(getattr(self.parsed, "board", 0))  # a serial line's may be a path
         return {
             ResourceAttribute.interface_type: self.kind[0],
-            ResourceAttribute.interface_number: int(getattr(self.parsed, "board", 0) or 0),
+            ResourceAttribute.interface_number: int(board) if board.isdecimal() else 0,
             ResourceAttribute.resource_class: self.kind[1],
             ResourceAttribute.resource_name: resource,
             ResourceAttribute.resource_manufacturer_name: "simulated bench",
