@@ -76,9 +76,7 @@ class Bench:
         self.connected = dict.fromkeys(self.sides, DEVICE)
         self.matings = dict.fromkeys(self.sides, 0)
         self.standards = Standards(wiring, constants, seed, definition_errors=imperfections.definitions)
-        self.device = Device(
-            constants, seed, second_order=imperfections.second_order, bias_resonance=imperfections.bias_resonance
-        )
+        self.device = Device(constants, seed, imperfections)
         self._coefficients: dict[tuple[float, DeviceState], Coefficients] = {}
         self._carriers: dict[tuple[Any, ...], Carrier] = {}
 

@@ -21,6 +21,7 @@ from typing import Any
 
 import numpy as np
 
+from .imperfections import Imperfections
 from .keyed import normal, phasor, stream
 from .levels import ComplexArray, FloatArray, root_watts, wave_ratio
 
@@ -112,20 +113,18 @@ class Coefficients:
 class Device:
     """The device under test, with its spread from specimen to specimen by the seed."""
 
-    def __init__(
-        self, constants: Mapping[str, Any], seed: int, *, second_order: bool = True, bias_resonance: bool = True
-    ) -> None:
+    def __init__(self, constants: Mapping[str, Any], seed: int, imperfections: Imperfections) -> None:
         self.own: Mapping[str, Any] = constants["device"]
         self._centre_hz, self._band_hz = constants["centre_hz"], constants["half_band_hz"]
-        self._seed = seed
+        self._seed, self.dispersive = seed, imperfections.dispersion
         self._gain_db = self.own["gain_db"] + self.own["gain_spread_db"] * self._spread("gain")
         self._linear = {
             name: self._scattered(name)
             for name in ("s11", "s11_move", "s22", "s22_move", "t22", "t12", "cold_s11", "cold_s22")
         }
-        size = self.own["second_order"] / math.sqrt(3.0) if second_order else 0.0
+        size = self.own["second_order"] / math.sqrt(3.0) if imperfections.second_order else 0.0
         self._second_order = tuple(size * phasor(seed, "second order", n) for n in range(3))
-        self._resonance = self.own["bias_resonance"]["size"] if bias_resonance else 0.0
+        self._resonance = self.own["bias_resonance"]["size"] if imperfections.bias_resonance else 0.0
         self._resonance_phasor = phasor(seed, "bias resonance")
         spread_v = self.own["gate_spread_v"] * (2.0 * float(stream(seed, "device", "gate").random()) - 1.0)
         self.nominal_gate_v = self.own["gate_voltage_v"] + spread_v

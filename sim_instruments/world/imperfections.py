@@ -20,8 +20,9 @@ class Imperfections:
     crosstalk: bool = True
     skirt: bool = True
     bias_resonance: bool = True
+    dispersion: bool = True
     second_order: bool = True
-    power_meter: bool = True
+    meter_error: bool = True
 
     @classmethod
     def of(cls, rehearsal: Mapping[str, Any]) -> Imperfections:

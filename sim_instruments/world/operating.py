@@ -21,6 +21,8 @@ Value = Any
 
 _TOLERANCE = 1e-14
 _MOST_ITERATIONS = 300
+# Root-watt below which there is no pump.
+_NO_PUMP = 1e-30
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,9 +44,9 @@ class Carrier:
 def _direction(wave: Value) -> Value:
     size = abs(wave)
     if isinstance(wave, np.ndarray):
-        present = size > 1e-30
+        present = size > _NO_PUMP
         return np.where(present, wave, 1.0) / np.where(present, size, 1.0)
-    return wave / size if size > 1e-30 else 1.0 + 0.0j
+    return wave / size if size > _NO_PUMP else 1.0 + 0.0j
 
 
 def solve_carrier(
@@ -68,9 +70,11 @@ def solve_carrier(
 def _wirtinger(frame: Value, size: Value, x: Value, f: Value, slopes: tuple[Value, Value, Value]) -> tuple[Value, ...]:
     """Derivatives of b = u f(A, x) with respect to a1, a1*, a2 and a2*."""
     slope_a, slope_x, slope_mirrored = slopes
-    # No pump: x is 0 there and f/A is the gain, so that the floor below is never seen.
-    size = np.maximum(size, 1e-30)
-    level, sway = f / size, (slope_x * x - slope_mirrored * np.conj(x)) / size
+    driven = np.abs(size) > _NO_PUMP
+    size = np.where(driven, size, 1.0)
+    # Where there is no pump, x is 0 as well, and f/A is its limit.
+    level = np.where(driven, f / size, slope_a)
+    sway = np.where(driven, (slope_x * x - slope_mirrored * np.conj(x)) / size, 0.0)
     turned = frame * frame
     return (
         0.5 * (level + slope_a - sway),
@@ -115,7 +119,8 @@ def linearise(
         for column, value in ((0, row[0]), (1, row[1]), (2, row[2]), (3, row[3])):
             matrix[:, port, column] = value
             matrix[:, port + 1, column ^ 1] = np.conj(value)
-    _add_dispersion(matrix, device, bias, pump_hz, probe_hz)
+    if device.dispersive:
+        _add_dispersion(matrix, device, bias, pump_hz, probe_hz)
     _add_bias_reaction(matrix, device, bias, carrier, probe_hz - pump_hz)
     return Sidebands(matrix)
 

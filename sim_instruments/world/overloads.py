@@ -66,7 +66,8 @@ def from_plane(
             yield from _down_an_arm(arm.parts, in_arm_dbm, frequency_hz, arm.instrument, arm.label, instruments)
         level_dbm -= float(nominal_loss_db(spec.get("loss_db", 0.0), frequency_hz)[0])
     for part in reversed(side.feed.parts):
-        yield from above(part.name, "level from the device", level_dbm, part.spec.get("damage_dbm"))
+        if part.spec["kind"] != "amplifier":  # its limit is for its input
+            yield from above(part.name, "level from the device", level_dbm, part.spec.get("damage_dbm"))
         level_dbm -= _backward_loss_db(part, frequency_hz)
     source = instruments.get(side.feed.instrument, {})
     yield from above(side.feed.instrument, "level into the source port", level_dbm, source.get("port_damage_dbm"))

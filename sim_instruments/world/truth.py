@@ -118,7 +118,7 @@ class Truth:
     def cold(self, frequency_hz: Sequence[float] | FloatArray) -> ComplexArray:
         """Output reflection of the unbiased device with this bench at port 1."""
         probe_hz = np.asarray(frequency_hz, dtype=np.float64)
-        off = Tone(probe_hz - 1e6, np.full(len(probe_hz), -60.0), False)
+        off = Tone(probe_hz, np.full(len(probe_hz), -60.0), False)
         bias = self._world.bench.device.bias(0.0, 0.0)
         return self._hot(off, probe_hz, DeviceState(bias, 0.0)).reflection
 

@@ -186,7 +186,7 @@ class World:
         """Reading of a power meter, dBm: incident power, its calibration factor applied."""
         own = self.constants["power_meter"]
         power_w = sum(self._incident_w(plane) for plane, what in self.bench.connected.items() if what == "meter")
-        error_db = own["error_db"] * normal(self.seed, "power meter") if self.imperfections.power_meter else 0.0
+        error_db = own["error_db"] * normal(self.seed, "power meter") if self.imperfections.meter_error else 0.0
         floor_w, noise = power_ratio(own["floor_dbm"] - 30.0), 0.0
         if self.imperfections.noise:
             on = sorted((name, *setting.key) for name, setting in self._sources.items() if setting.on)
