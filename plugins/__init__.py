@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from benchrun.contract.hooks import DriverSpec, hookimpl
+from benchrun.contract.hooks import DriverSpec, StepSpec, hookimpl
 
 
 @hookimpl
@@ -13,3 +13,11 @@ def benchrun_drivers() -> Sequence[DriverSpec]:
     from .drivers import DRIVERS
 
     return DRIVERS
+
+
+@hookimpl
+def benchrun_steps() -> Sequence[StepSpec]:
+    """Return the built-in steps."""
+    from .steps import STEPS
+
+    return STEPS

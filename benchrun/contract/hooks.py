@@ -61,7 +61,13 @@ class StepScope(Protocol):
         """The recipe's averaging count."""
 
     def value(self, text_or_number: str | float, target: str) -> float:
-        """Resolve a quantity, or a sum of references and quantities ("{frequency} - 7 MHz"), for a settable."""
+        """Resolve a quantity, or a sum of references and quantities ("{frequency} - 7 MHz"), for a settable.
+
+        Raises InputError for what cannot be resolved here, and for a value outside what the target takes.
+        """
+
+    def text(self, text: str) -> str:
+        """Replace the references to swept words ("{standard}") in a text by what they stand for here."""
 
     def following_read(self) -> tuple[str, ...]:
         """Signals that the next read step in the same list uses, () where there is none."""
@@ -84,7 +90,10 @@ class BenchAccess(Protocol):
         """Return the supply that carries this bias."""
 
     def bias_limits(self, bias: str) -> Mapping[str, float]:
-        """Limits of this bias from the bench file: voltage_low_v, voltage_high_v, current_limit_a, over_voltage_v."""
+        """Limits of this bias from the bench file: voltage_low_v, voltage_high_v, current_limit_a, over_voltage_v.
+
+        Where the bench file gives them, also pinch_off_v (a gate) and released_below_v (a drain).
+        """
 
     def say(self, text: str) -> None:
         """Tell the operator and the archive what was done."""
