@@ -13,13 +13,15 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Annotated, Any, Literal, cast
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import AfterValidator, BeforeValidator, Field, model_validator
 
 from benchrun.contract.kinds import Kind
 from benchrun.contract.roles import Value
 from benchrun.errors import InstrumentError, QuantityError, ReplyError
+from benchrun.fields import Duration, Number, Text
 from benchrun.quantities import parse
 from benchrun.visa import scpi
+from benchrun.yaml_source import Strict
 
 #: Suffixes that numbers are sent with, and what one of them is in the kind's own unit (IEEE 488.2 7.7.3, SCPI-1999 volume 1, 7.2).
 #: The first of each kind is the one used where an entry names none.
@@ -57,11 +59,26 @@ def _spelled_out(given: object) -> object:
     return {"kind": given} if isinstance(given, str) else given
 
 
-class _Strict(BaseModel):
-    model_config = ConfigDict(extra="forbid", frozen=True)
+def _one_command(given: str | None, pattern: str, example: str) -> str | None:
+    if given is not None and not re.fullmatch(pattern, given, re.ASCII):
+        text = "a header, then parameters that are words, numbers or placeholders, separated by commas"
+        raise ValueError(f"{given!r} is not one command such as '{example}': {text}")
+    return given
 
 
-class Carried(_Strict):
+def _set_form(given: str | None) -> str | None:
+    return _one_command(given, SET_PATTERN, "SOURce:POWer {level}")
+
+
+def _ask_form(given: str | None) -> str | None:
+    return _one_command(given, ASK_PATTERN, "SOURce:POWer?")
+
+
+SetForm = Annotated[str | None, AfterValidator(_set_form), Field(json_schema_extra={"pattern": SET_PATTERN})]
+AskForm = Annotated[str | None, AfterValidator(_ask_form), Field(json_schema_extra={"pattern": ASK_PATTERN})]
+
+
+class Carried(Strict):
     """What a placeholder or a reply carries: its kind, the suffix it travels in, and for text the words that are allowed."""
 
     kind: ReplyKind
@@ -152,36 +169,30 @@ def _write_switch(value: float) -> str:
 CarriedField = Annotated[Carried, BeforeValidator(_spelled_out)]
 
 
-class EntryText(_Strict):
+class EntryText(Strict):
     """One entry as written in a dialect file."""
 
-    set: str | None = Field(default=None, pattern=SET_PATTERN, description="the set form; capitals give the short form")
-    ask: str | None = Field(default=None, pattern=ASK_PATTERN, description="the query form")
+    set: SetForm = Field(default=None, description="the set form; its capitals give the short form")
+    ask: AskForm = Field(default=None, description="the query form")
     carries: dict[str, CarriedField] = Field(default={}, description="kind of each placeholder")
-    reply: CarriedField | None = Field(
-        default=None, description="kind of the reply; left out where it is what the set form carries"
-    )
-    tolerance: str | None = Field(
-        default=None, description="how far the value read back may be from the value sent, with its unit"
-    )
-    deadline: str | None = Field(default=None, description="longest time the exchange may take, with its unit")
+    reply: CarriedField | None = Field(default=None, description="kind of the reply, where the set form does not say it")
+    tolerance: str | None = Field(default=None, description="how far the value read back may be from the value sent")
+    deadline: Duration | None = Field(default=None, description="longest time the exchange may take")
 
 
-class Timing(_Strict):
-    """How long one make takes, for deadlines and estimates. Times with their units."""
+class Timing(Strict):
+    """How long one make takes, for deadlines and estimates."""
 
-    point: str = Field(default="1 ms", description="time for each point beside the filter's")
-    sweep: str = Field(default="20 ms", description="time for each sweep beside its points'")
-    filter_periods: float = Field(
-        default=1.5, alias="filter-periods", description="time in the filter, in periods of the IF bandwidth"
-    )
+    point: Duration = Field(default=1e-3, description="time for each point beside the filter's")
+    sweep: Duration = Field(default=20e-3, description="time for each sweep beside its points'")
+    filter_periods: Number = Field(default=1.5, description="time in the filter, in periods of the IF bandwidth")
 
 
-class DialectText(_Strict):
+class DialectText(Strict):
     """A *.dialect.yaml file."""
 
     benchrun: Literal[1]
-    title: str = ""
+    title: Text = ""
     options: bool | None = Field(default=None, description="whether *OPT? is answered")
     timing: Timing | None = None
     entries: dict[str, EntryText] = {}
@@ -282,7 +293,7 @@ class Entry:
         return next((word for word in words if scpi.is_form_of(str(value), word)), str(value)).upper()
 
 
-def _carried(text: EntryText, set_form: Template | None) -> str:
+def _carried(set_form: Template | None) -> str:
     """Name of the one placeholder that is a parameter of the set form, "" where there is none or more than one."""
     names = [name for name in set_form.names if name not in set_form.header_names] if set_form else []
     return names[0] if len(names) == 1 else ""
@@ -300,7 +311,7 @@ def compile_entry(name: str, text: EntryText) -> Entry:
     ask_form = Template.of(text.ask) if text.ask else None
     for form in filter(None, (set_form, ask_form)):
         _check_placeholders(form, text.carries)
-    carried = _carried(text, set_form)
+    carried = _carried(set_form)
     reply = text.reply or (text.carries[carried] if carried else None)
     if ask_form and reply is None:
         raise ValueError("it has a query form, and nothing says what the reply is: add `reply:` with its kind")
@@ -312,7 +323,7 @@ def compile_entry(name: str, text: EntryText) -> Entry:
         reply=reply,
         carried=carried,
         tolerance=_tolerance(text, reply),
-        deadline_s=parse(text.deadline, "time") if text.deadline else None,
+        deadline_s=text.deadline,
         level=next((name for name, one in text.carries.items() if one.kind == "level"), ""),
     )
 
@@ -362,22 +373,18 @@ def merged(base: DialectText, over: DialectText | None) -> DialectText:
     return base.model_copy(update={**update, "entries": entries})
 
 
-def compile_dialect(text: DialectText) -> Dialect:
-    """Make a dialect ready for use. Raises ValueError or QuantityError with the entry's name in front."""
+def compile_dialect(text: DialectText) -> tuple[Dialect, dict[str, str]]:
+    """Make a dialect ready for use; returns it and what is wrong, by the entry's name."""
     entries: dict[str, Entry] = {}
+    wrong: dict[str, str] = {}
     for name, entry in text.entries.items():
         try:
             entries[name] = compile_entry(name, entry)
         except (ValueError, QuantityError) as error:
-            raise type(error)(f"entry {name!r}: {error}") from None
+            wrong[name] = str(error)
     timing = text.timing or Timing()
-    return Dialect(
-        entries=entries,
-        options=bool(text.options),
-        point_s=parse(timing.point, "time"),
-        sweep_s=parse(timing.sweep, "time"),
-        filter_periods=timing.filter_periods,
-    )
+    dialect = Dialect(entries, bool(text.options), timing.point, timing.sweep, timing.filter_periods)
+    return dialect, wrong
 
 
 def missing(dialect: Dialect, names: Iterable[str]) -> tuple[str, ...]:

@@ -12,6 +12,7 @@ from __future__ import annotations
 import threading
 from collections import deque
 from collections.abc import Callable, Sequence
+from functools import partial
 from typing import Any, Protocol, TypeVar
 
 from benchrun.contract.capture import FloatArray
@@ -25,6 +26,9 @@ from benchrun.visa.exchange import ERROR_QUERY, Exchange, Use, compose, join, re
 DEADLINE_S = 2.0
 #: How long the error queue may take to say why an exchange was not answered.
 EXPLAIN_S = 0.5
+#: How long a query may take that only asks whether it is understood; where its entry allows more, this much.
+PROBE_S = 0.5
+LONG_PROBE_S = 3.0
 REMEMBERED = 64
 #: How often a link is opened anew before it is given up.
 REOPENINGS = 3
@@ -171,6 +175,23 @@ class Session:
             options = self._say("*OPT?", DEADLINE_S) if self._dialect.options else ""
             self._drain()
             return Identity(maker, model, serial, firmware, options.strip())
+
+    def understands(self, entry: str, **values: Value) -> bool:
+        """Whether the instrument takes this query for one; nothing is set. Raises BenchError where it does not talk at all.
+
+        Only a command error (-199 to -100, SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may
+        still have nothing to tell.
+        """
+        found = self._dialect[entry]
+        message = self._unsent(lambda: join([found.ask_text(values), ERROR_QUERY]))
+        with self._lock:
+            try:
+                text = self._say(message, min(found.deadline_s or PROBE_S, LONG_PROBE_S))
+                first = self._understood(message, lambda: take_apart(text)).error
+            except (InstrumentError, NoAnswerError):
+                return False
+            entries = [first, *self._drain()] if first.number else []
+            return not any(-200 < one.number <= -100 for one in entries)
 
     def reopen(self) -> None:
         """Open the link anew, clear it, and forget what was believed of the instrument. Raises LinkError, ReplyError."""
@@ -326,7 +347,7 @@ class Session:
         entries: list[scpi.ErrorEntry] = []
         while len(entries) < LONGEST_QUEUE:
             text = self._say(ERROR_QUERY, DEADLINE_S)
-            entry = self._understood(ERROR_QUERY, lambda text=text: scpi.parse_error(text))
+            entry = self._understood(ERROR_QUERY, partial(scpi.parse_error, text))
             if entry.number == 0:
                 break
             entries.append(entry)
