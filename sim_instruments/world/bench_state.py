@@ -20,7 +20,7 @@ INPUT, OUTPUT = "input", "output"
 DEVICE = "device"
 # An image that would fall below this is far from anything that the bench passes.
 _LOWEST_HZ = 1e6
-_MOST_KNOWN = 20_000
+_MOST_KNOWN = 4_000
 # The probe is on the carrier when it is no farther than this.
 ON_CARRIER_HZ = 1.0
 

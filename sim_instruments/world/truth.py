@@ -15,6 +15,8 @@ from .supplies import DRAIN, GATE
 if TYPE_CHECKING:
     from .world import World
 
+_MOST_READINGS = 20_000
+
 
 @dataclass(frozen=True, slots=True)
 class ErrorTerms:
@@ -67,16 +69,21 @@ class Truth:
         self._readings: dict[int, tuple[Tone, Tone, DeviceState]] = {}
 
     def remember(self, start_ns: int, pump: Tone, probe: Tone, state: DeviceState) -> None:
-        """Keep the conditions of a reading, by its start."""
+        """Keep the conditions of a reading, by its start; the oldest make room in a long night."""
         self._readings[start_ns] = pump, probe, state
+        if len(self._readings) > _MOST_READINGS:
+            del self._readings[next(iter(self._readings))]
 
     @property
     def starts_ns(self) -> tuple[int, ...]:
-        """Starts of all readings so far."""
+        """Starts of the readings that are still known."""
         return tuple(self._readings)
 
     def reading(self, start_ns: int) -> HotTruth:
-        """Return the truth at a reading's sources, bias and temperature, with the connections of now."""
+        """Return the truth at a reading's sources, bias and temperature, with the connections of now.
+
+        Raises KeyError for a start at which nothing was read.
+        """
         pump, probe, state = self._readings[start_ns]
         return self._hot(pump, probe.frequency_hz, state)
 

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from benchrun_sim.world import World
 from benchrun_sim.world.bench_state import Tone
 from benchrun_sim.world.operating import solve_carrier
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from .demo_bench import PERFECT, bias_up
+from .demo_bench import PERFECT, bias_up, demo_wiring
 
 PROBE = 2.3e9
 LABELS = ["R3", "R4"]
@@ -53,10 +54,6 @@ def test_carrier_meets_the_bench_and_the_device(make_world_cached, g1, g2, drive
 
 @pytest.fixture(scope="module")
 def make_world_cached():
-    from benchrun_sim.world import World
-
-    from .demo_bench import demo_wiring
-
     known = {}
 
     def build(seed):
@@ -169,6 +166,35 @@ def test_cold_device_shows_its_passive_reflection(perfect):
     corrected = (raw - terms.e00) / (terms.e10e01 + terms.e11 * (raw - terms.e00))
     assert corrected == pytest.approx(perfect.truth.cold(grid), abs=1e-10)
     assert np.abs(perfect.truth.cold(grid)) == pytest.approx(np.full(11, 0.86), abs=0.01)
+
+
+def test_coupler_at_the_input_sees_the_input_side():
+    wiring = demo_wiring(**PERFECT)
+    wiring["parts"]["input-coupler"] = {"kind": "coupler", "coupling_db": 30.0, "directivity_db": 35.0, "loss_db": 0.3}
+    wiring["signals"]["pump"]["path"].append("input-coupler")
+    for name, label, arm in (("input-incident", "R1", "incident"), ("input-reflected", "R2", "reflected")):
+        wiring["receivers"][name] = {
+            "instrument": "analyser",
+            "receiver": label,
+            "coupler": "input-coupler",
+            "arm": arm,
+            "path": ["P1"],
+        }
+    world = World(wiring, 1)
+    bias_up(world)
+    world.set_source("pump", frequency_hz=PROBE - 7e6, level_dbm=-3.0, on=True)
+    world.set_source("analyser", frequency_hz=PROBE, level_dbm=8.0, on=True)
+    offsets = np.array([0.0, -7e6, -14e6])
+    waves, _ = world.measure_waves("analyser", ["R1", "R2", "R3", "R4"], [PROBE], offsets, 300.0, 1, True, 5)
+    terms = world.truth.error_terms(PROBE + offsets, "input", "input-incident", "input-reflected")
+    r, m = waves[:, 0, 0], waves[:, 1, 0]
+    b1 = terms.k * (m - terms.e00 * r) / terms.e10e01
+    a1 = terms.k * r + terms.e11 * b1
+    truth = world.truth.reading(5)
+    assert 20 * np.log10(abs(a1[1])) + 30 == pytest.approx(truth.input_dbm[0], abs=1e-9)
+    # The sidebands reach port 1 through the device alone: there a1 is what the bench reflects.
+    match = world.truth.bench_reflection("input", PROBE + offsets)
+    assert a1[[0, 2]] == pytest.approx((match * b1)[[0, 2]], rel=1e-9)
 
 
 def test_probe_on_the_carrier_acts_on_the_carrier(make_world):
