@@ -18,6 +18,7 @@ from benchrun.derive.points import FREQUENCY, Points
 from benchrun.derive.power import scale_from_incident
 from benchrun.derive.standards import Definition
 from benchrun.errors import DataSetError
+from benchrun.quantities import show
 
 PROBE = "probe"
 #: A standard that misses its definition by this much (rms) was not that standard, or not properly connected.
@@ -73,7 +74,7 @@ def level(name: str, signal: str, plane: str, points: Points, circumstances: Cir
     if np.any(np.isnan(table)):
         at = np.argwhere(np.isnan(table))[0]
         raise DataSetError(
-            f"levelling '{name}' lacks {signal} {levels[at[0]]:g} dBm at {frequencies[at[1]] / 1e9:.6g} GHz: "
+            f"levelling '{name}' lacks {signal} {levels[at[0]]:g} dBm at {show(frequencies[at[1]], 'frequency', 7)}: "
             "level again, with every level at every frequency."
         )
     return Levelling(name, signal, plane, levels, frequencies, table, circumstances)
@@ -129,7 +130,8 @@ def _scale(points: Points, calibration: Calibration, facts: BenchFacts) -> Float
     if f.size == 0 or np.any(np.diff(f) <= 0.0) or np.any(outside(f, calibration.frequency_hz)):
         raise DataSetError(
             f"readings '{points.name}' do not cover the standards' grid: the power meter must be read once at each "
-            f"frequency from {calibration.frequency_hz[0] / 1e9:.6g} to {calibration.frequency_hz[-1] / 1e9:.6g} GHz."
+            f"frequency from {show(calibration.frequency_hz[0], 'frequency')} to "
+            f"{show(calibration.frequency_hz[-1], 'frequency')}."
         )
     measured = restore(points, facts.reflected, facts).tones[PROBE][order]
     reference = restore(points, facts.incident, facts).tones[PROBE][order]

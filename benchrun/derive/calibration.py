@@ -14,6 +14,7 @@ from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.derive.interpolation import interpolate, outside
 from benchrun.derive.one_port import ErrorTerms
 from benchrun.errors import CalibrationError
+from benchrun.quantities import show
 
 DOCUMENT_VERSION = 1
 
@@ -217,4 +218,4 @@ def _unpair(values: Sequence[Sequence[float]]) -> ComplexArray:
 
 
 def _range(frequency_hz: FloatArray) -> str:
-    return f"{frequency_hz.min() / 1e9:.6g} to {frequency_hz.max() / 1e9:.6g} GHz"
+    return f"{show(frequency_hz.min(), 'frequency', 7)} to {show(frequency_hz.max(), 'frequency', 7)}"

@@ -32,11 +32,16 @@ def conversion_comment(bound: float, *, coherent: bool) -> str:
     return f"{what}; within {bound:.4f} of the device's own (first-order bound from the bench file)"
 
 
+def cold_comment(plane: str) -> str:
+    """Return the line that says what a reflection without a pump is."""
+    return f"S11 column: reflection of the device at the {plane} plane, with this bench at its other port"
+
+
 def head(provenance: Provenance) -> tuple[str, ...]:
     """Return the first lines: who wrote this, of which device, real or simulated."""
     lines = [f"benchrun {provenance.version}: {provenance.title}".strip(": ")]
     if provenance.simulated:
-        lines.insert(0, f"SIMULATED ({provenance.origin}): nothing real was measured")
+        lines.insert(0, f"SIMULATED{provenance.origin.removeprefix('simulated')}: nothing real was measured")
     if provenance.part or provenance.serial:
         lines.append(f"Device: {provenance.part}, serial {provenance.serial}".replace(": ,", ":"))
     return tuple(lines)

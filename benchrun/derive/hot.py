@@ -16,6 +16,7 @@ import numpy.typing as npt
 
 from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.errors import DataSetError
+from benchrun.quantities import show
 
 #: Condition number of the column-scaled system above which probe phases are called bunched.
 LARGEST_CONDITION = 30.0
@@ -163,7 +164,7 @@ def _require_spread(condition: FloatArray, frequency_hz: FloatArray | None) -> N
     bunched = ~(condition <= LARGEST_CONDITION)
     if np.any(bunched):
         at = int(np.argmax(bunched))
-        where = f"index {at}" if frequency_hz is None else f"{frequency_hz[at] / 1e9:.6g} GHz"
+        where = f"index {at}" if frequency_hz is None else show(frequency_hz[at], "frequency", 7)
         raise DataSetError(
             f"the probe phases bunch at {where} (condition number {condition[at]:.3g}): S22 and T22 cannot be "
             "separated. Spread them evenly, best 120 degrees apart."

@@ -11,6 +11,7 @@ from benchrun.derive.corrected import IMAGE, PROBE, PUMP, Corrected
 from benchrun.derive.facts import BenchFacts
 from benchrun.derive.hot import distance_bound, one_sideband, referred_to_pump, two_sidebands
 from benchrun.derive.optimum_load import has_optimum, optimum_load
+from benchrun.derive.points import condition_keys
 from benchrun.derive.results import Column, Table
 
 PHASE_REFERENCE = "twice the phase of b2 at the pump (the pump's wave out of the device, at the output plane)"
@@ -79,7 +80,7 @@ def hot_table(corrected: Corrected, match: HotMatch) -> Table:
     other conditions, less the gain.
     """
     points = corrected.points
-    columns: dict[str, Column] = {k: points.conditions[k] for k in _condition_keys(corrected)}
+    columns: dict[str, Column] = {k: points.conditions[k] for k in condition_keys(points)}
     columns["frequency_hz"] = points.frequency_hz
     columns["pump_frequency_hz"] = points.tone_hz(PUMP)
     columns["output_power_dbm"] = _dbm(match.output_w)
@@ -88,11 +89,11 @@ def hot_table(corrected: Corrected, match: HotMatch) -> Table:
         gain_db = columns["output_power_dbm"].astype(np.float64) - points.number("drive_dbm")
         columns["gain_db"] = gain_db
         columns["compression_db"] = _compression_db(corrected, gain_db)
-    columns |= _polar("output_reflection", match.reflection)
+    columns |= polar("output_reflection", match.reflection)
     columns["output_reflection_from_s22_at_most_ratio"] = match.reflection_bound
     columns |= _conversion_columns(match)
     if match.load is not None and match.load_w is not None:
-        columns |= _polar("optimum_load_extrapolated", match.load)
+        columns |= polar("optimum_load_extrapolated", match.load)
         columns["optimum_load_extrapolated_power_dbm"] = _dbm(match.load_w)
     columns |= dict(points.scalars)
     columns["flags"] = flag_column(hot_flags(corrected, match))
@@ -102,14 +103,6 @@ def hot_table(corrected: Corrected, match: HotMatch) -> Table:
 def flag_column(flags: tuple[tuple[str, ...], ...]) -> Column:
     """Return one text for each point: its words with spaces between."""
     return np.array([" ".join(words) for words in flags], dtype=np.str_)
-
-
-def _condition_keys(corrected: Corrected) -> list[str]:
-    """Return what was swept, the drive first even where it has one value only."""
-    keys = list(corrected.points.sweep_keys())
-    if "drive_dbm" in corrected.points.conditions and "drive_dbm" not in keys:
-        keys.insert(0, "drive_dbm")
-    return keys
 
 
 def _conversion_columns(match: HotMatch) -> dict[str, Column]:
@@ -143,7 +136,8 @@ def _compression_db(corrected: Corrected, gain_db: FloatArray) -> FloatArray:
     return np.array([gain_db[lowest[place]] - gain_db[i] for i, place in enumerate(places)])
 
 
-def _polar(name: str, values: ComplexArray) -> dict[str, Column]:
+def polar(name: str, values: ComplexArray) -> dict[str, Column]:
+    """Return the columns of magnitude and phase of complex `values` (N,)."""
     return {f"{name}_magnitude_ratio": np.abs(values), f"{name}_phase_deg": np.angle(values, deg=True)}
 
 

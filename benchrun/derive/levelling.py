@@ -13,6 +13,7 @@ from benchrun.contract.capture import FloatArray
 from benchrun.derive.calibration import DOCUMENT_VERSION, Circumstances, require_kind
 from benchrun.derive.interpolation import interpolate, outside
 from benchrun.errors import CalibrationError, DataSetError
+from benchrun.quantities import show
 
 #: How far below the lowest levelled power a drive may lie, in dB: a chain is linear there, its gain is carried on.
 REACH_DOWN_DB = 3.0
@@ -42,8 +43,8 @@ class Levelling:
         flat = ~np.all(np.diff(self.power_dbm, axis=0) > 0.0, axis=0)
         if np.any(flat):
             raise DataSetError(
-                f"levelling '{self.name}': at {self.frequency_hz[flat][0] / 1e9:.6g} GHz the power does not rise "
-                f"with the {self.signal}'s level. Is the meter connected, the booster on and not saturated?"
+                f"levelling '{self.name}': at {show(self.frequency_hz[flat][0], 'frequency', 7)} the power does not "
+                f"rise with the {self.signal}'s level. Is the meter connected, the booster on and not saturated?"
             )
 
     def power_at(self, frequency_hz: npt.ArrayLike) -> FloatArray:
@@ -51,8 +52,8 @@ class Levelling:
         wanted = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         if np.any(beyond := outside(self.frequency_hz, wanted)):
             raise CalibrationError(
-                f"levelling '{self.name}' covers {self.frequency_hz[0] / 1e9:.6g} to "
-                f"{self.frequency_hz[-1] / 1e9:.6g} GHz; {wanted[beyond][0] / 1e9:.6g} GHz is wanted. "
+                f"levelling '{self.name}' covers {show(self.frequency_hz[0], 'frequency', 7)} to "
+                f"{show(self.frequency_hz[-1], 'frequency', 7)}; {show(wanted[beyond][0], 'frequency', 7)} is wanted. "
                 "Level over that range."
             )
         return np.ascontiguousarray(interpolate(self.frequency_hz, self.power_dbm, wanted).T)
@@ -79,7 +80,7 @@ class Levelling:
             at = int(np.argmax(unreached))
             raise CalibrationError(
                 f"levelling '{self.name}' reaches {power[at, 0]:.2f} to {high[at]:.2f} dBm at "
-                f"{frequency[at] / 1e9:.6g} GHz; a drive of {wanted[at]:.2f} dBm is wanted. "
+                f"{show(frequency[at], 'frequency', 7)}; a drive of {wanted[at]:.2f} dBm is wanted. "
                 f"Level over more of the {self.signal}'s range."
             )
 
@@ -121,11 +122,11 @@ class Levelling:
 def _monotone(x: FloatArray, y: FloatArray, at: FloatArray) -> FloatArray:
     """Interpolate y (L,) over rising x (N, L) at the points `at` (N,), monotone between the knots.
 
-    Cubic Hermite pieces with the harmonic mean of neighbouring slopes at the knots.
+    Cubic Hermite pieces; at the inner knots the harmonic mean of neighbouring slopes, at the ends a parabola's slope.
     Source: Fritsch, Butland, SIAM J. Sci. Stat. Comput. 5(2) 1984 (mem.).
     """
     step, slope = np.diff(x, axis=1), np.diff(y) / np.diff(x, axis=1)
-    knots = np.concatenate([slope[:, :1], _harmonic(step, slope), slope[:, -1:]], axis=1)
+    knots = _knot_slopes(step, slope)
     rows = np.arange(len(x))
     k = np.clip(np.sum(x <= at[:, None], axis=1) - 1, 0, x.shape[1] - 2)
     h = step[rows, k]
@@ -138,8 +139,19 @@ def _monotone(x: FloatArray, y: FloatArray, at: FloatArray) -> FloatArray:
     )
 
 
-def _harmonic(step: FloatArray, slope: FloatArray) -> FloatArray:
-    """Return the slopes (N, L-2) at the inner knots: the weighted harmonic mean of the slopes on both sides."""
+def _knot_slopes(step: FloatArray, slope: FloatArray) -> FloatArray:
+    """Return the slopes (N, L) at the knots from the steps and slopes (N, L-1) between them, all above zero."""
+    if slope.shape[1] == 1:
+        return np.repeat(slope, 2, axis=1)
     left, right = step[:, :-1], step[:, 1:]
     w_left, w_right = left + 2.0 * right, 2.0 * left + right
-    return np.asarray((w_left + w_right) / (w_left / slope[:, :-1] + w_right / slope[:, 1:]))
+    inner = (w_left + w_right) / (w_left / slope[:, :-1] + w_right / slope[:, 1:])
+    first = _end_slope(step[:, 0], step[:, 1], slope[:, 0], slope[:, 1])
+    last = _end_slope(step[:, -1], step[:, -2], slope[:, -1], slope[:, -2])
+    return np.concatenate([first[:, None], inner, last[:, None]], axis=1)
+
+
+def _end_slope(near: FloatArray, far: FloatArray, slope: FloatArray, next_slope: FloatArray) -> FloatArray:
+    """Return the slope (N,) at an end of the parabola through three knots, kept where the piece stays monotone."""
+    parabola = ((2.0 * near + far) * slope - near * next_slope) / (near + far)
+    return np.clip(parabola, 0.0, 3.0 * slope)

@@ -11,6 +11,7 @@ import numpy.typing as npt
 
 from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.errors import DataSetError
+from benchrun.quantities import show
 
 #: Two reflections closer than this are one standard: it is ten times the definition uncertainty of a field kit.
 ALIKE = 0.02
@@ -142,7 +143,7 @@ def _require_span(
     if np.any(short):
         at = int(np.argmax(short))
         close = _together(distance[:, :, at], alike * size[at], names)
-        where = "" if frequency_hz is None else f" at {frequency_hz[at] / 1e9:.6g} GHz"
+        where = "" if frequency_hz is None else f" at {show(frequency_hz[at], 'frequency', 7)}"
         raise DataSetError(
             f"{close} {how} alike{where}, and without three different reflections there is no one-port calibration. "
             "Was one standard connected twice? Read them again, or take another standard."

@@ -11,6 +11,7 @@ import numpy.typing as npt
 from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.contract.reading import Reading
 from benchrun.errors import DataSetError
+from benchrun.quantities import show
 
 FREQUENCY = "frequency_hz"
 Values = npt.NDArray[np.float64] | npt.NDArray[np.str_]
@@ -95,6 +96,14 @@ class Points:
         return len(set(places)) == len(set(zip(places, self.conditions[key], strict=True)))
 
 
+def condition_keys(points: Points) -> list[str]:
+    """Return what was swept beside frequency, the drive first even where it has one value only."""
+    keys = list(points.sweep_keys())
+    if "drive_dbm" in points.conditions and "drive_dbm" not in keys:
+        keys.insert(0, "drive_dbm")
+    return keys
+
+
 def stack(readings: Iterable[Reading], name: str) -> Points:
     """Return the final attempts of the readings called `name` as points, in the order of the schedule.
 
@@ -129,7 +138,7 @@ def stack(readings: Iterable[Reading], name: str) -> Points:
     if not np.all(np.isfinite(points.data)):
         bad = points.frequency_hz[~np.all(np.isfinite(points.data), axis=(0, 1))][0]
         raise DataSetError(
-            f"readings '{name}' hold a wave that is no number at {bad / 1e9:.6g} GHz: read that point again."
+            f"readings '{name}' hold a wave that is no number at {show(bad, 'frequency', 7)}: read that point again."
         )
     return points
 

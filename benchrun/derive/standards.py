@@ -13,6 +13,7 @@ import numpy.typing as npt
 from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.derive.interpolation import interpolate, outside
 from benchrun.errors import DataSetError
+from benchrun.quantities import show
 
 SHAPES = ("open", "short", "match")
 
@@ -64,7 +65,9 @@ class Standard:
         """
         f = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         if not np.all(np.isfinite(f) & (f > 0.0)):
-            raise DataSetError(f"a standard's definition holds above 0 Hz; {_show_hz(f[~(f > 0.0)][0])} was asked for.")
+            raise DataSetError(
+                f"a standard's definition holds above 0 Hz; {show(f[~(f > 0.0)][0], 'frequency', 7)} was asked for."
+            )
         return self._behind_line(f, self._termination(f, reference_ohm), reference_ohm)
 
     def _termination(self, f: FloatArray, reference_ohm: float) -> ComplexArray:
@@ -104,8 +107,8 @@ class MeasuredStandard:
         f = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         if np.any(beyond := outside(self.frequency_hz, f)):
             raise DataSetError(
-                f"{self.source}: its data run from {_show_hz(self.frequency_hz[0])} to "
-                f"{_show_hz(self.frequency_hz[-1])}; {_show_hz(f[beyond][0])} lies outside. "
+                f"{self.source}: its data run from {show(self.frequency_hz[0], 'frequency', 7)} to "
+                f"{show(self.frequency_hz[-1], 'frequency', 7)}; {show(f[beyond][0], 'frequency', 7)} lies outside. "
                 "Measure inside that range, or take another definition."
             )
         return refer(interpolate(self.frequency_hz, self.values, f), self.impedance_ohm, reference_ohm)
@@ -161,7 +164,3 @@ _FIELDS = ("delay_s", "offset_loss_ohm_per_s", "offset_impedance_ohm", "capacita
 def _polynomial(coefficients: Sequence[float], f: FloatArray) -> FloatArray:
     """Return c0 + c1 f + c2 f^2 + ... (F,)."""
     return np.asarray(np.polynomial.polynomial.polyval(f, np.asarray(coefficients or (0.0,), dtype=np.float64)))
-
-
-def _show_hz(frequency_hz: float) -> str:
-    return f"{frequency_hz / 1e9:.6g} GHz"
