@@ -232,16 +232,18 @@ def _mark(node: Node) -> Mark:
     return node.start_mark.line + 1, node.start_mark.column + 1
 
 
-def check(source: Source, model: type[Checked], within: Path_ = (), data: Any = None) -> tuple[Checked | None, list[Problem]]:
+def check(
+    source: Source, model: type[Checked], within: Path_ = (), data: Any = None, context: Mapping[str, Any] | None = None
+) -> tuple[Checked | None, list[Problem]]:
     """Check data of a source against a model: (the model, []) or (None, all its problems with their places).
 
-    `within` is the path of `data` in the source where only a part of it is checked.
+    `within` is the path of `data` in the source where only a part of it is checked; `context` reaches the fields' own checks.
     """
     unknown_keys: list[tuple[Mark, str]] = []
     checked: Checked | None = None
     problems: list[Problem] = []
     try:
-        checked = model.model_validate(source.data if data is None else data, context={"unknown_keys": unknown_keys})
+        checked = model.model_validate(source.data if data is None else data, context={**(context or {}), "unknown_keys": unknown_keys})
     except ValidationError as error:
         problems = [_problem(source, within, detail) for detail in error.errors(include_url=False)]
     problems += [Problem(source.file, *mark, message) for mark, message in unknown_keys]
