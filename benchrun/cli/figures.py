@@ -2,7 +2,12 @@
 
 from __future__ import annotations
 
-from benchrun.contract.kinds import UNIT_SUFFIX
+from typing import cast
+
+from benchrun.contract.kinds import UNIT_SUFFIX, Kind
+from benchrun.quantities import show
+
+_KIND_OF = {suffix: cast(Kind, kind) for kind, suffix in UNIT_SUFFIX.items()}
 
 
 def level_text(level_dbm: float | None) -> str:
@@ -37,12 +42,14 @@ def condition_text(key: str, value: float | str) -> str:
     """Return a condition of a reading for a person: ("pump.level_dbm", 3.0) gives 'pump.level +3.0 dBm'."""
     if isinstance(value, str):
         return f"{key.replace('connected.', 'at ')} {value}"
-    from benchrun.quantities import show
-
-    for kind, suffix in UNIT_SUFFIX.items():
-        if key.endswith(f"_{suffix}"):
-            return f"{key.removesuffix(f'_{suffix}')} {show(value, kind)}"
-    return f"{key} {value:g}"
+    name, _, suffix = key.rpartition("_")
+    match _KIND_OF.get(suffix):
+        case None:
+            return f"{key} {value:g}"
+        case "level":
+            return f"{name} {level_text(value)}"
+        case kind:
+            return f"{name} {show(value, kind, 6)}"
 
 
 def count_text(count: int, thing: str) -> str:

@@ -34,6 +34,7 @@ class TerminalProgress:
         self._varying = Varying()
         self._flagged = 0
         self._next_s = 0.0
+        self._widest: dict[str, int] = {}
 
     def __enter__(self) -> Self:
         return self
@@ -71,8 +72,13 @@ class TerminalProgress:
         self._flagged += bool(flags)
         if (now_s := self._now_s()) < self._next_s:
             return
-        where = "  ".join(condition_text(key, conditions[key]) for key in self._varying.names())
+        where = "  ".join(self._steady(condition_text(key, conditions[key]), key) for key in self._varying.names())
         self._show(now_s, Line(self._phase, where, (index + 1) / max(total, 1), left_s, bench_left_s, self._flagged))
+
+    def _steady(self, text: str, key: str) -> str:
+        """Fill `text` up to the widest so far under this key, so that what follows it does not jump."""
+        self._widest[key] = max(self._widest.get(key, 0), len(text))
+        return text.ljust(self._widest[key])
 
     def message(self, text: str) -> None:
         """Print a line that stays."""
