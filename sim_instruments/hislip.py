@@ -32,6 +32,7 @@ LARGEST_MESSAGE = 1 << 20
 SMALLEST_PAYLOAD = 64
 _LARGEST_CONTROL_PAYLOAD = 4096
 _HANDSHAKE_S = 10.0
+_PARTING_S, _PARTING_READS = 1.0, 64
 _HEADER = struct.Struct("!2sBBIQ")
 
 
@@ -106,9 +107,23 @@ class Wire:
             self.connection.sendall(header + payload)
 
     def send_if_free(self, kind: Type, control: int) -> None:
-        """Send a message without payload unless the client has long stopped reading."""
-        if select.select([], [self.connection], [], 0)[1]:
-            self.send(kind, control)
+        """Send a message without payload, unless the client has long stopped reading: this one never waits for it."""
+        if not self._sending.acquire(blocking=False):
+            return
+        try:
+            if select.select([], [self.connection], [], 0)[1]:
+                self.connection.sendall(_HEADER.pack(b"HS", kind, control, 0, 0))
+        finally:
+            self._sending.release()
+
+    def end(self, error: FatalProtocolError) -> None:
+        """Say why, and let the client read it before the connection is closed. Raises OSError."""
+        self.send(Type.FATAL_ERROR, error.code, 0, str(error).encode())
+        self.connection.shutdown(socket.SHUT_WR)
+        self.connection.settimeout(_PARTING_S)
+        for _ in range(_PARTING_READS):
+            if not self.connection.recv(_LARGEST_CONTROL_PAYLOAD):
+                return
 
     def receive(self) -> Message | None:
         """Return the next message, or None at the end. Raises FatalProtocolError and OSError."""
@@ -214,14 +229,13 @@ class HislipSession:
         self.payload_limit = LARGEST_MESSAGE - _HEADER.size
         conversation.rack.listeners.add(self.notice)
 
-    def close(self) -> None:
-        """End both wires."""
+    def close(self, other: Wire | None) -> None:
+        """One wire has ended: release all, and end the other one too."""
         self.conversation.rack.listeners.discard(self.notice)
         self.locks.forget(self.identifier)
-        for wire in (self.sync, self.channel):
-            if wire is not None:
-                with contextlib.suppress(OSError):
-                    wire.connection.shutdown(socket.SHUT_RDWR)
+        if other is not None:
+            with contextlib.suppress(OSError):
+                other.connection.shutdown(socket.SHUT_RDWR)
 
     def notice(self) -> None:
         """Send a service request if the instrument has a new one."""
@@ -354,8 +368,7 @@ class HislipServer:
         try:
             self._begin(wire)
         except FatalProtocolError as error:
-            with contextlib.suppress(OSError):
-                wire.send(Type.FATAL_ERROR, error.code, 0, str(error).encode())
+            wire.end(error)
         except LinkLostError:
             reset(connection)
 
@@ -386,7 +399,7 @@ class HislipServer:
             session.serve_sync()
         finally:
             self._sessions.pop(identifier, None)
-            session.close()
+            session.close(session.channel)
 
     def _serve_async(self, wire: Wire, session: HislipSession) -> None:
         if session.channel is not None:
@@ -394,4 +407,4 @@ class HislipServer:
         try:
             session.serve_async(wire)
         finally:
-            session.close()
+            session.close(session.sync)

@@ -5,12 +5,16 @@ from __future__ import annotations
 import contextlib
 import socket
 import struct
+import sys
 import threading
+import time
 from collections.abc import Callable
 
 HOST = "127.0.0.1"
 MOST_CONNECTIONS = 64
 _JOIN_S = 5.0
+_AGAIN_S = 0.05
+_LINGER = "hh" if sys.platform == "win32" else "ii"
 
 
 class Listener:
@@ -37,9 +41,12 @@ class Listener:
             except OSError:
                 if self._closing:
                     return
+                time.sleep(_AGAIN_S)  # too many open files, perhaps: not for ever
                 continue
             if not self._admit(connection):
                 connection.close()
+            if self._closing:
+                return
 
     def _admit(self, connection: socket.socket) -> bool:
         with self._lock:
@@ -84,5 +91,5 @@ def _shut(connection: socket.socket) -> None:
 def reset(connection: socket.socket) -> None:
     """Break a connection so that the client sees a reset, not an orderly end."""
     with contextlib.suppress(OSError):
-        connection.setsockopt(socket.SOL_SOCKET, socket.SO_LINGER, struct.pack("ii", 1, 0))
+        connection.setsockopt(socket.SOL_SOCKET, socket.SO_LINGER, struct.pack(_LINGER, 1, 0))
     connection.close()
