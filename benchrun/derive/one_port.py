@@ -51,9 +51,9 @@ class ErrorTerms:
         Raises DataSetError where there is none, because a raw ratio is no number or lies on the model's pole.
         """
         b = self.e10e01 - self.e00 * self.e11
-        corrected = self.e11 * ratio
-        corrected += b
         with np.errstate(divide="ignore", invalid="ignore"):
+            corrected = self.e11 * ratio
+            corrected += b
             np.divide(ratio - self.e00, corrected, out=corrected)
             sound = np.isfinite(corrected.sum())
         if not sound:

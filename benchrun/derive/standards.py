@@ -66,7 +66,7 @@ class Standard:
         f = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         if not np.all(np.isfinite(f) & (f > 0.0)):
             raise DataSetError(
-                f"a standard's definition holds above 0 Hz; {show(f[~(f > 0.0)][0], 'frequency', 7)} was asked for."
+                f"a standard's definition holds above 0 Hz; {f[~(f > 0.0)][0]:g} Hz was asked for."
             )
         return self._behind_line(f, self._termination(f, reference_ohm), reference_ohm)
 
