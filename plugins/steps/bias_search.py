@@ -79,7 +79,7 @@ class BiasSearch:
         return sign * max(size_v, SMALLEST_STEP_V)
 
     def _next_v(self, aimed_v: float, low_v: float, high_v: float) -> float:
-        """Return the next gate voltage: as aimed, the bracket's middle, or an end of the range; never far up at once."""
+        """Return the next gate voltage: as aimed, the bracket's middle, or the range's end; never far up at once."""
         if not low_v < aimed_v < high_v:
             at_end = (aimed_v >= high_v == self._window.high_v) or (aimed_v <= low_v == self._window.low_v)
             aimed_v = min(max(aimed_v, low_v), high_v) if at_end else (low_v + high_v) / 2.0
@@ -88,7 +88,7 @@ class BiasSearch:
     def _failed(self, current_a: float, why: str) -> InstrumentError:
         window = self._window
         return InstrumentError(
-            f"bring-up: quiescent drain current {window.wanted_a * 1e3:.0f} mA within {window.within_a * 1e3:.0f} mA was not "
-            f"found: {current_a * 1e3:.0f} mA at {self._bias.gate_v:.3f} V, gate range {window.low_v:g} V to "
+            f"bring-up: a quiescent current of {window.wanted_a * 1e3:.0f} mA within {window.within_a * 1e3:.0f} mA "
+            f"was not found: {current_a * 1e3:.0f} mA at {self._bias.gate_v:.3f} V, gate range {window.low_v:g} V to "
             f"{window.high_v:g} V; {why}. Check the device, or give it another gate-range."
         )

@@ -23,7 +23,7 @@ LOOKS, LOOK_S = 50, 0.1
 
 
 def steps(start: float, end: float, largest: float) -> list[float]:
-    """Return the values after each even step from `start` to `end`, no step above `largest`; [] where they are equal."""
+    """Return the values after each even step from `start` to `end`, no step above `largest`; [] where equal."""
     count = math.ceil(abs(end - start) / largest - 1e-9)
     return [start + (end - start) * k / count for k in range(1, count)] + [end] * (count > 0)
 
@@ -58,8 +58,8 @@ class DeviceBias:
                 return
             self._access.clock.sleep(LOOK_S)
         raise InstrumentError(
-            f"bring-up: the drain is off and still at {volts:.2f} V (released is below {below_v:g} V). The gate was not "
-            "touched. Look for a second supply on the drain line, or wait until its capacitors are empty."
+            f"bring-up: the drain is off and still at {volts:.2f} V (released is below {below_v:g} V). The gate was "
+            "not touched. Look for a second supply on the drain line, or wait until its capacitors are empty."
         )
 
     def pinch_off(self) -> None:
@@ -103,8 +103,8 @@ class DeviceBias:
         for bias in (GATE, DRAIN):
             if self._access.supply(bias).tripped(bias):
                 raise InstrumentError(
-                    f"bring-up: the {bias}'s protection tripped with the gate at {self.gate_v:.3f} V and {current_a:.3g} A of "
-                    "drain current. Find out why before the trip is cleared."
+                    f"bring-up: the {bias}'s protection tripped: gate {self.gate_v:.3f} V, drain {current_a:.3g} A. "
+                    "Find out why before the trip is cleared."
                 )
         return current_a
 

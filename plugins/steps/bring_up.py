@@ -13,12 +13,11 @@ from pydantic import Field, model_validator
 
 from benchrun.contract.actions import Action, ProcedureAction, SetAction
 from benchrun.contract.hooks import BenchAccess, StepScope, StepSpec
-from benchrun.fields import Duration
 from benchrun.yaml_source import Strict
 
 from .bias_search import BiasSearch, Window
 from .bias_steps import DRAIN_STEP_V, GATE_STEP_V, PAUSE_S, DeviceBias, steps
-from .quantity import Current, Voltage
+from .quantity import Current, Voltage, Wait
 
 KEY = "bring-up"
 #: Modelled time of one step of a voltage with its look at the current (s), and of the trips and outputs together.
@@ -36,7 +35,7 @@ class BringUpModel(Strict):
     quiescent: Current | None = Field(None, description="Drain current without RF that the gate is moved for.")
     within: Current | None = Field(None, description="How near to it is near enough.")
     gate_range: tuple[Voltage, Voltage] | None = Field(None, description="The search never leaves this range.")
-    soak: Duration | None = Field(None, description="Time at bias before the current is looked at once more.")
+    soak: Wait | None = Field(None, description="Time at bias before the current is looked at once more.")
 
     @model_validator(mode="after")
     def _whole_search(self) -> BringUpModel:
@@ -105,7 +104,7 @@ def duration_s(parameters: Mapping[str, Any]) -> float:
 SPEC = StepSpec(
     key=KEY,
     model=BringUpModel,
-    help="Bring the device up: {gate: -2.8 V, drain: 28 V, quiescent: 350 mA, within: 10 mA, gate-range: [-3 V, -2 V]}.",
+    help="Bring up the device: {gate: -2.8 V, drain: 28 V, quiescent: 350 mA, within: 10 mA, gate-range: [-3 V, -2 V]}",
     expand=expand,
     execute=execute,
     duration_s=duration_s,

@@ -8,11 +8,12 @@ from pydantic import AfterValidator, Field, StrictFloat, StrictInt, StrictStr
 
 from benchrun.contract.kinds import Kind
 from benchrun.errors import QuantityError
+from benchrun.fields import Duration
 from benchrun.quantities import example, parse
 
 
 def _quantity(kind: Kind) -> tuple[AfterValidator, object]:
-    """Return what checks a text without a reference now; one with a reference has a value only where the step stands."""
+    """Return what checks a text without a reference now; one with a reference has a value only where it stands."""
 
     def check(text: str) -> str:
         if "{" in text:
@@ -30,6 +31,8 @@ def _quantity(kind: Kind) -> tuple[AfterValidator, object]:
 Frequency = Annotated[str, *_quantity("frequency")]
 Voltage = Annotated[str, *_quantity("voltage")]
 Current = Annotated[str, *_quantity("current")]
+#: A time to wait: not negative, and at most a week.
+Wait = Annotated[Duration, Field(ge=0.0, le=7 * 86400.0)]
 #: A quantity of whatever kind its target has; checked where the step stands.
 AnyQuantity = Annotated[StrictStr | StrictInt | StrictFloat, Field(examples=["8 dBm", "{frequency} - 7 MHz"])]
 Name = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9-]*$", examples=["hot"])]

@@ -8,10 +8,11 @@ from pydantic import ConfigDict, RootModel
 
 from benchrun.contract.actions import Action, SettleAction
 from benchrun.contract.hooks import StepScope, StepSpec
-from benchrun.fields import Duration
+
+from .quantity import Wait
 
 
-class SettleModel(RootModel[Duration]):
+class SettleModel(RootModel[Wait]):
     """How long to wait: 20 ms."""
 
     model_config = ConfigDict(frozen=True)
