@@ -115,7 +115,8 @@ def ask(served: ServedBench, line: bytes) -> Any:
 @pytest.mark.parametrize(
     "line",
     [b"", b"{", b"[1]", b"7", b"null", b'{"do": "truth"}', b'{"do": 3}', b'{"do": "sleep"}', b'{"do": "connect"}',
-     b'{"do": "sleep", "duration_ns": -1}', b'{"do": "sleep", "duration_ns": 1e9}', b'{"do": "sleep", "duration_ns": true}',
+     b'{"do": "sleep", "duration_ns": -1}', b'{"do": "sleep", "duration_ns": 1e9}',
+     b'{"do": "sleep", "duration_ns": true}',
      b'{"do": "align", "start_ns": 10000000000000000000000}', b"\xff\xfe", b"[" * 30000],
 )  # fmt: skip
 def test_wrong_requests_are_refused(served: ServedBench, channel: ChannelRehearsal, line: bytes) -> None:
