@@ -1,0 +1,199 @@
+"""The recipe as the other rooms use it: what is asked for, validated, in SI, with the place of every step."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, Field
+
+from benchrun.errors import Problem
+from benchrun.fields import Count, Duration, Frequency, Name, Text
+from benchrun.recipe.axis import Axis
+from benchrun.yaml_source import Strict
+
+FileName = Annotated[str, Field(pattern=r"^[^\\\x00]{1,200}$")]
+
+
+class DeviceEntry(Strict):
+    """The device under test."""
+
+    part: Text
+    serial: Text | None = None
+    note: Text | None = None
+
+
+class ReceiverSettings(Strict):
+    """How the receiver stands for the whole recipe."""
+
+    if_bandwidth: Frequency = Field(gt=0.0)
+    averages: Count = Field(1, ge=1, le=65536)
+
+
+class Correct(Strict):
+    """Correct the raw waves of readings with a calibration."""
+
+    readings: Name
+    calibration: Name
+
+
+class OnePort(Strict):
+    """Reflection of corrected readings, as one port."""
+
+    readings: Name
+
+
+class HotMatch(Strict):
+    """Hot S22 and T22 of corrected readings by the offset probe; `drive` names the levelled drive they refer to."""
+
+    readings: Name
+    drive: Name | None = None
+
+
+class Calibrate(Strict):
+    """Make a calibration of a plane from readings of standards and of a power meter."""
+
+    name: Name
+    plane: Literal["input", "output"]
+    standards: Name
+    power: Name | None = None
+    valid_for: Duration = Field(7 * 86400.0, gt=0.0)
+
+
+class LevelChain(Strict):
+    """Make the table of what a signal's chain delivers at a plane, from power meter readings."""
+
+    name: Name
+    signal: Name
+    plane: Literal["input", "output"]
+    readings: Name
+    valid_for: Duration = Field(7 * 86400.0, gt=0.0)
+
+
+class SaveTouchstone(Strict):
+    """Write Touchstone files."""
+
+
+class SaveSummary(Strict):
+    """Write summary.csv."""
+
+
+DERIVE: Mapping[str, type[BaseModel]] = {
+    "correct": Correct, "one-port": OnePort, "hot-match": HotMatch, "calibrate": Calibrate, "level": LevelChain,
+}  # fmt: skip
+SAVE: Mapping[str, type[BaseModel]] = {"touchstone": SaveTouchstone, "summary": SaveSummary}
+
+
+class RecipeFile(Strict):
+    """A *.recipe.yaml file. Its acquire, derive and save parts are lists of one-key mappings, each with a model of its own."""
+
+    benchrun: Literal[1]
+    title: Text
+    bench: FileName
+    device: DeviceEntry | None = None
+    calibrations: Mapping[Name, FileName] = Field(default_factory=dict)
+    kit: FileName | None = None
+    receiver: ReceiverSettings
+    acquire: list[Any] = Field(min_length=1)
+    derive: list[Any] = Field(default_factory=list)
+    save: list[Any] = Field(default_factory=list)
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where something stands in a file: line and column count from 1."""
+
+    file: str
+    line: int
+    column: int
+
+    def problem(self, message: str) -> Problem:
+        """Return a Problem at this place."""
+        return Problem(self.file, self.line, self.column, message)
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One step of an acquire part: the key it is written with, its checked model, and its place."""
+
+    key: str
+    model: BaseModel
+    at: Place
+
+    def document(self) -> dict[str, Any]:
+        """Return plain data for hashing."""
+        return {self.key: self.model.model_dump(mode="json", by_alias=True)}
+
+
+@dataclass(frozen=True, slots=True)
+class Sweep:
+    """A sweep and what is done at each of its values."""
+
+    axis: Axis
+    do: tuple[Step | Sweep, ...]
+    at: Place
+
+    def document(self) -> dict[str, Any]:
+        """Return plain data for hashing."""
+        return {"sweep": self.axis.document(), "do": [item.document() for item in self.do]}
+
+
+@dataclass(frozen=True, slots=True)
+class Entry:
+    """One entry of a derive or save part."""
+
+    kind: str
+    model: BaseModel
+    at: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Recipe:
+    """A checked recipe; `file_name` and `text` are the file as read."""
+
+    file: RecipeFile
+    acquire: tuple[Step | Sweep, ...]
+    derive: tuple[Entry, ...]
+    save: tuple[Entry, ...]
+    file_name: str = "recipe"
+    text: str = ""
+    source: str = field(default="recipe", compare=False)
+
+    @property
+    def title(self) -> str:
+        """Title of the recipe."""
+        return self.file.title
+
+    @property
+    def device(self) -> DeviceEntry | None:
+        """The device under test, None where there is none."""
+        return self.file.device
+
+    @property
+    def calibrations(self) -> Mapping[str, str]:
+        """File of the recipe that makes each calibration, by the calibration's name."""
+        return self.file.calibrations
+
+    @property
+    def receiver(self) -> ReceiverSettings:
+        """How the receiver stands."""
+        return self.file.receiver
+
+    def document(self) -> dict[str, Any]:
+        """Return what decides the readings as plain data, for hashing: not its title, derive or save part."""
+        device = self.device.model_dump(mode="json") if self.device else None
+        return {
+            "device": device,
+            "receiver": self.receiver.model_dump(mode="json"),
+            "acquire": [item.document() for item in self.acquire],
+        }
+
+
+def steps_of(items: Sequence[Step | Sweep]) -> Iterator[Step]:
+    """Yield every step of an acquire part, sweeps entered, in order of the file."""
+    for item in items:
+        if isinstance(item, Sweep):
+            yield from steps_of(item.do)
+        else:
+            yield item
