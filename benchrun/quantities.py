@@ -256,3 +256,48 @@ def ratio_to_db(ratio: float) -> float:
 def db_to_voltage_ratio(ratio_db: float) -> float:
     """Return the wave (voltage) ratio of a ratio in dB."""
     return float(10.0 ** (ratio_db / 20.0))
+
+
+def parse_coefficient(text: str, kind: Kind, order: int) -> float:
+    """Return the coefficient of Hz^order in a polynomial (capacitance in F, inductance in H), in SI.
+
+    Raises QuantityError as parse() does, and where the unit is that of another order.
+    """
+    value = parse(text, kind)
+    found = _order(text.strip())
+    if found != order:
+        unit = next(name for name in UNITS[kind] if _order(name) == order and name.startswith(_MILLI[kind]))
+        raise QuantityError(f"'{text}': coefficient {order} (counted from 0) is written in {unit}, or another unit per Hz^{order}")
+    return value
+
+
+_MILLI = {"capacitance": "fF", "inductance": "pH"}
+
+
+def _order(unit: str) -> int:
+    _, per, below = unit.partition("/")
+    return (int(below.partition("^")[2] or 1)) if per else 0
+
+
+def kind_of(text: str | float) -> Kind:
+    """Return the kind whose unit `text` carries; "number" where it has none. Raises QuantityError where no kind has that unit."""
+    if not isinstance(text, str):
+        return "number"
+    match = _QUANTITY.fullmatch(text.strip())
+    if match is None:
+        _explain_number(text.strip(), "number")
+        raise QuantityError(f"{text!r} is not a quantity; one number and one unit are expected, like {_EXAMPLE['frequency']}")
+    unit = match.group(2)
+    for kind, units in UNITS.items():
+        if unit in units:
+            return kind  # type: ignore[return-value]
+    if unit:
+        raise QuantityError(_unknown_unit(text.strip(), match.group(1), unit))
+    return "number"
+
+
+def _unknown_unit(text: str, number: str, unit: str) -> str:
+    every = [name for units in UNITS.values() for name in units]
+    same = [name for name in every if name.lower() == unit.lower()] or difflib.get_close_matches(unit, every, n=1)
+    hint = f" Did you mean {number} {same[0]}?" if len(same) == 1 else (f" It could be {' or '.join(same)}." if same else "")
+    return f"'{text}': there is no unit {unit}.{hint}"
