@@ -26,11 +26,12 @@ def command(recipe: Path, to: Path, bench: Path | None, calibrations: dict[str, 
     a terminal. The last line of standard output is the run folder.
     """
     from benchrun import flow
+    from benchrun.acquire.prompts import TerminalPrompter
     from benchrun.cli.progress import TerminalProgress
     from benchrun.cli.result import show_result
 
     with TerminalProgress() as listener:
         result = flow.run(
-            recipe, to, bench=bench, calibrations=calibrations, listener=listener, prompter=listener.prompter()
+            recipe, to, bench=bench, calibrations=calibrations, listener=listener, prompter=TerminalPrompter()
         )
     return show_result(result)

@@ -142,7 +142,7 @@ def test_run_without_a_terminal_has_nobody_to_ask(flow, benchrun_command):
     asked = {}
     flow.run = lambda *_, **rest: asked.update(rest) or result()
     assert benchrun_command("run", "hot.recipe.yaml", "--to", "runs").code == 0
-    assert asked["prompter"] is None
+    assert not asked["prompter"].available
 
 
 def test_the_caution_stands_where_power_is_switched_on(benchrun_command):

@@ -128,3 +128,14 @@ def test_on_a_terminal_the_live_line_is_gone_at_the_end_and_the_cursor_is_there(
     assert text.rfind("\x1b[?25h") > text.rfind("\x1b[?25l")
     assert text.rindex("stays") < text.rindex("100 %") < text.rindex("\x1b[2K") < text.rindex("runs/x")
     assert not re.search(r"\x1b\[[0-9;]*m", text), "no colour is needed"
+
+
+def test_it_is_what_an_acquisition_reports_to():
+    """The protocol's methods, with the same parameters: mypy checks their types where flow is called."""
+    import inspect
+
+    from benchrun.acquire.progress import Progress
+
+    for name, method in inspect.getmembers(Progress, inspect.isfunction):
+        if not name.startswith("_"):
+            assert inspect.signature(getattr(TerminalProgress, name)) == inspect.signature(method), name
