@@ -25,7 +25,10 @@ NAME_WIDTH = 10
 
 
 class TerminalProgress:
-    """The listener of a run (acquire.progress.Progress). Use as a context, so that the live line is gone before anything else is printed."""
+    """The listener of a run (acquire.progress.Progress).
+
+    Use it as a context, so that the live line is gone before anything else is printed.
+    """
 
     def __init__(self, now_s: Callable[[], float] = time.monotonic) -> None:
         self._now_s = now_s

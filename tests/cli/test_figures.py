@@ -26,7 +26,15 @@ def test_conditions_carry_their_units(key, value, text):
 
 @pytest.mark.parametrize(
     ("duration_s", "text"),
-    [(0, "0 s"), (89.4, "89 s"), (90, "2 min"), (1320, "22 min"), (5399, "1 h 30 min"), (7200, "2 h"), (12000, "3 h 20 min")],
+    [
+        (0, "0 s"),
+        (89.4, "89 s"),
+        (90, "2 min"),
+        (1320, "22 min"),
+        (5399, "1 h 30 min"),
+        (7200, "2 h"),
+        (12000, "3 h 20 min"),
+    ],
 )
 def test_durations(duration_s, text):
     assert duration_text(duration_s) == text
