@@ -112,11 +112,11 @@ class Conversation:
         if fault.kind == "no-answer":
             self._silenced = True
             return
+        if fault.kind == "error-entry":  # before, so that a query of the queue in the same message finds it
+            self.instrument.status.error(fault.number, fault.detail)
         answer = self.instrument.execute(message)
         if fault.kind == "reset-after":
             self._break()
-        if fault.kind == "error-entry":
-            self.instrument.status.error(fault.number, fault.detail)
         self._silenced = fault.kind == "lost-answer"
         if answer and not self._silenced:
             self.replies.append(self._spoilt(fault, answer))

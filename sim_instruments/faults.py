@@ -25,7 +25,7 @@ Kind = Literal[
     "short-block",  # the answer ends early: fewer bytes than its block's header says
     "wrong-length",  # a sound block with one float64 too few
     "nan",  # not a number where a number was
-    "error-entry",  # executed, but an error stands in the queue
+    "error-entry",  # executed, but an error stands in the queue (and answers a SYSTem:ERRor? of the same message)
     "connection-reset",  # the link breaks before anything is executed
     "reset-after",  # the link breaks after the message was executed
     "power-cycle",  # the instrument restarts, as after switching on, and the link breaks

@@ -34,9 +34,9 @@ class Rack:
         """Start anew at time 0: another world of the same seed, every instrument as after switching on."""
         self.world = World(self.wiring, self.seed)
         self.faults.restart()
-        self.instruments: dict[str, Instrument] = {
-            name: _instrument(name, self.wiring, self) for name in self.wiring["instruments"]
-        }
+        self.instruments: dict[str, Instrument] = {}
+        for name in self.wiring["instruments"]:
+            self.instruments[name] = _instrument(name, self.wiring, self)
 
     @property
     def addresses(self) -> dict[str, str]:
@@ -53,6 +53,11 @@ class Rack:
         if self.real_time:
             time.sleep(duration_ns * 1e-9)
 
+    def disturb(self) -> None:
+        """Let every instrument see that RF has changed: a supply's protection may trip."""
+        for instrument in self.instruments.values():
+            instrument.disturbed()
+
     def pulse(self, count: int) -> dict[str, tuple[tuple[float, ...], tuple[float, ...]]]:
         """Send trigger pulses to every source that waits for them."""
         followers = {}
@@ -67,6 +72,7 @@ class Rack:
         """Do what the operator is asked to do."""
         with self.lock:
             self.world.connect(plane, what)
+            self.disturb()
 
     def power_cycle(self, name: str) -> None:
         """Switch an instrument off and on: its settings are those of its preset, its links are broken."""

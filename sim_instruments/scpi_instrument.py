@@ -36,6 +36,9 @@ class Bench(Protocol):
     def advance(self, duration_ns: int) -> None:
         """Let virtual time pass."""
 
+    def disturb(self) -> None:
+        """Say that RF has changed: a supply's protection may trip."""
+
     def pulse(self, count: int) -> Mapping[str, tuple[tuple[float, ...], tuple[float, ...]]]:
         """Send trigger pulses; return the frequencies and levels that each source in list mode steps through."""
 
@@ -208,6 +211,9 @@ class Instrument:
     def forget_completion(self) -> None:
         """A device clear and *CLS forget a pending *OPC."""
         self._completion_wanted = False
+
+    def disturbed(self) -> None:
+        """Something on the bench has changed that this instrument did not do."""
 
     # ---- messages ---------------------------------------------------------------------------------------------
 

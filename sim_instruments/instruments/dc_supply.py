@@ -16,7 +16,7 @@ LEAST_TRIP_V = 0.1
 SETTLE_NS = 1_000_000
 READING_NS = 5_000_000
 VOLTAGE_BIT, CURRENT_BIT = 0, 1  # of STATus:QUEStionable: a protection has tripped
-AT_LIMIT = 0.9999  # of the current limit: the channel regulates current
+AT_LIMIT = 0.99  # of the current limit, as read: below it for certain, given the accuracy of the reading
 
 _VOLTAGE = Number("V", lambda _, n: VOLTAGE_V[n][0], lambda _, n: VOLTAGE_V[n][1], 0.0)
 _CURRENT = Number("A", 0.0, lambda _, n: CURRENT_A[n], lambda _, n: CURRENT_A[n])
@@ -62,6 +62,12 @@ class DcSupply(Instrument):
         self._guard()
 
     # ---- protections ------------------------------------------------------------------------------------------
+
+    def disturbed(self) -> None:
+        """Look at the currents, now that something else on the bench has changed."""
+        for channel in range(1, CHANNELS + 1):
+            if self.value("output", channel) and self.value("over-current", channel):
+                self._look(channel)
 
     def _guard(self) -> None:
         for channel in range(1, CHANNELS + 1):

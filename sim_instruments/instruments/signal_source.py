@@ -113,6 +113,7 @@ class SignalSource(Instrument):
             frequency, level = frequencies[min(index, len(frequencies) - 1)], levels[min(index, len(levels) - 1)]
         on = self.value("output")
         self.bench.world.set_source(self.name, frequency_hz=frequency, level_dbm=level, on=on)
+        self.bench.disturb()
 
     COMMANDS: ClassVar[tuple[Command, ...]] = (
         setting("[SOURce:]FREQuency[:CW|FIXed]", "frequency", _FREQUENCY, 1e9, duration_ns=SETTLE_NS),

@@ -20,6 +20,7 @@ BANDWIDTH_HZ = (1.0, 1e6)
 MOST_POINTS = 20001
 MOST_TONES = 16
 PORTS = 4
+OWN_RECEIVERS = ("R1", "R2", "R3", "R4")
 CHOSEN_GRID_HZ = (2e9, 3e9)
 SETTLE_NS = 2_000_000
 POINT_NS = 200_000
@@ -79,9 +80,8 @@ class WaveReceiver(Instrument):
 
     @property
     def receivers(self) -> tuple[str, ...]:
-        """Names of the receivers that something is connected to, or R1 to R4 where the wiring tells of none."""
-        wired = self.wiring.get("wired_receivers", ())
-        return tuple(wired) or ("R1", "R2", "R3", "R4")
+        """Names of the receivers: R1 to R4, and what else the wiring names. One that is not connected reads noise."""
+        return tuple(dict.fromkeys((*OWN_RECEIVERS, *self.wiring.get("wired_receivers", ()))))
 
     @property
     def source_port(self) -> int:
@@ -199,6 +199,7 @@ class WaveReceiver(Instrument):
         self.bench.world.set_source(
             self.name, frequency_hz=float(self.grid_hz()[0]), level_dbm=self.value("level"), on=bool(on)
         )
+        self.bench.disturb()
 
     COMMANDS: ClassVar[tuple[Command, ...]] = (
         setting("[SENSe:]FREQuency:MODE", "mode", Choice(("CW", "SWEep", "LIST")), "SWE"),
@@ -211,7 +212,7 @@ class WaveReceiver(Instrument):
         setting("[SENSe:]BANDwidth|BWIDth[:RESolution]", "bandwidth", Number("HZ", *BANDWIDTH_HZ, 1e4), 1e4),
         setting("[SENSe:]AVERage[:STATe]", "averaging", Boolean(), True),
         setting("[SENSe:]AVERage:COUNt", "averages", Number("", 1, 65536, 1, integer=True), 1),
-        setting("[SENSe:]RECeiver:LIST", "waves", WordList(lambda i: i.receivers), lambda i: i.receivers[:1]),
+        setting("[SENSe:]RECeiver:LIST", "waves", WordList(lambda i: i.receivers), OWN_RECEIVERS[:1]),
         setting(
             "[SENSe:]RECeiver:OFFSet", "offsets", NumberList(Number("HZ", -1e9, 1e9, 0.0), MOST_TONES), (0.0,)
         ),

@@ -121,6 +121,8 @@ def test_error_entry(rehearsal: InProcessRehearsal, pump: Any) -> None:
     rehearsal.faults.add("error-entry", at=next_one(rehearsal), number=-310, detail="rehearsed")
     assert pump.query("POW -3;POW?") == "-3.0"
     assert pump.query("SYST:ERR?") == '-310,"System error;rehearsed"'
+    rehearsal.faults.add("error-entry", at=next_one(rehearsal))
+    assert pump.query("POW -4;*OPC?;:SYST:ERR?").startswith("1;-240")
 
 
 @pytest.mark.parametrize(("kind", "executed"), [("connection-reset", False), ("reset-after", True)])

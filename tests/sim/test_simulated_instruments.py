@@ -231,7 +231,7 @@ def test_receiver_grid_reaches_the_world(bench: Bench, monkeypatch: pytest.Monke
     start = bench.world.now_ns
     bench("analyser", "INIT")
     name, receivers, grid, offsets, bandwidth, averages, coherent, start_ns, _ = seen[0]
-    assert (name, receivers, offsets, bandwidth, averages, coherent) == ("analyser", ["R3"], [0.0], 100.0, 3, True)
+    assert (name, receivers, offsets, bandwidth, averages, coherent) == ("analyser", ["R1"], [0.0], 100.0, 3, True)
     assert np.allclose(grid, [2.2e9, 2.25e9, 2.3e9, 2.35e9, 2.4e9])
     assert start_ns == start + MS
 
@@ -269,7 +269,7 @@ def test_receiver_operation_complete_bit_comes_with_the_end(bench: Bench) -> Non
 def test_receiver_refuses_what_it_cannot_tune_to(bench: Bench) -> None:
     bench("analyser", "INIT:CONT OFF;:FREQ:MODE LIST;:LIST:FREQ 12E6;:REC:OFFS 0,-7E6;:INIT")
     assert bench.error("analyser") == -221
-    bench("analyser", "REC:LIST R1")
+    bench("analyser", "REC:LIST R9")
     assert bench.error("analyser") == -224
     bench("analyser", "REC:LIST R3,R3")
     assert bench.error("analyser") == -224
@@ -279,10 +279,15 @@ def test_receiver_refuses_what_it_cannot_tune_to(bench: Bench) -> None:
     assert bench.error("analyser") == -222
 
 
-def test_receivers_are_those_that_are_wired(rack: Rack) -> None:
-    analyser = rack.instruments["analyser"]
+def test_receivers_are_its_own_and_what_the_wiring_names() -> None:
+    wiring = balloon_wiring()
+    wiring["receivers"]["reflected"]["receiver"] = "AUX"
+    analyser = Rack(wiring, seed=1).instruments["analyser"]
     assert isinstance(analyser, WaveReceiver)
-    assert analyser.receivers == ("R3", "R4")
+    assert analyser.receivers == ("R1", "R2", "R3", "R4", "AUX")
+    assert (
+        analyser.execute("INIT:CONT OFF;:REC:LIST R1,AUX;:INIT;*OPC?;:REC:LIM?;:SYST:ERR?") == b'1;0,0;0,"No error"\n'
+    )
 
 
 # ---- power meter, thermometer ---------------------------------------------------------------------------------------
@@ -367,6 +372,24 @@ def test_supply_trips_on_over_current_only_where_it_is_told_to(bench: Bench, loa
     assert float(bench("supply", "MEAS2:VOLT?")) == 0.0
     bench("supply", "SOUR2:CURR:PROT:CLE")
     assert bench("supply", "OUTP2?;:SOUR2:CURR:PROT:TRIP?") == "0;0"
+
+
+def test_over_current_trips_on_the_bench_itself(bench: Bench) -> None:
+    """Drive makes the device draw more: the drain trips at once, not when the supply is next asked."""
+    bench("analyser", "OUTP OFF;:INIT:CONT OFF;:FREQ:MODE CW;:SENS:FREQ:CW 2.3GHZ")
+    bench("supply", "SOUR1:VOLT -5;CURR 50 MA;:OUTP1 ON;:SOUR2:VOLT 28;CURR 3;:OUTP2 ON")
+    bench.rack.advance(1000 * MS)
+    bench("supply", "SOUR1:VOLT -2.8")
+    quiescent = float(bench("supply", "MEAS2:CURR?"))
+    assert 0.1 < quiescent < 0.7
+    bench("supply", f"SOUR2:CURR {quiescent * 1.3};CURR:PROT:STAT ON")
+    assert bench("supply", "OUTP2?;:SOUR2:CURR:PROT:TRIP?") == "1;0"
+    bench("pump", "FREQ 2.293GHZ;POW -30;:OUTP ON")
+    assert bench.rack.instruments["supply"].settings[("output", 2)] is True
+    bench("pump", "POW 0")
+    assert bench.rack.instruments["supply"].settings[("output", 2)] is False
+    assert bench("supply", "OUTP2?;:SOUR2:CURR:PROT:TRIP?;:SYST:ERR?") == '0;1;0,"No error"'
+    assert bench.world.damage == []
 
 
 def test_supply_reset_opens_the_protections(bench: Bench, load: dict[int, float]) -> None:
