@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from benchrun.bench.ranges import Fraction, FrequencyRange, LevelRange, PositiveRatio
-from benchrun.fields import Angle, Count, Level, Name, Ratio
+from benchrun.fields import Angle, Count, Level, Name, Ratio, Text
 from benchrun.quantities import show
 from benchrun.yaml_source import Strict
 
@@ -58,6 +58,14 @@ class Sensor(Strict):
     uncertainty: Annotated[Ratio, Field(ge=0.0)] = Field(description="standard uncertainty of a reading")
 
 
+class ExpectedIdentity(Strict):
+    """What *IDN? must say; what is left out may be anything."""
+
+    maker: Text | None = None
+    model: Text | None = None
+    serial: Text | None = None
+
+
 class Instrument(Strict):
     """One instrument."""
 
@@ -66,6 +74,7 @@ class Instrument(Strict):
     dialect: str | None = Field(
         None, description="dialect file, from this file's folder", examples=["my-receiver.dialect.yaml"]
     )
+    identity: ExpectedIdentity | None = Field(None, description="the one instrument that this may be")
     ceiling: Level | None = Field(None, description="no higher level is ever sent")
     ramp: PositiveRatio | None = Field(None, description="a level never rises by more than this in one step")
     limits: Limits = Limits()
