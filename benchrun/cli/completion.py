@@ -4,15 +4,14 @@ from __future__ import annotations
 
 import click
 
-PLACES = {
-    "bash": 'Add to ~/.bashrc:                 eval "$(benchrun completion bash)"',
-    "zsh": 'Add to ~/.zshrc:                  eval "$(benchrun completion zsh)"',
-    "fish": "Once:   benchrun completion fish > ~/.config/fish/completions/benchrun.fish",
-}
+PLACES = """\b
+bash: add to ~/.bashrc  eval "$(benchrun completion bash)"
+zsh:  add to ~/.zshrc   eval "$(benchrun completion zsh)"
+fish: once              benchrun completion fish > ~/.config/fish/completions/benchrun.fish"""
 
 
-@click.command(epilog="\b\n" + "\n".join(PLACES.values()))
-@click.argument("shell", type=click.Choice(list(PLACES)))
+@click.command(epilog=PLACES)
+@click.argument("shell", type=click.Choice(["bash", "zsh", "fish"]))
 @click.pass_context
 def command(context: click.Context, shell: str) -> int:
     """Print what SHELL needs to complete commands and options."""

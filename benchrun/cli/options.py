@@ -19,7 +19,12 @@ run_argument = click.argument("run", type=RUN)
 bench_option = click.option("--bench", type=FILE, help="Use this bench file in place of the recipe's.")
 json_option = click.option("--json", "as_json", is_flag=True, help="Print JSON, for scripts.")
 seed_option = click.option(
-    "--seed", type=click.IntRange(min=0), default=1, show_default=True, help="The same seed gives the same readings."
+    "--seed",
+    type=click.IntRange(min=0),
+    default=1,
+    show_default=True,
+    metavar="N",
+    help="The same seed gives the same readings.",
 )
 
 

@@ -9,12 +9,12 @@ import click
 from benchrun.cli.options import bench_option, calibration_option, recipe_argument, to_option
 
 
-@click.command(
-    epilog="\b\nCAUTION: this switches RF and drain on. Connect every load before, keep hands off\n"
-    "open connectors, have a hardware interlock, and follow your local rules for RF\n"
-    "exposure and high voltage. Ctrl-C stops at a safe point: sources off, then drain,\n"
-    "and the gate last."
-)
+CAUTION = """CAUTION: this switches RF and drain on. Connect every load first, keep your hands off open connectors, have a
+hardware interlock (software is none), and follow your local rules for RF exposure and high voltage. Ctrl-C stops at a
+safe point: sources off, then the drain, and the gate last."""
+
+
+@click.command(epilog=CAUTION)
 @recipe_argument
 @to_option("Make the run folder in this folder.")
 @bench_option
