@@ -13,206 +13,31 @@ from __future__ import annotations
 
 import contextlib
 import itertools
-import select
 import socket
-import struct
 import threading
 import time
-from dataclasses import dataclass
-from enum import IntEnum
 
 from .conversation import Conversation, LinkLostError, Reply
+from .hislip_locks import Locks
+from .hislip_wire import (
+    BAD_INITIALIZATION,
+    HEADER_SIZE,
+    LARGEST_MESSAGE,
+    NO_SECOND_CHANNEL,
+    UNRECOGNIZED_TYPE,
+    FatalProtocolError,
+    Message,
+    Type,
+    Wire,
+)
 from .listener import Listener, reset
 from .rack import Rack
 
 SUB_ADDRESS = b"hislip0"
 VERSION = 0x0100
 VENDOR = 0x7362  # "sb"
-LARGEST_MESSAGE = 1 << 20
 SMALLEST_PAYLOAD = 64
-_LARGEST_CONTROL_PAYLOAD = 4096
 _HANDSHAKE_S = 10.0
-_PARTING_S, _PARTING_READS = 1.0, 64
-_HEADER = struct.Struct("!2sBBIQ")
-
-
-class Type(IntEnum):
-    """Message types (IVI-6.1 table 4)."""
-
-    INITIALIZE = 0
-    INITIALIZE_RESPONSE = 1
-    FATAL_ERROR = 2
-    ERROR = 3
-    ASYNC_LOCK = 4
-    ASYNC_LOCK_RESPONSE = 5
-    DATA = 6
-    DATA_END = 7
-    DEVICE_CLEAR_COMPLETE = 8
-    DEVICE_CLEAR_ACKNOWLEDGE = 9
-    ASYNC_REMOTE_LOCAL_CONTROL = 10
-    ASYNC_REMOTE_LOCAL_RESPONSE = 11
-    TRIGGER = 12
-    INTERRUPTED = 13
-    ASYNC_INTERRUPTED = 14
-    ASYNC_MAXIMUM_MESSAGE_SIZE = 15
-    ASYNC_MAXIMUM_MESSAGE_SIZE_RESPONSE = 16
-    ASYNC_INITIALIZE = 17
-    ASYNC_INITIALIZE_RESPONSE = 18
-    ASYNC_DEVICE_CLEAR = 19
-    ASYNC_SERVICE_REQUEST = 20
-    ASYNC_STATUS_QUERY = 21
-    ASYNC_STATUS_RESPONSE = 22
-    ASYNC_DEVICE_CLEAR_ACKNOWLEDGE = 23
-    ASYNC_LOCK_INFO = 24
-    ASYNC_LOCK_INFO_RESPONSE = 25
-
-
-# Codes of FatalError and of Error (IVI-6.1 tables 14 and 16).
-BAD_HEADER, NO_SECOND_CHANNEL, BAD_INITIALIZATION = 1, 2, 3
-UNRECOGNIZED_TYPE, TOO_LARGE = 1, 4
-
-# What AsyncLockResponse says.
-LOCK_FAILURE, LOCK_EXCLUSIVE, LOCK_SHARED, LOCK_ERROR = 0, 1, 2, 3
-
-
-class FatalProtocolError(Exception):
-    """The connection cannot go on; the client is told why."""
-
-    def __init__(self, code: int, text: str) -> None:
-        self.code = code
-        super().__init__(text)
-
-
-@dataclass(frozen=True, slots=True)
-class Message:
-    """One HiSLIP message as it came."""
-
-    type: int
-    control: int
-    parameter: int
-    payload: bytes
-
-
-class Wire:
-    """One connection: whole messages in and out. Sending is safe from several threads."""
-
-    def __init__(self, connection: socket.socket) -> None:
-        self.connection = connection
-        self._sending = threading.Lock()
-
-    def send(self, kind: Type, control: int = 0, parameter: int = 0, payload: bytes = b"") -> None:
-        """Send one message. Raises OSError."""
-        header = _HEADER.pack(b"HS", kind, control, parameter, len(payload))
-        with self._sending:
-            self.connection.sendall(header + payload)
-
-    def send_if_free(self, kind: Type, control: int) -> None:
-        """Send a message without payload, unless the client has long stopped reading: this one never waits for it."""
-        if not self._sending.acquire(blocking=False):
-            return
-        try:
-            if select.select([], [self.connection], [], 0)[1]:
-                self.connection.sendall(_HEADER.pack(b"HS", kind, control, 0, 0))
-        finally:
-            self._sending.release()
-
-    def end(self, error: FatalProtocolError) -> None:
-        """Say why, and let the client read it before the connection is closed. Raises OSError."""
-        self.send(Type.FATAL_ERROR, error.code, 0, str(error).encode())
-        self.connection.shutdown(socket.SHUT_WR)
-        self.connection.settimeout(_PARTING_S)
-        for _ in range(_PARTING_READS):
-            if not self.connection.recv(_LARGEST_CONTROL_PAYLOAD):
-                return
-
-    def receive(self) -> Message | None:
-        """Return the next message, or None at the end. Raises FatalProtocolError and OSError."""
-        header = self._exactly(_HEADER.size)
-        if header is None:
-            return None
-        prologue, kind, control, parameter, length = _HEADER.unpack(header)
-        if prologue != b"HS":
-            raise FatalProtocolError(BAD_HEADER, "the message does not begin with HS")
-        if length > (LARGEST_MESSAGE if kind in {Type.DATA, Type.DATA_END} else _LARGEST_CONTROL_PAYLOAD):
-            raise FatalProtocolError(BAD_HEADER, f"a payload of {length} bytes is too long")
-        payload = self._exactly(length) if length else b""
-        return None if payload is None else Message(kind, control, parameter, payload)
-
-    def _exactly(self, count: int) -> bytes | None:
-        buffer = bytearray(count)
-        view = memoryview(buffer)
-        while view:
-            received = self.connection.recv_into(view)
-            if not received:
-                return None
-            view = view[received:]
-        return bytes(buffer)
-
-
-class Locks:
-    """Who holds the instrument: one session exclusively, or several that share a key."""
-
-    def __init__(self) -> None:
-        self._changed = threading.Condition()
-        self._exclusive: int | None = None
-        self._shared: dict[int, str] = {}
-        self._closed = False
-
-    def request(self, session: int, key: str, timeout_s: float) -> int:
-        """Wait for a lock; return the response code."""
-        with self._changed:
-            if self._exclusive == session or (key and session in self._shared):
-                return LOCK_ERROR
-            if not self._changed.wait_for(lambda: self._closed or self._grantable(session, key), timeout_s):
-                return LOCK_FAILURE
-            if key:
-                self._shared[session] = key
-                return LOCK_SHARED
-            self._exclusive = session
-            return LOCK_EXCLUSIVE
-
-    def _grantable(self, session: int, key: str) -> bool:
-        if self._exclusive is not None:
-            return False
-        others = {other for holder, other in self._shared.items() if holder != session}
-        return others <= {key} if key else not others
-
-    def release(self, session: int) -> int:
-        """Release the exclusive lock, or else the shared one; return the response code."""
-        with self._changed:
-            if self._exclusive == session:
-                self._exclusive, code = None, LOCK_EXCLUSIVE
-            else:
-                code = LOCK_SHARED if self._shared.pop(session, None) is not None else LOCK_ERROR
-            self._changed.notify_all()
-            return code
-
-    def forget(self, session: int) -> None:
-        """The session has ended: release all it holds."""
-        while self.release(session) != LOCK_ERROR:
-            pass
-
-    def info(self) -> tuple[bool, int]:
-        """Return whether a session holds it exclusively, and how many hold a lock."""
-        with self._changed:
-            holders = set(self._shared) | ({self._exclusive} if self._exclusive is not None else set())
-            return self._exclusive is not None, len(holders)
-
-    def wait_free(self, session: int) -> None:
-        """Wait until no other session keeps this one out."""
-        with self._changed:
-            self._changed.wait_for(lambda: self._closed or self._admits(session))
-
-    def _admits(self, session: int) -> bool:
-        if self._exclusive is not None:
-            return self._exclusive == session
-        return not self._shared or session in self._shared
-
-    def close(self) -> None:
-        """Let everybody go."""
-        with self._changed:
-            self._closed = True
-            self._changed.notify_all()
 
 
 class HislipSession:
@@ -226,7 +51,7 @@ class HislipSession:
         self.locks = locks
         self.delivered = True  # whether the client has read the last response
         self.clearing = threading.Event()
-        self.payload_limit = LARGEST_MESSAGE - _HEADER.size
+        self.payload_limit = LARGEST_MESSAGE - HEADER_SIZE
         conversation.rack.listeners.add(self.notice)
 
     def close(self, other: Wire | None) -> None:
@@ -330,7 +155,7 @@ class HislipSession:
                 wire.send(Type.ERROR, UNRECOGNIZED_TYPE, 0, b"unrecognized message type")
 
     def _agree_on_size(self, wire: Wire, largest: int) -> None:
-        self.payload_limit = max(SMALLEST_PAYLOAD, min(largest, LARGEST_MESSAGE) - _HEADER.size)
+        self.payload_limit = max(SMALLEST_PAYLOAD, min(largest, LARGEST_MESSAGE) - HEADER_SIZE)
         wire.send(Type.ASYNC_MAXIMUM_MESSAGE_SIZE_RESPONSE, 0, 0, LARGEST_MESSAGE.to_bytes(8, "big"))
 
     def _lock(self, message: Message) -> int:

@@ -10,19 +10,19 @@ Rules kept here (IEEE 488.2 sections 6 and 7, SCPI-1999 volume 1 sections 4 and 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping
 from typing import Any, ClassVar, Protocol
 from zlib import crc32
 
+from .scpi_command import Command
+from .scpi_common import COMMON
 from .scpi_errors import ScpiError
 from .scpi_headers import CommandTable
 from .scpi_lexer import Token, Unit, units
-from .scpi_status import MASTER_SUMMARY, OPERATION_COMPLETE, RegisterGroup, Status
-from .scpi_values import Boolean, LimitName, Number, Parameter
+from .scpi_status import MASTER_SUMMARY, OPERATION_COMPLETE, Status
+from .scpi_values import Parameter
 
 MESSAGE_NS = 1_000_000
-Answer = str | bytes
 Key = tuple[Any, ...]
 
 
@@ -43,65 +43,6 @@ class Bench(Protocol):
         """Send trigger pulses; return the frequencies and levels that each source in list mode steps through."""
 
 
-@dataclass(frozen=True)
-class Command:
-    """One header with its set form, its query form, or both.
-
-    `act(instrument, *suffixes, *values)` does the set form, `ask(instrument, *suffixes, *values)` answers the query.
-    A parameter may be left out where `optional` says so. `duration_ns` passes after the set form.
-    """
-
-    header: str
-    act: Callable[..., None] | None = None
-    ask: Callable[..., Answer] | None = None
-    parameters: tuple[Parameter, ...] = ()
-    query_parameters: tuple[Parameter, ...] = ()
-    optional: bool = False
-    duration_ns: int = 0
-    suffix_limits: tuple[int, ...] = ()
-    indefinite: bool = False
-    setting: Setting | None = None
-
-
-@dataclass(frozen=True)
-class Setting:
-    """What a command's setting is called, and its value after *RST (a function of the instrument where it depends)."""
-
-    key: str
-    reset: Any
-
-    def after_reset(self, instrument: Instrument, suffixes: tuple[int, ...]) -> Any:
-        """Return the *RST value."""
-        return self.reset(instrument, *suffixes) if callable(self.reset) else self.reset
-
-
-def setting(
-    header: str,
-    key: str,
-    parameter: Parameter,
-    reset: Any,
-    *,
-    duration_ns: int = 0,
-    suffix_limits: tuple[int, ...] = (),
-) -> Command:
-    """Return a command that keeps a value under `key`, tells the instrument that it changed, and answers its query."""
-
-    def act(instrument: Instrument, *arguments: Any) -> None:
-        *suffixes, value = arguments
-        instrument.put(key, tuple(suffixes), value)
-
-    def ask(instrument: Instrument, *arguments: Any) -> str:
-        suffixes = arguments[: len(suffix_limits)]
-        asked = arguments[len(suffix_limits) :]
-        return parameter.show(asked[0] if asked else instrument.settings[(key, *suffixes)])
-
-    limits = (LimitName(parameter),) if isinstance(parameter, Number) else ()
-    return Command(
-        header, act, ask, (parameter,), limits, optional=True, duration_ns=duration_ns, suffix_limits=suffix_limits,
-        setting=Setting(key, reset),
-    )  # fmt: skip
-
-
 class Instrument:
     """Base of the simulated instruments. Subclasses give MAKER, MODEL, COMMANDS, and changed()."""
 
@@ -109,6 +50,7 @@ class Instrument:
     MODEL: ClassVar[str]
     FIRMWARE: ClassVar[str] = "1.0"
     COMMANDS: ClassVar[tuple[Command, ...]] = ()
+    status: Status
     byte_order: str = ">"
     _tables: ClassVar[dict[type, CommandTable[Command]]] = {}
 
@@ -310,67 +252,3 @@ def _all_suffixes(limits: tuple[int, ...]) -> Iterable[tuple[int, ...]]:
     if not limits:
         return [()]
     return [(first, *rest) for first in range(1, limits[0] + 1) for rest in _all_suffixes(limits[1:])]
-
-
-# ---- what every instrument has: IEEE 488.2 10 and SCPI-1999 volume 1 4.2.1 ------------------------------------------
-
-
-def _clear(instrument: Instrument) -> None:
-    instrument.status.clear()
-    instrument.forget_completion()
-
-
-def _wait_and_say_one(instrument: Instrument) -> str:
-    instrument.wait()
-    return "1"
-
-
-def _lock_panel(instrument: Instrument, value: bool) -> None:
-    instrument.panel_locked = value
-
-
-def _put_register(name: str) -> Callable[[Instrument, float], None]:
-    def act(instrument: Instrument, value: float) -> None:
-        setattr(instrument.status, name, int(value))
-
-    return act
-
-
-def _put_service_enable(instrument: Instrument, value: float) -> None:
-    instrument.status.service_enable = int(value) & ~0x40  # bit 6 is ignored (IEEE 488.2 11.3.2.3)
-
-
-def _register_group(header: str, group: Callable[[Instrument], RegisterGroup]) -> tuple[Command, ...]:
-    def enable(instrument: Instrument, value: float) -> None:
-        group(instrument).enable = int(value)
-
-    return (
-        Command(f"{header}[:EVENt]", ask=lambda i: str(group(i).take_event())),
-        Command(f"{header}:CONDition", ask=lambda i: str(group(i).condition)),
-        Command(f"{header}:ENABle", enable, lambda i: str(group(i).enable), (_MASK16,)),
-    )
-
-
-_MASK8 = Number("", 0, 255, 0, integer=True)
-_MASK16 = Number("", 0, 32767, 0, integer=True)
-
-COMMON: tuple[Command, ...] = (
-    Command("*CLS", _clear),
-    Command("*ESE", _put_register("event_enable"), lambda i: str(i.status.event_enable), (_MASK8,)),
-    Command("*ESR", ask=lambda i: str(i.status.take_events())),
-    Command("*IDN", ask=lambda i: i.identity, indefinite=True),
-    Command("*OPC", Instrument.want_completion, _wait_and_say_one),
-    Command("*OPT", ask=lambda i: i.options, indefinite=True),
-    Command("*RST", Instrument.reset),
-    Command("*SRE", _put_service_enable, lambda i: str(i.status.service_enable), (_MASK8,)),
-    Command("*STB", ask=lambda i: str(i.status.byte(message_available=False))),
-    Command("*TST", ask=lambda _: "0"),
-    Command("*WAI", Instrument.wait),
-    Command("SYSTem:ERRor[:NEXT]", ask=lambda i: i.status.errors.pop()),
-    Command("SYSTem:ERRor:COUNt", ask=lambda i: str(len(i.status.errors))),
-    Command("SYSTem:VERSion", ask=lambda _: "1999.0"),
-    Command("SYSTem:KLOCk", _lock_panel, lambda i: Boolean().show(i.panel_locked), (Boolean(),)),
-    Command("STATus:PRESet", lambda i: i.status.preset()),
-    *_register_group("STATus:OPERation", lambda i: i.status.operation),
-    *_register_group("STATus:QUEStionable", lambda i: i.status.questionable),
-)

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from typing import ClassVar
 
+from ..scpi_command import Command, setting
 from ..scpi_errors import ScpiError
-from ..scpi_instrument import Command, Instrument, setting
+from ..scpi_instrument import Instrument
 from ..scpi_values import Choice, number
 
 READING_NS = 10_000_000

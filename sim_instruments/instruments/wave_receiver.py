@@ -10,8 +10,9 @@ from typing import ClassVar
 import numpy as np
 import numpy.typing as npt
 
+from ..scpi_command import Command, setting
 from ..scpi_errors import ScpiError
-from ..scpi_instrument import Command, Instrument, setting
+from ..scpi_instrument import Instrument
 from ..scpi_values import Boolean, Choice, DataFormat, Number, NumberList, WordList, numbers
 
 FREQUENCY_HZ = (10e6, 8.5e9)

@@ -11,7 +11,7 @@ from typing import NamedTuple
 
 import benchrun_sim
 import pytest
-from benchrun_sim.hislip import Type
+from benchrun_sim.hislip_wire import Type
 from benchrun_sim.servers import ServedBench
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st

@@ -7,9 +7,10 @@ import re
 
 import pytest
 from benchrun_sim.instruments import BY_ROLE
+from benchrun_sim.scpi_command import Command
+from benchrun_sim.scpi_common import COMMON
 from benchrun_sim.scpi_errors import ScpiError
 from benchrun_sim.scpi_headers import CommandTable, declared_forms, header_pattern, short_form
-from benchrun_sim.scpi_instrument import COMMON, Command
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
