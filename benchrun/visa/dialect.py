@@ -276,6 +276,11 @@ class Entry:
             raise ReplyError(f"the dialect does not say what {self.name!r} answers in text")
         return self.reply.read(text)
 
+    def switches_off(self, values: Mapping[str, Value]) -> bool:
+        """Whether the set form with these values does nothing but switch something off."""
+        carried = self.carries.get(self.carried)
+        return carried is not None and carried.kind == "switch" and not values.get(self.carried, True)
+
     def agrees(self, sent: Value, stands: Value) -> bool:
         """Whether what stands is what was sent, within the tolerance."""
         if isinstance(sent, str) or not isinstance(sent, Sequence):

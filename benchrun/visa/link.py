@@ -4,7 +4,9 @@ What it keeps:
 - one exchange at a time, each with a deadline, the last ones remembered;
 - what is set is seen completed (*OPC?), read back where asked for, and the error queue is emptied, in one message;
 - a level above the ceiling is refused before anything is sent; a level rises by the ramp at most, from what was last read back;
-- after a failed exchange the link is suspect: it is opened anew and cleared before the next use.
+- after a failed exchange the link is suspect: it is opened anew and cleared before the next use;
+- an instrument that was switched off and on meanwhile has lost its settings: it is read and switched off, and nothing else, until
+  it has been prepared again.
 """
 
 from __future__ import annotations
@@ -24,6 +26,9 @@ from benchrun.visa.dialect import Dialect
 from benchrun.visa.exchange import ERROR_QUERY, Exchange, Use, compose, join, read_values, take_apart, uses
 
 DEADLINE_S = 2.0
+#: Asks for the standard events, and the bit that says that the instrument was switched on (IEEE 488.2 11.5.1.1.2).
+EVENTS_QUERY = "*ESR?"
+POWER_ON = 1 << 7
 #: How long the error queue may take to say why an exchange was not answered.
 EXPLAIN_S = 0.5
 #: How long a query may take that only asks whether it is understood; where its entry allows more, this much.
@@ -76,6 +81,8 @@ class Session:
     ) -> None:
         self.exchanges: deque[Exchange] = deque(maxlen=REMEMBERED) if transcript is None else transcript
         self.suspect = False
+        self.restarted = False
+        self._watching = False
         self._wire = wire
         self._dialect = dialect
         self._clock = clock
@@ -135,6 +142,7 @@ class Session:
         """
         wanted = uses(self._dialect, sets)
         with self._lock:
+            self._fit_to_set(wanted)
             for use in wanted:
                 if self._checked_levels(use) and use.entry.ask:
                     raise InstrumentError(
@@ -149,6 +157,7 @@ class Session:
         wanted = uses(self._dialect, calls)
         with self._lock:
             rising = [(use, self._checked_levels(use)) for use in wanted]
+            self._fit_to_set(wanted)
             for use, several in rising:
                 if len(several) == 1:
                     self._rise(use, several[0], deadline_s)
@@ -159,10 +168,11 @@ class Session:
         found = self._dialect[entry]
         message = self._unsent(lambda: join([found.ask_text(values), ERROR_QUERY]))
         with self._lock:
+            self._fit_to_set([Use(found, values)])
             payload, text = self._say_block(message, 8 * count, deadline_s or found.deadline_s or DEADLINE_S)
             answer = self._understood(message, lambda: take_apart(text))
             if answer.error.number:
-                raise self._complaint(answer.error, message)
+                raise self._complaint(self._rest_of_queue(answer.error), message)
             if payload is None:
                 raise self._garbled(message, ReplyError(f"a block was expected, {text[:40]!r} came"))
             return self._understood(message, lambda: scpi.parse_floats(payload, count))
@@ -174,23 +184,46 @@ class Session:
             maker, model, serial, firmware = self._understood("*IDN?", lambda: _four_fields(text))
             options = self._say("*OPT?", DEADLINE_S) if self._dialect.options else ""
             self._drain()
+            self._see_restart(self._say(EVENTS_QUERY, DEADLINE_S))
+            self.restarted = False
             return Identity(maker, model, serial, firmware, options.strip())
 
-    def understands(self, entry: str, **values: Value) -> bool:
-        """Whether the instrument takes this query for one; nothing is set. Raises BenchError where it does not talk at all.
+    def not_understood(self, entries: Sequence[str], *, enough: int | None = None) -> list[str]:
+        """Return those entries whose query the instrument does not take for one, at most `enough`; nothing is set.
 
-        Only a command error (-199 to -100, SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may
-        still have nothing to tell.
+        Entries without a query form and those that answer in blocks are passed over. Only a command error (-199 to -100,
+        SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may still have nothing to tell.
+        Raises BenchError where the instrument does not talk at all.
         """
-        found = self._dialect[entry]
-        message = self._unsent(lambda: join([found.ask_text(values), ERROR_QUERY]))
+        asks = {name: self._probe(name) for name in entries if self._askable(name)}
+        if not asks or self._understands(list(asks.values())):
+            return []
+        found: list[str] = []
+        for name, ask in asks.items():
+            if not self._understands([ask]):
+                found.append(name)
+            if enough is not None and len(found) >= enough:
+                break
+        return found
+
+    def _askable(self, name: str) -> bool:
+        entry = self._dialect.entries.get(name)
+        return entry is not None and entry.ask is not None and entry.reply is not None and entry.reply.kind != "block"
+
+    def _probe(self, name: str) -> Use:
+        """Return an entry with 1 for each of its channels."""
+        entry = self._dialect[name]
+        return Use(entry, dict.fromkeys(entry.ask.names if entry.ask else (), 1))
+
+    def _understands(self, asks: Sequence[Use]) -> bool:
+        message = self._unsent(lambda: compose([], asks))
+        deadline_s = min(max(use.entry.deadline_s or PROBE_S for use in asks), LONG_PROBE_S)
         with self._lock:
             try:
-                text = self._say(message, min(found.deadline_s or PROBE_S, LONG_PROBE_S))
-                first = self._understood(message, lambda: take_apart(text)).error
-            except (InstrumentError, NoAnswerError):
+                first = take_apart(self._say(message, deadline_s)).error
+                entries = [first, *self._drain()] if first.number else []
+            except (InstrumentError, NoAnswerError, ReplyError):
                 return False
-            entries = [first, *self._drain()] if first.number else []
             return not any(-200 < one.number <= -100 for one in entries)
 
     def reopen(self) -> None:
@@ -201,11 +234,16 @@ class Session:
             for _ in range(REOPENINGS):
                 self._wire.reopen()
                 if self._synchronised():
+                    self._see_restart(self._wire.query(EVENTS_QUERY, DEADLINE_S))
                     self.suspect = False
                     return
             raise ReplyError(
                 f"{self._wire.where}: answers out of turn, even on a fresh link. Check that nobody else talks to it"
             )
+
+    def accept_restart(self) -> None:
+        """Take settings again: whoever calls this prepares the instrument next."""
+        self.restarted = False
 
     def close(self) -> None:
         """Close the link; twice does no harm."""
@@ -228,8 +266,6 @@ class Session:
 
     def _rise(self, use: Use, target_dbm: float, deadline_s: float | None) -> None:
         """Raise a level by the ramp until the target is one step away."""
-        if self.suspect:
-            self.reopen()
         key = self._level_key(use)
         if key not in self._stands_dbm:
             self._stands_dbm[key] = self._run([], [use], deadline_s)[0]
@@ -263,7 +299,7 @@ class Session:
             text = self._say(message, deadline_s)
             answer = self._understood(message, lambda: take_apart(text))
             if answer.error.number:
-                raise self._complaint(answer.error, message)
+                raise self._complaint(self._rest_of_queue(answer.error), message)
             return self._understood(message, lambda: read_values(answer, bool(sets), asks))
 
     def _unsent(self, compose_message: Callable[[], str]) -> str:
@@ -308,12 +344,26 @@ class Session:
         self.exchanges.append(Exchange(started_ns, message, "", str(error) or type(error).__name__))
 
     def _explained(self, error: NoAnswerError, message: str) -> BenchError:
-        """Return why there was no answer, where the error queue says so: a query that was not understood answers nothing."""
+        """Return why there was no answer, where the error queue says so: a query that was not understood answers nothing.
+
+        Query errors (-499 to -400) tell only of the answer that did not come, or of this question about it.
+        """
         try:
-            entry = scpi.parse_error(self._wire.query(ERROR_QUERY, EXPLAIN_S))
+            entries = self._queue()
         except BenchError:
             return error
-        return self._complaint(entry, message) if entry.number else error
+        telling = [entry for entry in entries if not -500 < entry.number <= -400]
+        return self._complaint(telling, message) if telling else error
+
+    def _queue(self) -> list[scpi.ErrorEntry]:
+        """Read the error queue of a link as it is, until it is empty."""
+        entries: list[scpi.ErrorEntry] = []
+        while len(entries) < LONGEST_QUEUE:
+            entry = scpi.parse_error(self._wire.query(ERROR_QUERY, EXPLAIN_S))
+            if entry.number == 0:
+                break
+            entries.append(entry)
+        return entries
 
     # Errors
 
@@ -329,18 +379,21 @@ class Session:
         self._failed(self._clock.now_ns(), message, full)
         return full
 
-    def _complaint(self, first: scpi.ErrorEntry, message: str) -> InstrumentError:
-        """Empty the error queue and return all of it as one error."""
-        try:
-            entries = [first, *self._drain()]
-        except BenchError:
-            entries = [first]
+    def _complaint(self, entries: Sequence[scpi.ErrorEntry], message: str) -> InstrumentError:
+        """Return the entries of the error queue as one error."""
         listed = "; ".join(map(str, entries))
         error = InstrumentError(
             f"{self._wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual"
         )
         self.exchanges.append(Exchange(self._clock.now_ns(), message, listed, str(error)))
         return error
+
+    def _rest_of_queue(self, first: scpi.ErrorEntry) -> list[scpi.ErrorEntry]:
+        """Empty the error queue and return all of it, or what could be read of it."""
+        try:
+            return [first, *self._drain()]
+        except BenchError:
+            return [first]
 
     def _drain(self) -> list[scpi.ErrorEntry]:
         """Read the error queue until it is empty and return what was in it."""
@@ -352,6 +405,25 @@ class Session:
                 break
             entries.append(entry)
         return entries
+
+    def _see_restart(self, text: str) -> None:
+        """Note whether the instrument was switched on since this was last asked (power-on event, IEEE 488.2 11.5.1.1.2).
+
+        The first answer tells of the time before this session, and only starts the watch.
+        """
+        events = self._understood(EVENTS_QUERY, partial(scpi.parse_number, text))
+        self.restarted = self.restarted or (self._watching and bool(int(events) & POWER_ON))
+        self._watching = True
+
+    def _fit_to_set(self, wanted: Sequence[Use]) -> None:
+        """Open a suspect link anew; raise InstrumentError where settings are lost, unless all of these only switch off."""
+        if self.suspect:
+            self.reopen()
+        if self.restarted and not all(use.entry.switches_off(use.values) for use in wanted):
+            raise InstrumentError(
+                f"{self._wire.where}: was switched off and on, or restarted by itself, so its settings are gone. "
+                "Nothing more is set until the bench has been prepared again"
+            )
 
     def _synchronised(self) -> bool:
         """Read the error queue of a fresh link until it is empty; False where an answer comes that is none to that question.

@@ -85,7 +85,7 @@ class GenericDcSupply(OverLink):
 
     def output(self, bias: str, on: bool) -> None:
         """Switch one output, read back. Raises BenchError."""
-        self.link.confirm("output", channel=self._channel(bias), on=on)
+        self._switch(on, channel=self._channel(bias))
 
     def tripped(self, bias: str) -> bool:
         """Whether a protection of this output has tripped. Raises BenchError."""

@@ -29,7 +29,7 @@ class GenericSignalSource(OverLink):
 
     def output(self, on: bool) -> None:
         """Switch RF, read back. Raises BenchError."""
-        self.link.confirm("output", on=on)
+        self._switch(on)
 
     def locked(self) -> bool:
         """Whether the reference is locked. Raises BenchError."""

@@ -77,7 +77,7 @@ class GenericWaveReceiver(OverLink):
 
     def output(self, on: bool) -> None:
         """Switch the source's RF, read back. Raises BenchError."""
-        self.link.confirm("output", on=on)
+        self._switch(on)
 
     def locked(self) -> bool:
         """Whether the reference is locked. Raises BenchError."""

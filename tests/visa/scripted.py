@@ -31,6 +31,7 @@ class ScriptedInstrument:
     limits: dict[str, tuple[float, float]] = field(default_factory=dict)
     errors: list[str] = field(default_factory=list)
     heard: list[str] = field(default_factory=list)
+    events: int = 0
 
     def receive(self, message: str) -> bytes:
         """Run one program message and return its response."""
@@ -48,6 +49,9 @@ class ScriptedInstrument:
             responses.append((self.errors.pop(0) if self.errors else '0,"No error"').encode())
         elif header == "*OPC?":
             responses.append(b"1")
+        elif header == "*ESR?":
+            responses.append(str(self.events).encode())
+            self.events = 0
         elif header in self.answers:
             answer = self.answers[header]
             responses.append(answer() if callable(answer) else answer)

@@ -346,7 +346,7 @@ class TestFailures:
         bench.heard()
         assert bench.session.ask("output") is False
         assert bench.library.story == [f"close {address_of('pump')}", f"open {address_of('pump')}", "clear"]
-        assert bench.heard() == ["SYST:ERR?", "SYST:ERR?", "OUTP:STAT?;:SYST:ERR?"]
+        assert bench.heard() == ["SYST:ERR?", "SYST:ERR?", "*ESR?", "OUTP:STAT?;:SYST:ERR?"]
         assert not bench.session.suspect
 
     def test_a_late_answer_is_not_taken_for_another(self, bench: Bench) -> None:
@@ -411,6 +411,27 @@ class TestFailures:
         for _ in range(2):
             with pytest.raises(LinkError, match="cannot be opened"):
                 bench.session.ask("output")
+
+    def test_a_restarted_instrument_is_read_and_switched_off_and_nothing_else(self, bench: Bench) -> None:
+        bench.instrument.events = 128
+        bench.session.identify()
+        bench.session.confirm("output", on=True)
+        bench.fail(scripted.reset)
+        with pytest.raises(LinkError):
+            bench.session.ask("output")
+        bench.instrument.events = 128
+        for attempt in (
+            lambda: bench.session.confirm("output", on=True),
+            lambda: bench.session.send("sweep"),
+            lambda: bench.session.confirm("level", level=-60.0),
+            lambda: bench.session.block("data", 4),
+        ):
+            with pytest.raises(InstrumentError, match="its settings are gone"):
+                attempt()
+        assert bench.session.confirm("output", on=False) is False
+        assert bench.session.ask("level") == -20.0
+        bench.session.accept_restart()
+        bench.session.send("sweep")
 
     @pytest.mark.parametrize("fault", scripted.FAULTS.values(), ids=scripted.FAULTS)
     def test_every_exchange_may_fail(self, bench: Bench, fault: scripted.Fault) -> None:
