@@ -9,8 +9,8 @@ import click
 from benchrun.cli.options import bench_option, calibration_option, recipe_argument, to_option
 
 CAUTION = """CAUTION: this switches RF and drain on. Connect every load first, keep your hands off open connectors,
-have a hardware interlock (software is none), and follow your local rules for RF exposure and high voltage. Ctrl-C stops at a
-safe point: sources off, then the drain, and the gate last."""
+have a hardware interlock (software is none), and follow your local rules for RF exposure and high voltage. Ctrl-C stops
+at a safe point: sources off, then the drain, and the gate last."""
 
 
 @click.command(epilog=CAUTION)
