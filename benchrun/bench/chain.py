@@ -1,4 +1,4 @@
-"""Gain along the ways of a bench, small signal and nominal, vectorised over frequency. Sums of dB: mismatch is not in them."""
+"""Gain along the ways of a bench: small signal, nominal, vectorised over frequency. Sums of dB, without mismatch."""
 
 from __future__ import annotations
 
@@ -35,7 +35,7 @@ def path_gain_db(bench: Bench, signal: str, frequency_hz: npt.ArrayLike) -> Floa
 
 
 def receiver_gain_db(bench: Bench, receiver: str, frequency_hz: npt.ArrayLike) -> FloatArray:
-    """Return the gain (dB) from a coupler's main line to the input of a receiver: minus the coupling, and the arm's parts.
+    """Return the gain (dB) from a coupler's main line to the input of a receiver: minus the coupling, then the arm.
 
     In the shape of `frequency_hz` (Hz). Raises as part_gain_db does.
     """

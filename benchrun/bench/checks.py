@@ -6,7 +6,6 @@ import difflib
 from collections.abc import Iterable, Iterator, Mapping
 
 from benchrun.bench.instruments import OF_ONE_ROLE
-from benchrun.bench.kit import Kit, Measured
 from benchrun.bench.model import Bench, Bias
 from benchrun.bench.names import DRIVE
 from benchrun.bench.parts import Coupler
@@ -18,7 +17,7 @@ SOURCES = ("signal-source", "wave-receiver")
 
 
 def bench_problems(bench: Bench, source: Source, roles: Mapping[str, str] | None = None) -> list[Problem]:
-    """Return every mistake between the parts of a bench; `roles` are those of the installed drivers where they are known."""
+    """Return every mistake between the parts of a bench; `roles` are those of the installed drivers, where known."""
     checks = (
         _drivers(bench, source, roles),
         _instruments(bench, source),
@@ -229,25 +228,3 @@ def _simulated(bench: Bench, source: Source) -> Iterator[Problem]:
         yield source.problem(
             ("rehearsal-channel",), "only a bench with `simulated: true` has a rehearsal channel.", at_key=True
         )
-
-
-def kit_problems(kit: Kit, source: Source) -> list[Problem]:
-    """Return every mistake of a kit: data files that are not there or cannot be a standard."""
-    found = []
-    for name, standard in kit.standards.items():
-        if isinstance(standard, Measured) and (message := _data_problem(kit, standard)):
-            found.append(source.problem(("standards", name, "file"), message))
-    return found
-
-
-def _data_problem(kit: Kit, standard: Measured) -> str:
-    path = kit.path.parent / standard.file
-    if not path.is_file():
-        return f"there is no file '{standard.file}'; names are taken from the folder of this file."
-    from skrf import Network
-
-    try:
-        network = Network(str(path))
-    except Exception as error:  # the reader raises whatever its parsing meets
-        return f"'{standard.file}' cannot be read as Touchstone ({error}). Give a one-port .s1p file."
-    return "" if network.nports == 1 else f"'{standard.file}' holds {network.nports} ports; a standard has one."

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Annotated, Literal
 
 from pydantic import Field
@@ -37,7 +38,7 @@ class Compression(Strict):
     @property
     def summary(self) -> str:
         """Both figures and the level."""
-        return f"{show(self.loss, 'ratio')} and {show(self.phase, 'angle', 3)} at {show(self.at, 'level')}"
+        return f"{show(self.loss, 'ratio')} and {math.degrees(self.phase):.3g} deg at {show(self.at, 'level')}"
 
 
 class ReceiverInput(Strict):
@@ -59,7 +60,7 @@ class Sensor(Strict):
 
 
 class ExpectedIdentity(Strict):
-    """What *IDN? must say; what is left out may be anything."""
+    """Who must answer at the address: fields of *IDN?; one that is left out is not looked at."""
 
     maker: Text | None = None
     model: Text | None = None
@@ -71,8 +72,8 @@ class Instrument(Strict):
 
     driver: Name
     address: str = Field(min_length=3, max_length=200, pattern=r"^[^\s]+$", description="VISA resource string")
-    dialect: str | None = Field(
-        None, description="dialect file, from this file's folder", examples=["my-receiver.dialect.yaml"]
+    dialect: FilePath | None = Field(
+        None, description="dialect file, seen from this file's folder", examples=["my-receiver.dialect.yaml"]
     )
     identity: ExpectedIdentity | None = Field(None, description="the one instrument that this may be")
     ceiling: Level | None = Field(None, description="no higher level is ever sent")

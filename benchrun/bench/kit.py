@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
@@ -45,15 +46,11 @@ class _Offset(Strict):
     """The line between the plane and what ends it."""
 
     delay: NotNegativeDuration = Field(0.0, description="one way")
-    offset_loss: NotNegativeLoss = Field(0.0, description="at 1 GHz; it rises with the root of frequency")
-    offset_impedance: PositiveResistance = 50.0
+    loss: NotNegativeLoss = Field(0.0, description="at 1 GHz; it rises with the root of frequency")
+    line_impedance: PositiveResistance = 50.0
 
     def _line(self) -> dict[str, Any]:
-        return {
-            "delay_s": self.delay,
-            "offset_loss_ohm_per_s": self.offset_loss,
-            "offset_impedance_ohm": self.offset_impedance,
-        }
+        return {"delay_s": self.delay, "loss_ohm_per_s": self.loss, "line_impedance_ohm": self.line_impedance}
 
 
 def _given(name: str, coefficients: tuple[float, ...] | None) -> dict[str, Any]:
@@ -104,7 +101,7 @@ class Measured(Strict):
     )
 
     def plain(self) -> dict[str, Any]:
-        """Return the definition as written; Kit.definitions() makes the path whole."""
+        """Return the definition; the file's text is in Kit.files."""
         return {"kind": self.kind, "file": self.file}
 
 
@@ -127,16 +124,33 @@ class Kit(Strict):
     connector: Connector | None = None
     standards: dict[Name, Standard] = Field(min_length=1)
     _path: Path = PrivateAttr(default=Path("kit.yaml"))
+    _text: str = PrivateAttr(default="")
+    _files: Mapping[str, str] = PrivateAttr(default_factory=dict)
+
+    def remember(self, path: Path, text: str, files: Mapping[str, str]) -> None:
+        """Keep where the kit came from; for the loader."""
+        self._path, self._text, self._files = path, text, files
 
     @property
     def path(self) -> Path:
         """The kit file."""
         return self._path
 
-    def definitions(self) -> dict[str, dict[str, Any]]:
-        """Return each standard's definition by name in SI, as derive takes it; a Touchstone file as a whole path."""
-        plain = {name: standard.plain() for name, standard in self.standards.items()}
-        for description in plain.values():
-            if "file" in description:
-                description["file"] = str(self._path.parent / description["file"])
-        return plain
+    @property
+    def text(self) -> str:
+        """The kit file as read."""
+        return self._text
+
+    @property
+    def files(self) -> Mapping[str, str]:
+        """Texts of the Touchstone files that the kit names, by name; a run keeps them, to be corrected again later."""
+        return self._files
+
+    @property
+    def impedance_ohm(self) -> float:
+        """Reference impedance in ohm."""
+        return self.impedance
+
+    def plain(self) -> dict[str, dict[str, Any]]:
+        """Return each standard's definition by name in SI, as derive takes it."""
+        return {name: standard.plain() for name, standard in self.standards.items()}

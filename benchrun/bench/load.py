@@ -5,42 +5,56 @@ from __future__ import annotations
 from collections.abc import Mapping
 from pathlib import Path
 
-from benchrun.bench.checks import bench_problems, kit_problems
-from benchrun.bench.kit import Kit
+from benchrun.bench import touchstone
+from benchrun.bench.checks import bench_problems
+from benchrun.bench.kit import Kit, Measured
 from benchrun.bench.model import Bench
 from benchrun.contract.roles import ROLES
 from benchrun.errors import Problem
-from benchrun.yaml_source import check, read_source
+from benchrun.yaml_source import Source, check, read_source
 
 
 def load_bench(path: Path | str, roles: Mapping[str, str] | None = None) -> tuple[Bench | None, list[Problem]]:
-    """Read and check a bench file.
+    """Read and check a bench file, and the Touchstone files that it names.
 
-    `roles` maps the names of the installed drivers to their roles; without it a driver that is named like a role is taken
-    to have it, and other names are not judged.
+    `roles` maps the names of the installed drivers to their roles; without it a driver that is named like a role is
+    taken to have it, and other names are not judged.
     """
     source = read_source(Path(path))
     if source.data is None:
         return None, source.problems
-    bench, problems = check(source, Bench, context={"folder": Path(path).parent})
+    files: dict[str, str] = {}
+    bench, problems = check(source, Bench, context={"folder": Path(path).parent, "files": files})
     problems += source.problems
-    if bench is None:
-        return None, sorted(set(problems))
-    bench._path = Path(path)
-    bench._roles = {**dict(zip(ROLES, ROLES, strict=True)), **(roles or {})}
-    problems += bench_problems(bench, source, roles)
+    if bench is not None:
+        known = {**dict(zip(ROLES, ROLES, strict=True)), **(roles or {})}
+        bench.remember(Path(path), source.text, known, files)
+        problems += bench_problems(bench, source, roles)
     return (None if problems else bench), sorted(set(problems))
 
 
 def load_kit(path: Path | str) -> tuple[Kit | None, list[Problem]]:
-    """Read and check a kit file."""
+    """Read and check a kit file, and the Touchstone files that it names."""
     source = read_source(Path(path))
     if source.data is None:
         return None, source.problems
     kit, problems = check(source, Kit)
     problems += source.problems
-    if kit is None:
-        return None, sorted(set(problems))
-    kit._path = Path(path)
-    problems += kit_problems(kit, source)
+    if kit is not None:
+        files, more = _data_files(kit, source, Path(path).parent)
+        kit.remember(Path(path), source.text, files)
+        problems += more
     return (None if problems else kit), sorted(set(problems))
+
+
+def _data_files(kit: Kit, source: Source, folder: Path) -> tuple[dict[str, str], list[Problem]]:
+    files: dict[str, str] = {}
+    problems = []
+    for name, standard in kit.standards.items():
+        if isinstance(standard, Measured):
+            try:
+                files[standard.file] = touchstone.read_beside(folder, standard.file)
+                touchstone.parse(standard.file, files[standard.file], ports=1)
+            except ValueError as error:
+                problems.append(source.problem(("standards", name, "file"), f"{error}."))
+    return files, problems

@@ -28,7 +28,9 @@ DRIVE_PLANE: Plane = "input"
 class Visa(Strict):
     """Which VISA is used: never a library's path."""
 
-    backend: str = Field("py", pattern=r"^[a-z][a-z0-9_]*$", description="name of a VISA backend", examples=["py"])
+    backend: str = Field(
+        default="py", pattern=r"^[a-z][a-z0-9_]*$", description="name of a VISA backend", examples=["py"]
+    )
 
 
 class Signal(Strict):
@@ -107,10 +109,10 @@ class Bench(Strict):
     interlock: Text | None = Field(None, description="the hardware interlock; software is none")
     visa: Visa = Visa()
     instruments: dict[Name, Instrument] = Field(min_length=1)
-    parts: dict[Name, Part] = {}
+    parts: dict[Name, Part] = Field(default={})
     signals: dict[Name, Signal] = Field(min_length=1)
-    receivers: dict[Name, Receiver] = {}
-    bias: dict[Name, Bias] = {}
+    receivers: dict[Name, Receiver] = Field(default={})
+    bias: dict[Name, Bias] = Field(default={})
     device: Device
     rehearsal: Rehearsal | None = None
     simulated: bool = Field(False, description="true where the addresses are those of a served simulation")
@@ -118,12 +120,28 @@ class Bench(Strict):
         None, pattern=r"^[^\s:]+:\d{1,5}$", description="host:port; with simulated: true"
     )
     _path: Path = PrivateAttr(default=Path("bench.yaml"))
+    _text: str = PrivateAttr(default="")
     _roles: Mapping[str, str] = PrivateAttr(default_factory=dict)
+    _files: Mapping[str, str] = PrivateAttr(default_factory=dict)
+
+    def remember(self, path: Path, text: str, roles: Mapping[str, str], files: Mapping[str, str]) -> None:
+        """Keep where the bench came from and which driver has which role; for the loader."""
+        self._path, self._text, self._roles, self._files = path, text, roles, files
 
     @property
     def path(self) -> Path:
         """The bench file."""
         return self._path
+
+    @property
+    def text(self) -> str:
+        """The bench file as read."""
+        return self._text
+
+    @property
+    def files(self) -> Mapping[str, str]:
+        """Texts of the Touchstone files that the bench names, by name."""
+        return self._files
 
     @property
     def coherent(self) -> bool:

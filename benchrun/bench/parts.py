@@ -29,6 +29,7 @@ class _Part(Strict):
 
 
 class _Lossy(_Part):
+    kind: str
     loss: Loss
 
     def transmission_db(self, frequency_hz: FloatArray) -> FloatArray:
@@ -37,8 +38,8 @@ class _Lossy(_Part):
 
     @property
     def summary(self) -> str:
-        """The loss."""
-        return ratio_text(self.loss)
+        """Loss and kind."""
+        return f"{ratio_text(self.loss)} {self.kind}"
 
 
 class Passive(_Lossy):
@@ -64,7 +65,7 @@ class Coupler(_Lossy):
     @property
     def summary(self) -> str:
         """Coupling, directivity and loss."""
-        return f"coupling {self.coupling:g} dB, directivity {self.directivity:g} dB, loss {ratio_text(self.loss)}"
+        return f"{self.coupling:g} dB coupler, directivity {self.directivity:g} dB, loss {ratio_text(self.loss)}"
 
 
 class Amplifier(_Part):
@@ -79,8 +80,8 @@ class Amplifier(_Part):
 
     @property
     def summary(self) -> str:
-        """The gain."""
-        return f"gain {ratio_text(self.gain)}"
+        """Gain and kind."""
+        return f"{ratio_text(self.gain)} amplifier"
 
 
 Part = Annotated[Passive | Isolator | Coupler | Amplifier, Field(discriminator="kind")]

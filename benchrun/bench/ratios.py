@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from itertools import pairwise
 from pathlib import Path
 from typing import Annotated, Any
 
@@ -10,6 +11,8 @@ import numpy as np
 import numpy.typing as npt
 from pydantic import BeforeValidator, Field, ValidationInfo, WithJsonSchema
 
+from benchrun.bench import touchstone
+from benchrun.bench.touchstone import read_beside
 from benchrun.errors import QuantityError
 from benchrun.quantities import example, parse, show
 from benchrun.yaml_source import Strict
@@ -78,7 +81,7 @@ def _from_pairs(given: Sequence[Any]) -> RatioTable:
     if len(given) < 2 or any(not isinstance(pair, list) or len(pair) != 2 for pair in given):
         raise ValueError(f"a table has two rows or more of a frequency and a ratio: {_PAIRS}")
     frequency = tuple(parse(pair[0], "frequency") for pair in given)
-    if any(later <= earlier for earlier, later in zip(frequency, frequency[1:], strict=False)):
+    if any(later <= earlier for earlier, later in pairwise(frequency)):
         raise ValueError("the frequencies of a table must rise from row to row")
     return RatioTable(frequency_hz=frequency, ratio_db=tuple(parse(pair[1], "ratio") for pair in given))
 
@@ -86,27 +89,20 @@ def _from_pairs(given: Sequence[Any]) -> RatioTable:
 def _from_file(given: dict[str, Any], info: ValidationInfo, sign: float) -> RatioTable:
     if set(given) != {"file"} or not isinstance(given["file"], str):
         raise ValueError("a Touchstone file is given as {file: NAME.s2p}")
-    folder: Path = (info.context or {}).get("folder", Path())
-    return read_touchstone(folder / given["file"], sign, given["file"])
+    context = info.context or {}
+    text = read_beside(context.get("folder", Path()), given["file"])
+    context.get("files", {})[given["file"]] = text
+    return _from_touchstone(text, sign, given["file"])
 
 
-def read_touchstone(path: Path, sign: float, name: str) -> RatioTable:
+def _from_touchstone(text: str, sign: float, name: str) -> RatioTable:
     """Return 20 log10 |S21| of a two-port Touchstone file, times `sign`. Raises ValueError with our message."""
-    if not path.is_file():
-        raise ValueError(f"there is no file '{name}'; names are taken from the folder of this file")
-    from skrf import Network
-
-    try:
-        network = Network(str(path))
-    except Exception as error:  # the reader raises whatever its parsing meets
-        raise ValueError(f"'{name}' cannot be read as Touchstone ({error}). Give a two-port .s2p file") from None
-    if network.nports != 2 or network.f.size < 2 or np.any(np.diff(network.f) <= 0.0):
-        raise ValueError(f"'{name}' must hold two ports and two frequencies or more that rise")
-    size = np.abs(network.s[:, 1, 0])
-    if not np.all(np.isfinite(size)) or np.any(size <= 0.0):
-        raise ValueError(f"'{name}': S21 must be a number above zero at every frequency")
+    frequency_hz, s = touchstone.parse(name, text, ports=2)
+    size = np.abs(s[:, 1, 0])
+    if size.size < 2 or np.any(size <= 0.0):
+        raise ValueError(f"'{name}': two frequencies or more, and S21 above zero at each, are needed")
     table = sign * 20.0 * np.log10(size)
-    return RatioTable(frequency_hz=tuple(network.f.tolist()), ratio_db=tuple(table.tolist()), file=name)
+    return RatioTable(frequency_hz=tuple(frequency_hz.tolist()), ratio_db=tuple(table.tolist()), file=name)
 
 
 def _loss(given: Any, info: ValidationInfo) -> float | RatioTable:

@@ -1,4 +1,4 @@
-"""The wiring document: what a rehearsal is told of a bench, plain SI, the file's words with underscores and unit suffixes."""
+"""The wiring document: what a rehearsal is told of a bench; plain SI, the file's words with underscores and units."""
 
 from __future__ import annotations
 
@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from pydantic import BaseModel
 
+from benchrun.bench import touchstone
 from benchrun.bench.kit import Kit
 from benchrun.bench.parts import Part
 from benchrun.bench.ratios import RatioTable
@@ -90,23 +91,17 @@ def _bias(bias: Bias) -> dict[str, Any]:
 
 
 def _standards(kit: Kit) -> dict[str, Any]:
-    return {name: _standard(description) for name, description in kit.definitions().items()}
+    return {name: _standard(description, kit) for name, description in kit.plain().items()}
 
 
-def _standard(description: dict[str, Any]) -> dict[str, Any]:
+def _standard(description: dict[str, Any], kit: Kit) -> dict[str, Any]:
     """Return a definition in the wiring's words; data as numbers, so that a rehearsal reads no file."""
     if description["kind"] == "data":
-        from skrf import Network
-
-        network = Network(description["file"])
-        reflection = network.s[:, 0, 0]
-        pairs = [[float(value.real), float(value.imag)] for value in reflection]
-        return {"kind": "data", "frequency_hz": network.f.tolist(), "reflection": pairs}
-    plain = {name: value for name, value in description.items() if name not in _RENAMED}
-    plain |= {short: description[name] for name, short in _RENAMED.items()}
+        frequency_hz, s = touchstone.parse(description["file"], kit.files[description["file"]], ports=1)
+        pairs = [[float(value.real), float(value.imag)] for value in s[:, 0, 0]]
+        return {"kind": "data", "frequency_hz": frequency_hz.tolist(), "reflection": pairs}
+    plain = dict(description)
+    plain["line_ohm"] = plain.pop("line_impedance_ohm")
     if description["kind"] == "match" and "inductance" in plain:
-        plain["inductance_h"] = plain["inductance"][0]
+        plain["inductance_h"] = plain.pop("inductance")[0]
     return plain
-
-
-_RENAMED = {"offset_loss_ohm_per_s": "loss_ohm_per_s", "offset_impedance_ohm": "line_ohm"}
