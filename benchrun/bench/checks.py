@@ -52,7 +52,7 @@ def _drivers(bench: Bench, source: Source, roles: Mapping[str, str] | None) -> I
             hint = f" Did you mean '{near[0]}'?" if near else ""
             yield source.problem(
                 where,
-                f"no installed driver is called '{instrument.driver}'.{hint} `benchrun drivers` lists: {listed(roles)}.",
+                f"no installed driver is called '{instrument.driver}'.{hint} Installed: {listed(roles)}.",
             )
 
 

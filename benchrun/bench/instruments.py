@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from benchrun.bench.ranges import Fraction, FrequencyRange, LevelRange, PositiveRatio
+from benchrun.bench.ranges import FilePath, Fraction, FrequencyRange, LevelRange, PositiveRatio
 from benchrun.fields import Angle, Count, Level, Name, Ratio, Text
 from benchrun.quantities import show
 from benchrun.yaml_source import Strict
