@@ -62,7 +62,7 @@ class Circumstances:
         if not parts or not changed:
             return " between plane and receivers than the bench has now. Calibrate again, or put the old parts back."
         told = [
-            f"{k} was {self.parts.get(k, 'absent')}; the bench now has {parts.get(k, 'none')}"
+            f"{k} was {self.parts.get(k, 'absent')}; the bench now has {parts.get(k, 'nothing')} there"
             for k in dict.fromkeys(changed)
         ]
         return f": {'; '.join(told)}. Calibrate again, or put the old parts back."
@@ -98,12 +98,17 @@ class Calibration:
 
         The phase of K is free but must be smooth over the tones of one reading; it is taken as 0 everywhere.
         """
+        scale = self.require_scale()
+        self._require_grid(frequency_hz)
+        return interpolate(self.frequency_hz, scale, frequency_hz)
+
+    def require_scale(self) -> FloatArray:
+        """Return |K| (F,). Raises CalibrationError where no power was read."""
         if self.scale is None:
             raise CalibrationError(
                 f"{self._who} has no absolute scale: its recipe read no power meter. Calibrate again with one."
             )
-        self._require_grid(frequency_hz)
-        return interpolate(self.frequency_hz, self.scale, frequency_hz)
+        return self.scale
 
     def check_fits(
         self,

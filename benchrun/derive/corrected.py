@@ -12,6 +12,7 @@ from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.derive.calibration import Calibration
 from benchrun.derive.facts import BenchFacts
 from benchrun.derive.linearity import image_bound, restore_pair, restore_weak
+from benchrun.derive.one_port import ErrorTerms
 from benchrun.derive.points import Points
 
 PROBE, PUMP, IMAGE = "probe", "pump", "image"
@@ -36,14 +37,15 @@ class Linear:
 class Corrected:
     """Points with their waves at the plane: `b` out of the device and `a` into it, (N,) in root-watt for each tone.
 
-    `image_share` (N,) is that of the measurement receiver; `flags` (N) are the readings' words and those found here.
+    `leak` (N,) bounds, for each tone, what the other sideband may have left in `b` and into `a`, as a part of `a` at
+    the probe: 0 where the tones were coherent. `flags` (N) are the readings' words and those found here.
     """
 
     points: Points
     calibration: Calibration
     b: Mapping[str, ComplexArray]
     a: Mapping[str, ComplexArray]
-    image_share: FloatArray
+    leak: Mapping[str, FloatArray]
     flags: tuple[tuple[str, ...], ...]
 
 
@@ -80,13 +82,28 @@ def correct(points: Points, calibration: Calibration, facts: BenchFacts) -> Corr
     missing.
     """
     measured, reference = restore(points, facts.reflected, facts), restore(points, facts.incident, facts)
-    b, a = {}, {}
+    b, a, leak = {}, {}, {}
     for tone in points.tones:
         f = points.tone_hz(tone)
+        terms = calibration.at(f)
         scale = np.ones(len(points)) if calibration.scale is None else calibration.scale_at(f)
-        b[tone], a[tone] = calibration.at(f).waves(measured.tones[tone], reference.tones[tone], scale)
+        b[tone], a[tone] = terms.waves(measured.tones[tone], reference.tones[tone], scale)
+        leak[tone] = _leak(terms, scale, *(_left(wave, tone) for wave in (measured, reference)))
+    leak = {tone: bound / np.maximum(np.abs(a[PROBE]), 1e-300) for tone, bound in leak.items()} if PROBE in a else {}
     flags = _flagged(points.flags, {facts.reflected: measured, facts.incident: reference})
-    return Corrected(points, calibration, b, a, measured.image_share, flags)
+    return Corrected(points, calibration, b, a, leak, flags)
+
+
+def _left(wave: Linear, tone: str) -> FloatArray:
+    """Return how much (N,) of the other sideband may still stand in `tone` of a raw wave."""
+    other = wave.tones.get({PROBE: IMAGE, IMAGE: PROBE}.get(tone, ""))
+    return np.zeros(wave.image_share.shape) if other is None else wave.image_share * np.abs(other)
+
+
+def _leak(terms: ErrorTerms, scale: FloatArray, measured: FloatArray, reference: FloatArray) -> FloatArray:
+    """Return the bound (N,) on |db| + |da| for errors of the raw waves of at most `measured` and `reference` (N,)."""
+    db = scale * (measured + np.abs(terms.e00) * reference) / np.abs(terms.e10e01)
+    return np.asarray(db * (1.0 + np.abs(terms.e11)) + scale * reference)
 
 
 def _above(tones: Mapping[str, ComplexArray], wave: str, facts: BenchFacts) -> npt.NDArray[np.bool_]:

@@ -43,18 +43,21 @@ def hot_match(corrected: Corrected, facts: BenchFacts) -> HotMatch:
 
     With the image read, both sidebands are solved, which takes the bench's own reflection of it out; without, the
     probe's tone alone is taken and the bound grows by that bias. Raises DataSetError where probe or pump were not
-    read.
+    read, CalibrationError where there is no absolute scale.
     """
     points, b, a = corrected.points, corrected.b, corrected.a
+    corrected.calibration.require_scale()
     for wave in (facts.reflected, facts.incident):
         points.wave(PROBE, wave), points.wave(PUMP, wave)
     distance = distance_bound(facts.return_gain_db, facts.input_match_db)
     output_w, into_w = np.abs(b[PUMP]) ** 2, np.abs(a[PUMP]) ** 2
     if IMAGE not in points.tones:
         s, bias = one_sideband(a[PROBE], b[PROBE], facts.conversion, facts.output_match)
-        return HotMatch(s, distance + bias, None, None, False, output_w, output_w - into_w, None, None)
+        return HotMatch(
+            s, distance + bias + corrected.leak[PROBE], None, None, False, output_w, output_w - into_w, None, None
+        )
     s, t = two_sidebands(a[PROBE], b[PROBE], a[IMAGE], b[IMAGE])
-    bounds = distance + corrected.image_share * np.abs(t), distance + corrected.image_share * np.abs(s)
+    bounds = tuple(distance + left for left in _left_by_leaks(corrected, t))
     if not points.coherent:
         t = np.abs(t).astype(np.complex128)
         return HotMatch(s, bounds[0], t, bounds[1], False, output_w, output_w - into_w, None, None)
@@ -90,7 +93,7 @@ def hot_table(corrected: Corrected, match: HotMatch) -> Table:
         columns["gain_db"] = gain_db
         columns["compression_db"] = _compression_db(corrected, gain_db)
     columns |= polar("output_reflection", match.reflection)
-    columns["output_reflection_from_s22_at_most_ratio"] = match.reflection_bound
+    columns["output_reflection_bound_ratio"] = match.reflection_bound
     columns |= _conversion_columns(match)
     if match.load is not None and match.load_w is not None:
         columns |= polar("optimum_load_extrapolated", match.load)
@@ -113,6 +116,19 @@ def _conversion_columns(match: HotMatch) -> dict[str, Column]:
         columns["t22_phase_from_twice_b2_pump_deg"] = np.angle(match.conversion, deg=True)
     columns["t22_bound_ratio"] = match.conversion_bound
     return columns
+
+
+def _left_by_leaks(corrected: Corrected, t: ComplexArray) -> tuple[FloatArray, FloatArray]:
+    """Return the first-order bounds (N,) on S22 and T22 of what each sideband may have left in the other.
+
+    With rho = |a(-)/a(+)|:  dS <= (e(+) + rho e(-)) / (1 - rho^2) and dT with e(+) and e(-) changed over, from the two
+    equations of hot.two_sidebands; e are the errors of b and a together, |S22| <= 1.
+    """
+    rho = np.abs(corrected.a[IMAGE] / corrected.a[PROBE])
+    upper, lower = corrected.leak[PROBE], corrected.leak[IMAGE]
+    e_upper, e_lower = upper + np.abs(t) * lower, lower + np.abs(t) * upper
+    room = np.abs(1.0 - rho**2)
+    return np.asarray((e_upper + rho * e_lower) / room), np.asarray((e_lower + rho * e_upper) / room)
 
 
 def _loads(b: ComplexArray, s: ComplexArray, t: ComplexArray) -> tuple[ComplexArray, FloatArray]:

@@ -123,9 +123,7 @@ def stack(readings: Iterable[Reading], name: str) -> Points:
         name=name,
         frequency_hz=_frequencies(chosen),
         tones=first.tones,
-        offsets_hz=np.repeat(
-            np.array([r.offsets_hz for r in chosen], dtype=np.float64).T.reshape(len(first.tones), -1), counts, axis=1
-        ),
+        offsets_hz=np.repeat(np.array([r.offsets_hz for r in chosen], dtype=np.float64).T, counts, axis=1),
         waves=first.waves,
         data=_waves(chosen),
         coherent=all(r.coherent for r in chosen),

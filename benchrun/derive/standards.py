@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import io
+import warnings
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from pathlib import Path
+from types import MappingProxyType
 from typing import Any, Literal, Protocol
 
 import numpy as np
@@ -52,8 +54,8 @@ class Standard:
 
     kind: Literal["open", "short", "match"]
     delay_s: float = 0.0
-    offset_loss_ohm_per_s: float = 0.0
-    offset_impedance_ohm: float = 50.0
+    loss_ohm_per_s: float = 0.0
+    line_impedance_ohm: float = 50.0
     capacitance: tuple[float, ...] = ()
     inductance: tuple[float, ...] = ()
     resistance_ohm: float = 50.0
@@ -65,9 +67,7 @@ class Standard:
         """
         f = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
         if not np.all(np.isfinite(f) & (f > 0.0)):
-            raise DataSetError(
-                f"a standard's definition holds above 0 Hz; {f[~(f > 0.0)][0]:g} Hz was asked for."
-            )
+            raise DataSetError(f"a standard's definition holds above 0 Hz; {f[~(f > 0.0)][0]:g} Hz was asked for.")
         return self._behind_line(f, self._termination(f, reference_ohm), reference_ohm)
 
     def _termination(self, f: FloatArray, reference_ohm: float) -> ComplexArray:
@@ -82,9 +82,9 @@ class Standard:
     def _behind_line(self, f: FloatArray, gt: ComplexArray, reference_ohm: float) -> ComplexArray:
         """Return G (F,): the termination seen through the offset line."""
         skin = np.sqrt(f / 1e9)
-        alpha_l = self.offset_loss_ohm_per_s * self.delay_s / (2.0 * self.offset_impedance_ohm) * skin
+        alpha_l = self.loss_ohm_per_s * self.delay_s / (2.0 * self.line_impedance_ohm) * skin
         beta_l = 2.0 * np.pi * f * self.delay_s + alpha_l
-        zc = self.offset_impedance_ohm + (1 - 1j) * self.offset_loss_ohm_per_s / (4.0 * np.pi * f) * skin
+        zc = self.line_impedance_ohm + (1 - 1j) * self.loss_ohm_per_s / (4.0 * np.pi * f) * skin
         e = np.exp(-2.0 * (alpha_l + 1j * beta_l))
         g1 = (zc - reference_ohm) / (zc + reference_ohm)
         return np.asarray((g1 * (1 - e - g1 * gt) + e * gt) / (1 - g1 * (e * g1 + gt * (1 - e))))
@@ -123,33 +123,39 @@ def refer(reflection: ComplexArray, from_ohm: float, to_ohm: float) -> ComplexAr
     return np.asarray((reflection - r) / (1.0 - r * reflection))
 
 
-def read_standard(path: Path) -> MeasuredStandard:
-    """Read a one-port Touchstone file as a definition. Raises DataSetError where it cannot be one."""
+def read_standard(name: str, text: str) -> MeasuredStandard:
+    """Return the definition in the `text` of the one-port Touchstone file `name`. Raises DataSetError for another."""
     from skrf import Network
 
+    source = io.StringIO(text)
+    source.name = name
     try:
-        network = Network(str(path))
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # what it would warn of is refused below
+            network = Network(source)
     except Exception as error:  # the reader raises whatever its parsing meets
-        raise DataSetError(f"{path}: cannot be read as Touchstone ({error}). Give a one-port .s1p file.") from error
+        raise DataSetError(f"{name}: cannot be read as Touchstone ({error}). Give a one-port .s1p file.") from error
     if network.nports != 1 or network.f.size == 0:
         raise DataSetError(
-            f"{path}: holds {network.nports} ports and {network.f.size} frequencies; one port is needed."
+            f"{name}: holds {network.nports} ports and {network.f.size} frequencies; one port is needed."
         )
     if np.any(np.diff(network.f) <= 0.0) or not np.all(np.isfinite(network.s)):
-        raise DataSetError(f"{path}: the frequencies must rise and every value must be a number.")
-    return MeasuredStandard(network.f, network.s[:, 0, 0], float(network.z0[0, 0].real), str(path.name))
+        raise DataSetError(f"{name}: the frequencies must rise and every value must be a number.")
+    return MeasuredStandard(network.f, network.s[:, 0, 0], float(network.z0[0, 0].real), name)
 
 
-def define(description: Mapping[str, Any]) -> Definition:
+def define(description: Mapping[str, Any], files: Mapping[str, str] = MappingProxyType({})) -> Definition:
     """Return the definition that a kit's plain description means.
 
-    Either {"kind": "open"|"short"|"match", "delay_s", "offset_loss_ohm_per_s", "offset_impedance_ohm", "capacitance",
-    "inductance", "resistance_ohm"} in SI units, all but kind optional, or {"kind": "data", "file": path}.
-    Raises DataSetError for a kind that is none of these.
+    Either {"kind": "open"|"short"|"match", "delay_s", "loss_ohm_per_s", "line_impedance_ohm", "capacitance",
+    "inductance", "resistance_ohm"} in SI units, all but kind optional, or {"kind": "data", "file": name}, whose text
+    is in `files`. Raises DataSetError for a kind that is none of these, and where the file is not there.
     """
     kind = description["kind"]
     if kind == "data":
-        return read_standard(Path(description["file"]))
+        if description["file"] not in files:
+            raise DataSetError(f"the kit's file {description['file']} is not there: put it beside the kit file.")
+        return read_standard(description["file"], files[description["file"]])
     if kind not in SHAPES:
         raise DataSetError(f"'{kind}' is no kind of standard: {', '.join(SHAPES)} or data is expected.")
     plain = {k: v for k, v in description.items() if k in _FIELDS and v is not None}
@@ -158,7 +164,7 @@ def define(description: Mapping[str, Any]) -> Definition:
     return Standard(kind, **plain)
 
 
-_FIELDS = ("delay_s", "offset_loss_ohm_per_s", "offset_impedance_ohm", "capacitance", "inductance", "resistance_ohm")
+_FIELDS = ("delay_s", "loss_ohm_per_s", "line_impedance_ohm", "capacitance", "inductance", "resistance_ohm")
 
 
 def _polynomial(coefficients: Sequence[float], f: FloatArray) -> FloatArray:

@@ -21,13 +21,13 @@ def test_without_parameters_a_standard_is_ideal(kind, expected):
 
 @given(st.floats(0, 200e-12), st.floats(0, 50e9), st.floats(25, 100), st.sampled_from(["open", "short", "match"]))
 def test_every_standard_is_passive(delay_s, loss, z0, kind):
-    standard = Standard(kind, delay_s=delay_s, offset_loss_ohm_per_s=loss, offset_impedance_ohm=z0)
+    standard = Standard(kind, delay_s=delay_s, loss_ohm_per_s=loss, line_impedance_ohm=z0)
     assert np.all(np.abs(standard.reflection(F)) <= 1 + 1e-12)
 
 
 def test_a_line_of_another_impedance_against_its_impedance():
     """A lossless 75 ohm line of a quarter wave turns 50 ohm into 112.5 ohm."""
-    match = Standard("match", delay_s=1 / (4 * 2.3e9), offset_impedance_ohm=75.0)
+    match = Standard("match", delay_s=1 / (4 * 2.3e9), line_impedance_ohm=75.0)
     assert match.reflection([2.3e9])[0] == pytest.approx((112.5 - 50) / (112.5 + 50), abs=1e-12)
 
 
@@ -52,23 +52,28 @@ def test_measured_standard_is_interpolated_and_never_extrapolated():
         data.reflection([2.2e9, 2.6e9])
 
 
-def test_touchstone_file_as_definition(tmp_path):
+def touchstone(s, z0=50.0):
+    network = skrf.Network(f=F, s=s, z0=z0, f_unit="Hz")
+    return network.write_touchstone("standard", return_string=True, r_ref=z0)
+
+
+def test_touchstone_file_as_definition():
     """Written by scikit-rf against 75 ohm, read back against 50 ohm."""
     s = 0.3 * np.exp(1j * F / 1e9)
-    skrf.Network(f=F, s=s, z0=75.0, f_unit="Hz").write_touchstone(str(tmp_path / "match"), write_z0=False, r_ref=75.0)
-    found = define({"kind": "data", "file": str(tmp_path / "match.s1p")}).reflection(F)
+    found = define({"kind": "data", "file": "match.s1p"}, {"match.s1p": touchstone(s, 75.0)}).reflection(F)
     np.testing.assert_allclose(found, refer(s, 75.0, 50.0), rtol=0, atol=1e-12)
 
 
-def test_files_that_are_no_definition(tmp_path):
-    with pytest.raises(DataSetError, match=r"cannot be read as Touchstone"):
-        read_standard(tmp_path / "absent.s1p")
-    (tmp_path / "text.s1p").write_text("this is no Touchstone file\n")
-    with pytest.raises(DataSetError, match=r"text\.s1p"):
-        read_standard(tmp_path / "text.s1p")
-    skrf.Network(f=F, s=np.zeros((F.size, 2, 2)), f_unit="Hz").write_touchstone(str(tmp_path / "two"))
+def test_files_that_are_no_definition():
+    with pytest.raises(DataSetError, match=r"absent\.s1p is not there"):
+        define({"kind": "data", "file": "absent.s1p"})
+    with pytest.raises(DataSetError, match=r"text\.s1p: cannot be read as Touchstone"):
+        read_standard("text.s1p", "this is no Touchstone file\n")
     with pytest.raises(DataSetError, match="2 ports"):
-        read_standard(tmp_path / "two.s2p")
+        read_standard("two.s2p", touchstone(np.zeros((F.size, 2, 2))))
+    falling = "# Hz S RI R 50\n2e9 0.1 0\n1e9 0.1 0\n"
+    with pytest.raises(DataSetError, match="must rise"):
+        read_standard("falling.s1p", falling)
 
 
 def test_descriptions_of_a_kit():

@@ -155,7 +155,7 @@ class VirtualBench:
         up, mid, low = f, f - OFFSET_HZ, f - 2 * OFFSET_HZ
         probe = np.sqrt(0.5e-3) * np.exp(-2j * np.pi * f * 5e-9)
         b_up = b_low = b_mid = np.zeros_like(probe)
-        for _ in range(200):
+        for _ in range(25):
             a_up, a_low, a_mid = (
                 probe + self.bench_reflection(up) * b_up,
                 self.bench_reflection(low) * b_low,
