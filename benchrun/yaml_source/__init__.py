@@ -1,0 +1,20 @@
+"""YAML files that people write: data with the place of every key and value, checked against a model, all at once."""
+
+from benchrun.yaml_source.checking import Strict, check
+from benchrun.yaml_source.places import Mark, Path_, Placed, PlacedList, Source
+from benchrun.yaml_source.reader import MAX_BYTES, MAX_DEPTH, MAX_NODES, read_source, read_text
+
+__all__ = [
+    "MAX_BYTES",
+    "MAX_DEPTH",
+    "MAX_NODES",
+    "Mark",
+    "Path_",
+    "Placed",
+    "PlacedList",
+    "Source",
+    "Strict",
+    "check",
+    "read_source",
+    "read_text",
+]
