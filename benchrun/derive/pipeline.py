@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -14,7 +14,6 @@ from benchrun.derive.results import Provenance, Results
 from benchrun.derive.standards import Definition
 from benchrun.derive.work import Known, Work
 from benchrun.errors import DataSetError
-from benchrun.recipe.model import Entry
 
 
 @dataclass(frozen=True, slots=True)
@@ -23,11 +22,6 @@ class Step:
 
     kind: str
     values: Mapping[str, Any]
-
-
-def steps_of(entries: Iterable[Entry]) -> tuple[Step, ...]:
-    """Return the derive part of a checked recipe as steps."""
-    return tuple(Step(entry.kind, entry.model.model_dump()) for entry in entries)
 
 
 _STEPS: Mapping[str, Callable[[Work, Mapping[str, Any]], Results]] = {

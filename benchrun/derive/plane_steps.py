@@ -20,7 +20,7 @@ def calibrate_step(work: Work, values: Values) -> Results:
     """Calibrate `plane` from the readings `standards` and `power`: a table with residuals, and the calibration."""
     plane, standards = values["plane"], work.points(values["standards"])
     power = work.points(values["power"]) if values.get("power") else None
-    circumstances = work.circumstances(power or standards, plane, values["valid_for"])
+    circumstances = work.circumstances(power or standards, plane, values["valid_for_s"])
     facts = work.facts(plane)
     calibration, residuals = calibrate(values["name"], standards, power, work.definitions, facts, circumstances)
     told = ", ".join(f"{name} {rms:.4f}" for name, rms in calibration.residuals.items())
@@ -38,7 +38,7 @@ def calibrate_step(work: Work, values: Values) -> Results:
 def level_step(work: Work, values: Values) -> Results:
     """Level `signal` at `plane` from `readings`: a table of powers and chain gains, and the levelling itself."""
     points = work.points(values["readings"])
-    circumstances = work.circumstances(points, values["plane"], values["valid_for"])
+    circumstances = work.circumstances(points, values["plane"], values["valid_for_s"])
     levelling = level(values["name"], values["signal"], values["plane"], points, circumstances)
     power = levelling.power_dbm.ravel()
     set_dbm = np.repeat(levelling.level_dbm, levelling.frequency_hz.size)

@@ -1,4 +1,4 @@
-"""One-port correction against the bare numpy expression and against scikit-rf on a list of networks; ratios in one run."""
+"""One-port correction against bare numpy and against scikit-rf on a list of networks; ratios in one run."""
 
 from __future__ import annotations
 

@@ -19,11 +19,11 @@ from tests.derive.virtual_bench import DRIVES_DBM, HOT_GRID_HZ, PROVENANCE, STAN
 WEEK_S = 7 * 86400.0
 CALIBRATE = Step(
     "calibrate",
-    {"name": "output-plane", "plane": "output", "standards": "standard", "power": "power", "valid_for": WEEK_S},
+    {"name": "output-plane", "plane": "output", "standards": "standard", "power": "power", "valid_for_s": WEEK_S},
 )
 LEVEL = Step(
     "level",
-    {"name": "drive", "signal": "pump", "plane": "input", "readings": "levelling", "valid_for": WEEK_S},
+    {"name": "drive", "signal": "pump", "plane": "input", "readings": "levelling", "valid_for_s": WEEK_S},
 )
 CORRECT = Step("correct", {"readings": "hot", "calibration": "output-plane"})
 HOT = [CORRECT, Step("hot-match", {"readings": "hot", "drive": "drive"})]
