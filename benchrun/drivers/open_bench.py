@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from contextlib import suppress
 from dataclasses import dataclass
@@ -17,7 +18,6 @@ from benchrun.drivers.registry import Registry
 from benchrun.errors import BenchError, FileProblemsError, IdentityError, InstrumentError, Problem
 from benchrun.quantities import show
 from benchrun.visa.dialect import Dialect
-from benchrun.visa.exchange import Exchange
 from benchrun.visa.session import Bus, Session
 
 #: Roles in the order in which instruments are prepared: what sends RF is switched off before anything else is said.
@@ -39,10 +39,10 @@ class OpenBench:
         self, bench: Bench, drivers: Mapping[str, Instrument], sessions: Mapping[str, Session], identities: Mapping[str, Identity]
     ) -> None:
         self._bench = bench
-        self._sessions = sessions
         self._identities = identities
         self._settables = bench.settables()
         self.instruments: Mapping[str, Instrument] = MappingProxyType(dict(drivers))
+        self.sessions: Mapping[str, Session] = MappingProxyType(dict(sessions))
 
     def signal(self, name: str) -> SignalSource | WaveReceiver:
         """Return the driver of the instrument that this signal comes from. Raises InstrumentError."""
@@ -68,23 +68,23 @@ class OpenBench:
         names = {bias.instrument for bias in self._bench.bias.values()}
         return {name: cast("DcSupply", self._driver(name)) for name in self._bench.instruments if name in names}
 
-    def settable(self, full_name: str) -> Settable:
+    def settable(self, target: str) -> Settable:
         """Return what can be set under a full name, with the range that the bench file allows. Raises InstrumentError."""
         try:
-            return self._settables[full_name]
+            return self._settables[target]
         except KeyError:
             known = ", ".join(self._settables)
-            raise InstrumentError(f"nothing on the bench is set by the name '{full_name}'; it has {known}") from None
+            raise InstrumentError(f"nothing on the bench is set by the name '{target}'; it has {known}") from None
 
-    def set(self, full_name: str, value: float) -> float:
-        """Set a quantity (SI, dBm) and return what stands. Raises BenchError; out of the bench's range nothing is sent."""
-        self._in_range(self.settable(full_name), value)
-        place = self._place(full_name)
+    def set(self, target: str, value: float) -> float:
+        """Set a quantity (SI, dBm) by full name and return what stands. Raises BenchError; out of the bench's range nothing is sent."""
+        self._in_range(self.settable(target), value)
+        place = self._place(target)
         return self._driver(place.instrument).set(place.quantity, value)
 
-    def read(self, full_name: str) -> float:
-        """Read a scalar (SI, dBm). Raises BenchError."""
-        place = self._place(full_name)
+    def read(self, target: str) -> float:
+        """Read a scalar (SI, dBm) by full name. Raises BenchError."""
+        place = self._place(target)
         return self._driver(place.instrument).read(place.quantity)
 
     def identities(self) -> Mapping[str, Identity]:
@@ -95,24 +95,16 @@ class OpenBench:
         """Bring every instrument to a known state, RF off first. Raises BenchError."""
         order = sorted(self.instruments, key=lambda name: PREPARED.index(self._bench.role(name)))
         for name in order:
-            self._sessions[name].accept_restart()
+            self.sessions[name].accept_restart()
             self.instruments[name].prepare()
-
-    def reopen(self, instrument: str) -> None:
-        """Open the link to one instrument anew. Raises BenchError."""
-        self._sessions[instrument].reopen()
 
     def restarted(self) -> tuple[str, ...]:
         """Names of instruments that were switched off and on while the bench was open: prepare() comes before any setting."""
-        return tuple(name for name, session in self._sessions.items() if session.restarted)
-
-    def exchanges(self) -> Mapping[str, tuple[Exchange, ...]]:
-        """Return the last exchanges with each instrument, oldest first, for the archive."""
-        return {name: tuple(session.exchanges) for name, session in self._sessions.items()}
+        return tuple(name for name, session in self.sessions.items() if session.restarted)
 
     def close(self) -> None:
         """Give the front panels back and close the links, whatever fails on the way. Nothing is switched on or off."""
-        for session in self._sessions.values():
+        for session in self.sessions.values():
             with suppress(BenchError):
                 if session.has("panel-lock") and not session.suspect:
                     session.confirm("panel-lock", on=False)
@@ -140,6 +132,8 @@ class OpenBench:
 
     @staticmethod
     def _in_range(settable: Settable, value: float) -> None:
+        if not math.isfinite(value):
+            raise InstrumentError(f"{settable.name} = {value} is not a number that can be set. Nothing was sent")
         low = settable.low if settable.low is not None else value
         high = settable.high if settable.high is not None else value
         if not low <= value <= high:
@@ -173,15 +167,6 @@ def open_bench(
         for name, session in sessions.items()
     }
     return OpenBench(bench, drivers, sessions, identities)
-
-
-def check_bench(bench: Bench, registry: Registry) -> list[Problem]:
-    """Return what is wrong between a bench file, the installed drivers and the dialect files; nothing is opened."""
-    try:
-        _dialects(bench, registry)
-    except FileProblemsError as error:
-        return list(error.problems)
-    return []
 
 
 def settings_of(bench: Bench, name: str) -> InstrumentSettings:

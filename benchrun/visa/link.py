@@ -23,7 +23,17 @@ from benchrun.contract.roles import Call, Identity, Value
 from benchrun.errors import BenchError, InstrumentError, LinkError, NoAnswerError, QuantityError, ReplyError
 from benchrun.visa import levels, scpi
 from benchrun.visa.dialect import Dialect
-from benchrun.visa.exchange import ERROR_QUERY, Exchange, Use, compose, join, read_values, take_apart, uses
+from benchrun.visa.exchange import (
+    ERROR_QUERY,
+    Answer,
+    Exchange,
+    Use,
+    compose,
+    join,
+    read_values,
+    take_apart,
+    uses,
+)
 
 DEADLINE_S = 2.0
 #: Asks for the standard events, and the bit that says that the instrument was switched on (IEEE 488.2 11.5.1.1.2).
@@ -170,9 +180,7 @@ class Session:
         with self._lock:
             self._fit_to_set([Use(found, values)])
             payload, text = self._say_block(message, 8 * count, deadline_s or found.deadline_s or DEADLINE_S)
-            answer = self._understood(message, lambda: take_apart(text))
-            if answer.error.number:
-                raise self._complaint(self._rest_of_queue(answer.error), message)
+            self._answer(message, text)
             if payload is None:
                 raise self._garbled(message, ReplyError(f"a block was expected, {text[:40]!r} came"))
             return self._understood(message, lambda: scpi.parse_floats(payload, count))
@@ -221,10 +229,10 @@ class Session:
         with self._lock:
             try:
                 first = take_apart(self._say(message, deadline_s)).error
-                entries = [first, *self._drain()] if first.number else []
             except (InstrumentError, NoAnswerError, ReplyError):
+                self.suspect = True
                 return False
-            return not any(-200 < one.number <= -100 for one in entries)
+            return not any(-200 < one.number <= -100 for one in [first, *(self._drain() if first.number else ())])
 
     def reopen(self) -> None:
         """Open the link anew, clear it, and forget what was believed of the instrument. Raises LinkError, ReplyError."""
@@ -297,9 +305,7 @@ class Session:
         deadline_s = deadline_s or max(use.entry.deadline_s or DEADLINE_S for use in (*sets, *asks))
         with self._lock:
             text = self._say(message, deadline_s)
-            answer = self._understood(message, lambda: take_apart(text))
-            if answer.error.number:
-                raise self._complaint(self._rest_of_queue(answer.error), message)
+            answer = self._answer(message, text)
             return self._understood(message, lambda: read_values(answer, bool(sets), asks))
 
     def _unsent(self, compose_message: Callable[[], str]) -> str:
@@ -343,8 +349,8 @@ class Session:
         self.suspect = True
         self.exchanges.append(Exchange(started_ns, message, "", str(error) or type(error).__name__))
 
-    def _explained(self, error: NoAnswerError, message: str) -> BenchError:
-        """Return why there was no answer, where the error queue says so: a query that was not understood answers nothing.
+    def _explained(self, error: BenchError, message: str) -> BenchError:
+        """Return why there was no whole answer, where the error queue says so: a command error ends a message there and then.
 
         Query errors (-499 to -400) tell only of the answer that did not come, or of this question about it.
         """
@@ -366,6 +372,16 @@ class Session:
         return entries
 
     # Errors
+
+    def _answer(self, message: str, text: str) -> Answer:
+        """Take an answer apart; raise InstrumentError for what the error queue holds, ReplyError where it makes no sense."""
+        try:
+            answer = take_apart(text)
+        except ReplyError as error:
+            raise self._explained(self._garbled(message, error), message) from error
+        if answer.error.number:
+            raise self._complaint(self._rest_of_queue(answer.error), message)
+        return answer
 
     def _understood(self, message: str, read: Callable[[], T]) -> T:
         """Return what `read` makes of an answer; an answer that makes no sense leaves the link suspect."""

@@ -8,7 +8,7 @@ from typing import ClassVar
 
 from benchrun.contract.kinds import Readable, Settable
 from benchrun.contract.roles import Call, Identity, InstrumentSettings, Link
-from benchrun.errors import BenchError, InstrumentError
+from benchrun.errors import InstrumentError
 
 #: FREQuency bit of STATus:QUEStionable (SCPI-1999 volume 1 section 9.3, from memory): not locked to the reference.
 UNLOCKED = 1 << 5
@@ -54,10 +54,10 @@ class OverLink:
         return float(self.link.ask(quantity))
 
     def _switch(self, on: bool, **values: float) -> None:
-        """Switch an output, read back. Off is tried twice: an old error entry or a broken link is no reason to leave it on."""
+        """Switch an output, read back. Off is tried twice: an entry left in the error queue is no reason to leave it on."""
         try:
             self.link.confirm("output", on=on, **values)
-        except BenchError:
+        except InstrumentError:
             if on:
                 raise
             self.link.confirm("output", on=on, **values)

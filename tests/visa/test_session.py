@@ -252,6 +252,12 @@ class TestComplaints:
             bench.session.ask("unheard")
         assert bench.session.ask("output") is False
 
+    def test_a_message_that_ended_half_way_is_explained(self, bench: Bench) -> None:
+        """A command error in the middle: what was asked before it is answered, what comes after it is not."""
+        with pytest.raises(InstrumentError, match=r"-113.*SENS:NOTH.*after 'INIT:IMM;\*OPC\?;:SENS:NOTH\?"):
+            bench.session.exchange([("sweep", {})], [("unheard", {})])
+        assert bench.session.ask("output") is False
+
     def test_an_error_in_place_of_a_block(self, bench: Bench) -> None:
         del bench.instrument.answers["SENS:DATA?"]
         bench.instrument.answers["SENS:DATA?"] = b""
