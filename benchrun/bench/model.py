@@ -87,6 +87,7 @@ class Rehearsal(Strict):
     """How a rehearsal assumes the world to be: its name, and imperfections that are switched off."""
 
     world: Name = "R1"
+    kit: str | None = Field(None, description="kit file that the simulated operator has at hand", examples=["my-kit.kit.yaml"])
     thermal_memory: bool = True
     noise: bool = True
     drift: bool = True

@@ -34,7 +34,7 @@ def document(bench: Bench, kit: Kit | None = None) -> dict[str, Any]:
 
 
 def _rehearsal(bench: Bench) -> dict[str, Any]:
-    return bench.rehearsal.model_dump(exclude_unset=True) if bench.rehearsal else {}
+    return bench.rehearsal.model_dump(exclude_unset=True, exclude={"kit"}) if bench.rehearsal else {}
 
 
 def _as_written(model: BaseModel) -> dict[str, Any]:

@@ -1,1 +1,39 @@
-"""The flow room."""
+"""The whole way in order: inputs, planning, calibrations, acquisition, derivation, files. Read this room first.
+
+    inputs.py      recipe + bench + kit, read together; all mistakes at once
+    planning.py    -> Schedule, and the level check
+    known.py       calibrations and levellings in a folder of runs: which there are, which fits
+    measure.py     -> readings in an archive, committed before anything else; then produce.py
+    produce.py     archive -> results -> files, from the archive alone
+    rehearse.py    the same on simulated instruments;   run.py on real ones
+    simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way
+"""
+
+from benchrun.flow.check import check_files
+from benchrun.flow.inventory import drivers, identify, schema
+from benchrun.flow.known import calibrations
+from benchrun.flow.planning import plan_levels
+from benchrun.flow.produce import derive_again
+from benchrun.flow.rehearse import rehearse
+from benchrun.flow.result import LevelReport, RunResult
+from benchrun.flow.run import run
+from benchrun.flow.show import export, show
+from benchrun.flow.simulate import ServedBench, simulate
+
+__all__ = [
+    "LevelReport",
+    "RunResult",
+    "ServedBench",
+    "calibrations",
+    "check_files",
+    "derive_again",
+    "drivers",
+    "export",
+    "identify",
+    "plan_levels",
+    "rehearse",
+    "run",
+    "schema",
+    "show",
+    "simulate",
+]

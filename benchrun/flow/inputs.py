@@ -1,0 +1,84 @@
+"""What a run starts from: recipe, bench and kit, read together so that all of their mistakes come at once."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from benchrun.bench import Bench, Kit, load_bench, load_kit
+from benchrun.drivers.dialects import dialect_for
+from benchrun.drivers.registry import Registry, load_registry
+from benchrun.errors import FileProblemsError, Problem
+from benchrun.recipe import Recipe, load_recipe, recipe_source
+
+
+@dataclass(frozen=True, slots=True)
+class Inputs:
+    """A checked recipe with its bench, its kit where it names one, and the installed drivers and steps."""
+
+    recipe: Recipe
+    bench: Bench
+    kit: Kit | None
+    registry: Registry
+    path: Path
+
+    @property
+    def folder(self) -> Path:
+        """Folder of the recipe file: other files that it names stand there."""
+        return self.path.parent
+
+    def bench_problem(self, message: str) -> Problem:
+        """Return a problem of the bench file as a whole."""
+        return Problem(str(self.bench.path), 0, 0, message)
+
+    def files(self) -> dict[str, str]:
+        """Return the text of every file that readings and derivation depend on, by the name it is restored under."""
+        found = {self.path.name: self.recipe.text, self.bench.path.name: self.bench.text, **self.bench.files}
+        for name, instrument in self.bench.instruments.items():
+            path = self.bench.dialect_path(name)
+            if path is not None and instrument.dialect is not None:
+                found[instrument.dialect] = path.read_text("utf-8")
+        if self.kit is not None:
+            found |= {self.kit.path.name: self.kit.text, **self.kit.files}
+        return found
+
+
+def load_inputs(recipe_path: Path, bench_path: Path | None = None, kit_path: Path | None = None) -> Inputs:
+    """Read a recipe and everything it names; `bench_path` and `kit_path` stand in for the files that it names.
+
+    Raises FileProblemsError with the mistakes of all files.
+    """
+    registry = load_registry()
+    outer, _, problems = recipe_source(recipe_path)
+    bench: Bench | None = None
+    kit: Kit | None = None
+    if outer is not None:
+        bench, bench_problems = load_bench(bench_path or recipe_path.parent / outer.bench, roles(registry))
+        problems += bench_problems + _dialect_problems(bench, registry)
+        if outer.kit is not None:
+            kit, kit_problems = load_kit(kit_path or recipe_path.parent / outer.kit)
+            problems += kit_problems
+    recipe, recipe_problems = load_recipe(recipe_path, bench, registry.steps)
+    problems += recipe_problems
+    if problems or recipe is None or bench is None:
+        raise FileProblemsError(problems)
+    return Inputs(recipe, bench, kit, registry, recipe_path)
+
+
+def roles(registry: Registry) -> Mapping[str, str]:
+    """Return the role of each installed driver."""
+    return {name: spec.role for name, spec in registry.drivers.items()}
+
+
+def _dialect_problems(bench: Bench | None, registry: Registry) -> list[Problem]:
+    """Compile every instrument's dialect, so that what a driver lacks is known before anything is opened."""
+    problems: list[Problem] = []
+    for name, instrument in bench.instruments.items() if bench else ():
+        spec = registry.drivers.get(instrument.driver)
+        if spec is not None and bench is not None:
+            try:
+                dialect_for(spec, bench.dialect_path(name))
+            except FileProblemsError as error:
+                problems += error.problems
+    return problems

@@ -1,0 +1,125 @@
+"""From an archive to results and files: derive and save, from the archive alone."""
+
+from __future__ import annotations
+
+import tempfile
+from collections.abc import Mapping
+from dataclasses import dataclass
+from importlib.metadata import version
+from pathlib import Path
+
+from benchrun.archive import ArchiveReader, ArchiveWriter, Meta, open_archive
+from benchrun.derive.calibration import Calibration
+from benchrun.derive.levelling import Levelling
+from benchrun.derive.pipeline import derive, steps_of
+from benchrun.derive.results import Provenance, Results
+from benchrun.errors import CalibrationError, FolderError
+from benchrun.flow.facts import definitions_of, facts_of
+from benchrun.flow.folders import require_run
+from benchrun.flow.inputs import Inputs, load_inputs
+from benchrun.flow.known import made_in
+from benchrun.flow.result import RunResult
+from benchrun.recipe.model import Entry
+from benchrun.save import save_results
+
+USED = {"calibration": "used-calibration", "levelling": "used-levelling"}
+
+
+@dataclass(frozen=True, slots=True)
+class Produced:
+    """Results, and the folder that their files are in."""
+
+    results: Results
+    folder: Path
+
+
+def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelling]) -> Produced:
+    """Derive and save the results of a run with these calibrations; documents that it makes go into its archive.
+
+    Raises CalibrationError, DataSetError, FolderError, DiskError.
+    """
+    with open_archive(run) as archive:
+        provenance = provenance_of(archive.meta, archive.digest())
+        readings = {name: list(archive.readings(name)) for name in archive.names}
+    results = derive(
+        steps_of(inputs.recipe.derive),
+        readings,
+        facts_of(inputs.bench, inputs.kit),
+        known,
+        definitions_of(inputs.kit),
+        provenance,
+        inputs.kit.title if inputs.kit is not None else "",
+    )
+    folder = save_results(results, run, _kinds(inputs.recipe.save))
+    with ArchiveWriter.append(run) as writer:
+        for (kind, name), document in results.documents.items():
+            writer.product(kind, name, document)
+        for name, one in known.items():
+            kind = "calibration" if isinstance(one, Calibration) else "levelling"
+            writer.product(USED[kind], name, {"result": folder.name, "document": one.to_document()})
+    return Produced(results, folder)
+
+
+def _kinds(entries: tuple[Entry, ...]) -> list[str]:
+    return [entry.kind for entry in entries]
+
+
+def provenance_of(meta: Meta, digest: str) -> Provenance:
+    """Return where results come from, as every file and document of theirs says it."""
+    identities = {
+        name: " ".join(str(who.get(field, "")) for field in ("maker", "model", "serial", "firmware")).strip()
+        for name, who in meta.identities.items()
+    }
+    return Provenance(
+        origin=meta.origin,
+        version=version("benchrun"),
+        title=meta.title,
+        part=str(meta.device.get("part", "")),
+        serial=str(meta.device.get("serial", "")),
+        readings_hash=digest,
+        schedule_hash=meta.schedule_hash,
+        identities=identities,
+    )
+
+
+def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
+    """Derive and save a run again, into a new numbered result, from its archive alone.
+
+    `calibrations` names runs to take calibrations from; the others are those that the run was derived with before.
+    """
+    from benchrun.flow.summary import rows_of
+
+    folder = require_run(run)
+    with open_archive(folder) as archive:
+        if archive.count == 0:
+            raise FolderError(f"{folder}: there is no reading in this run, so there is nothing to derive.")
+        meta, known = archive.meta, _used(archive)
+    for name, other in calibrations.items():
+        found = [made for made in made_in(require_run(other)) if made.name == name]
+        if not found:
+            raise CalibrationError(f"{other}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is.")
+        known[name] = found[-1].known
+    with tempfile.TemporaryDirectory() as place:
+        produced = produce(restored(meta, Path(place)), folder, known)
+    return RunResult(produced.folder, meta.state, 0, rows_of(produced.results), produced.results.notes)
+
+
+def _used(archive: ArchiveReader) -> dict[str, Calibration | Levelling]:
+    known: dict[str, Calibration | Levelling] = {}
+    for product in archive.products(USED["calibration"]):
+        known[product.name] = Calibration.from_document(product.document["document"])
+    for product in archive.products(USED["levelling"]):
+        known[product.name] = Levelling.from_document(product.document["document"])
+    return known
+
+
+def restored(meta: Meta, place: Path) -> Inputs:
+    """Write the files of a run into `place` and read them again, so that nothing but the archive is needed."""
+    for name, text in meta.files.items():
+        path = place / name
+        if not path.resolve().is_relative_to(place.resolve()):
+            raise FolderError(f"the archive names a file {name!r} outside of its folder; it is damaged or not ours.")
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_text(text, encoding="utf-8", newline="")
+    kit = next((place / name for name in meta.files if name.endswith(".kit.yaml")), None)
+    return load_inputs(place / meta.recipe, place / meta.bench, kit)

@@ -1,0 +1,119 @@
+"""Rehearse: the whole way of a recipe on simulated instruments, in virtual time."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from importlib.metadata import entry_points
+from pathlib import Path
+from typing import cast
+
+from benchrun.acquire.progress import Progress
+from benchrun.acquire.prompts import RehearsalPrompter
+from benchrun.archive import open_archive
+from benchrun.contract.rehearsal import ENTRY_POINT_GROUP, Rehearsal, RehearsalPlugin
+from benchrun.errors import CalibrationError, FileProblemsError, LinkError, PluginError
+from benchrun.flow.inputs import Inputs, load_inputs
+from benchrun.flow.known import Made, pick
+from benchrun.flow.measure import Setting, find_calibrations, measure, prepare
+from benchrun.flow.result import RunResult
+
+#: A recipe that uses calibrations begins this long after the last of them ended, in bench time.
+PAUSE_NS = 600_000_000_000
+NOTE = "Simulated instruments, virtual time. Nothing real is touched."
+
+
+def rehearsal_plugin() -> RehearsalPlugin:
+    """Return the installed simulated bench. Raises PluginError where there is none, or where it cannot be loaded."""
+    found = list(entry_points(group=ENTRY_POINT_GROUP))
+    if not found:
+        raise PluginError("no simulated bench is installed: nothing offers the entry point group benchrun.rehearsal. Install benchrun again.")
+    try:
+        return cast("RehearsalPlugin", found[0].load())
+    except Exception as error:
+        raise PluginError(f"the simulated bench '{found[0].name}' ({found[0].value}) cannot be loaded: {error}.") from error
+
+
+def origin_of(seed: int) -> str:
+    """Return the origin of what a rehearsal with this seed makes."""
+    return f"simulated, seed {seed}"
+
+
+def rehearse(
+    recipe: Path,
+    to: Path,
+    *,
+    bench: Path | None = None,
+    seed: int = 1,
+    real_time: bool = False,
+    calibrations: Mapping[str, Path] | None = None,
+    listener: Progress,
+) -> RunResult:
+    """Rehearse a recipe, and first what makes the calibrations that it uses where they are absent. Raises BenchrunError."""
+    inputs = load_inputs(recipe, bench)
+    _make_absent(inputs, to, bench, seed, real_time, calibrations or {}, listener)
+    made = find_calibrations(inputs, to, origin_of(seed), calibrations or {})
+    schedule = prepare(inputs, made)
+    with rehearsal_of(inputs, seed, real_time) as world:
+        world.clock.align(_start_ns(made))
+        setting = Setting(
+            runs=to,
+            clock=world.clock,
+            visa=world.visa_library if world.visa_library is not None else inputs.bench.visa.backend,
+            addresses=world.addresses,
+            origin=origin_of(seed),
+            seed=seed,
+            listener=listener,
+            prompter=RehearsalPrompter(world.connect),
+        )
+        return measure(inputs, schedule, made, setting)
+
+
+def _make_absent(
+    inputs: Inputs, to: Path, bench: Path | None, seed: int, real_time: bool, chosen: Mapping[str, Path], listener: Progress
+) -> None:
+    """Rehearse the recipe of each calibration that no run in the folder holds."""
+    for name, file in inputs.recipe.calibrations.items():
+        if name in chosen:
+            continue
+        try:
+            pick(name, to, inputs.bench, origin_of(seed), None, file)
+        except CalibrationError:
+            path = inputs.folder / file
+            listener.message(f"Calibration '{name}' is absent: {path} is rehearsed first.")
+            result = rehearse(path, to, bench=bench, seed=seed, real_time=real_time, listener=listener)
+            listener.message(str(result.folder))
+
+
+@contextmanager
+def rehearsal_of(inputs: Inputs, seed: int, real_time: bool) -> Iterator[Rehearsal]:
+    """Open the simulated bench: in this process, or the served one that the bench file points at."""
+    channel = inputs.bench.rehearsal_channel
+    try:
+        world = _open(rehearsal_plugin(), inputs, channel, seed, real_time)
+    except OSError as error:
+        raise LinkError(f"rehearsal channel {channel}: nothing serves a simulated bench there ({error}). Start `benchrun simulate` again.") from error
+    except ValueError as error:
+        raise FileProblemsError([inputs.bench_problem(f"the simulated bench cannot be built of this bench file: {error}.")]) from error
+    try:
+        yield world
+    finally:
+        world.close()
+
+
+def _open(plugin: RehearsalPlugin, inputs: Inputs, channel: str | None, seed: int, real_time: bool) -> Rehearsal:
+    if channel is not None:
+        return plugin.open_channel(channel, real_time=real_time)
+    return plugin.open_in_process(inputs.bench.wiring(inputs.kit), seed=seed, real_time=real_time)
+
+
+def _start_ns(made: list[Made]) -> int:
+    """Return when bench time begins: some minutes after the last calibration ended, so that drift since then is real."""
+    ends = [_end_ns(one) for one in made]
+    return max(ends) + PAUSE_NS if ends else 0
+
+
+def _end_ns(made: Made) -> int:
+    with open_archive(made.folder) as archive:
+        return max((reading.ended_ns for reading in archive.readings()), default=0)
+
