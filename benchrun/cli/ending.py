@@ -13,7 +13,7 @@ from pathlib import Path
 import click
 
 from benchrun.cli.application import application
-from benchrun.cli.streams import OutputError, guard_standard_streams, say, talk
+from benchrun.cli.streams import OutputError, guard_standard_streams, say, say_path, talk
 from benchrun.errors import BenchrunError, DiskError, FileProblemsError, InputError, Problem, StoppedError, UnsafeError
 
 DEBUG_VARIABLE = "BENCHRUN_DEBUG"
@@ -52,7 +52,15 @@ def report(error: BaseException) -> int:
             code = error.exit_code
         case _:  # whatever is none of these is our own defect
             report_defect(error)
+    if (folder := _run_folder(error)) is not None:
+        say_path(folder)
     return code
+
+
+def _run_folder(error: BaseException) -> Path | None:
+    """Return the run folder in which everything is that was committed before the error; None where there is none."""
+    folder = getattr(error, "folder", None)
+    return folder if isinstance(folder, Path) else None
 
 
 def report_problems(problems: Sequence[Problem], line: Callable[[str], None] = say) -> None:
@@ -70,7 +78,7 @@ def report_defect(error: BaseException) -> None:
         print(details, file=sys.stderr)
         talk(f"A defect of benchrun itself: {name}. Please report it with the lines above.")
         return
-    place = _keep(details, getattr(error, "run_folder", None))
+    place = _keep(details, _run_folder(error))
     where = f"the file {place}" if place else f"what {DEBUG_VARIABLE}=1 shows"
     talk(f"A defect of benchrun itself: {name}. Please report it together with {where}.")
 

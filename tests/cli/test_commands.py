@@ -9,7 +9,7 @@ from types import SimpleNamespace
 import numpy as np
 import pytest
 
-from benchrun.errors import FileProblemsError, LevelError, Problem, UnsafeError
+from benchrun.errors import FileProblemsError, LevelError, NoAnswerError, Problem, UnsafeError
 
 RUN = Path("runs/2026-12-01_0042_hot-output-match")
 
@@ -136,6 +136,19 @@ def test_a_stopped_run_says_why_and_still_ends_with_the_run_folder(flow, benchru
     assert ended.code == 4
     assert ended.out.splitlines() == [str(RUN)]
     assert "drain current 1.31 A above 1.20 A" in ended.err
+
+
+def test_a_run_that_breaks_off_still_ends_with_the_run_folder(flow, benchrun_command):
+    error = NoAnswerError("22:41:07  pump did not answer SOUR:POW? within 2 s (third time).")
+    error.folder = RUN
+
+    def run(*_, **__):
+        raise error
+
+    flow.run = run
+    ended = benchrun_command("run", "hot.recipe.yaml", "--to", "runs")
+    assert (ended.code, ended.out) == (5, f"{RUN}\n")
+    assert "pump did not answer" in ended.err
 
 
 def test_run_without_a_terminal_has_nobody_to_ask(flow, benchrun_command):

@@ -65,9 +65,11 @@ def test_a_defect_is_one_line_and_its_traceback_is_kept(flow, benchrun_command, 
 def test_a_defect_in_a_run_is_kept_in_the_run_folder(flow, benchrun_command, monkeypatch, tmp_path):
     monkeypatch.delenv("BENCHRUN_DEBUG", raising=False)
     error = RuntimeError("x")
-    error.run_folder = tmp_path
+    error.folder = tmp_path
     flow.show = fail_with(error)
-    assert str(tmp_path) in benchrun_command("show", "runs/x").err
+    ended = benchrun_command("show", "runs/x")
+    assert str(tmp_path) in ended.err
+    assert ended.out == f"{tmp_path}\n"
     assert len(list(tmp_path.iterdir())) == 1
 
 
