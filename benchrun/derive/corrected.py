@@ -14,6 +14,7 @@ from benchrun.derive.facts import BenchFacts
 from benchrun.derive.linearity import image_bound, restore_pair, restore_weak
 from benchrun.derive.one_port import ErrorTerms
 from benchrun.derive.points import Points
+from benchrun.errors import DataSetError
 
 PROBE, PUMP, IMAGE = "probe", "pump", "image"
 
@@ -47,6 +48,13 @@ class Corrected:
     a: Mapping[str, ComplexArray]
     leak: Mapping[str, FloatArray]
     flags: tuple[tuple[str, ...], ...]
+
+    def reflection(self) -> ComplexArray:
+        """Return b / a (N,) at the probe. Raises DataSetError where no wave went into the device."""
+        dark = self.a[PROBE] == 0.0
+        if np.any(dark):
+            raise DataSetError(f"{self.points.place(int(np.argmax(dark)))}: no probe wave was read. Was the probe on?")
+        return np.asarray(self.b[PROBE] / self.a[PROBE])
 
 
 def restore(points: Points, wave: str, facts: BenchFacts) -> Linear:

@@ -41,15 +41,20 @@ def two_sidebands(
     >>> complex(np.round(s, 12)[0]), complex(np.round(t, 12)[0])
     ((0.3+0j), 0.1j)
     """
-    probe, image = np.abs(a_upper) ** 2, np.abs(a_lower) ** 2
-    det = probe - image
-    if np.any(~(np.abs(det) > LEAST_DIFFERENCE * np.maximum(probe, image))):
+    det = np.abs(a_upper) ** 2 - np.abs(a_lower) ** 2
+    if not np.all(told_apart(a_upper, a_lower)):
         raise DataSetError(
             "the image is as strong as the probe, so the two sidebands cannot be told apart. Was the probe on, and is "
             "the device's output loaded by the bench?"
         )
     s22 = (b_upper * np.conj(a_upper) - b_lower * np.conj(a_lower)) / det
     return np.asarray(s22), np.asarray((a_upper * b_lower - a_lower * b_upper) / det)
+
+
+def told_apart(a_upper: ComplexArray, a_lower: ComplexArray) -> npt.NDArray[np.bool_]:
+    """Return where (...) probe and image differ enough in power for two_sidebands (LEAST_DIFFERENCE)."""
+    probe, image = np.abs(a_upper) ** 2, np.abs(a_lower) ** 2
+    return np.asarray(np.abs(probe - image) > LEAST_DIFFERENCE * np.maximum(probe, image))
 
 
 def one_sideband(

@@ -9,10 +9,11 @@ import numpy as np
 from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.derive.corrected import IMAGE, PROBE, PUMP, Corrected
 from benchrun.derive.facts import BenchFacts
-from benchrun.derive.hot import distance_bound, one_sideband, referred_to_pump, two_sidebands
+from benchrun.derive.hot import distance_bound, one_sideband, referred_to_pump, told_apart, two_sidebands
 from benchrun.derive.optimum_load import has_optimum, optimum_load
 from benchrun.derive.points import condition_keys
 from benchrun.derive.results import Column, Table
+from benchrun.errors import DataSetError
 
 PHASE_REFERENCE = "twice the phase of b2 at the pump (the pump's wave out of the device, at the output plane)"
 
@@ -56,6 +57,7 @@ def hot_match(corrected: Corrected, facts: BenchFacts) -> HotMatch:
         return HotMatch(
             s, distance + bias + corrected.leak[PROBE], None, None, False, output_w, output_w - into_w, None, None
         )
+    _require_told_apart(corrected)
     s, t = two_sidebands(a[PROBE], b[PROBE], a[IMAGE], b[IMAGE])
     bounds = tuple(distance + left for left in _left_by_leaks(corrected, t))
     if not points.coherent:
@@ -116,6 +118,15 @@ def _conversion_columns(match: HotMatch) -> dict[str, Column]:
         columns["t22_phase_from_twice_b2_pump_deg"] = np.angle(match.conversion, deg=True)
     columns["t22_bound_ratio"] = match.conversion_bound
     return columns
+
+
+def _require_told_apart(corrected: Corrected) -> None:
+    unclear = ~told_apart(corrected.a[PROBE], corrected.a[IMAGE])
+    if np.any(unclear):
+        raise DataSetError(
+            f"{corrected.points.place(int(np.argmax(unclear)))}: the image is as strong as the probe, so the two "
+            "sidebands cannot be told apart. Was the probe on, and is the device's output loaded by the bench?"
+        )
 
 
 def _left_by_leaks(corrected: Corrected, t: ComplexArray) -> tuple[FloatArray, FloatArray]:

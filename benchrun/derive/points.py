@@ -65,6 +65,12 @@ class Points:
             raise DataSetError(f"readings '{self.name}' have no {key} at some points, and it is needed at all of them.")
         return numbers
 
+    def place(self, index: int) -> str:
+        """Return where point `index` was taken, for a message: "readings 'hot' at 2.3 GHz, drive_dbm = 14"."""
+        keys = condition_keys(self)
+        told = [show(self.frequency_hz[index], "frequency", 7), *(f"{k} = {self.conditions[k][index]}" for k in keys)]
+        return f"readings '{self.name}' at {', '.join(told)}"
+
     def where(self, chosen: npt.NDArray[np.bool_]) -> Points:
         """Return the points at which `chosen` (N,) is true."""
         return replace(
@@ -111,21 +117,15 @@ def stack(readings: Iterable[Reading], name: str) -> Points:
     """
     final = {r.index: r for r in sorted(readings, key=lambda r: r.attempt) if r.name == name}
     chosen = [final[k] for k in sorted(final)]
-    if not chosen:
-        raise DataSetError(f"no reading called '{name}' was committed: there is nothing to derive from.")
-    first = chosen[0]
-    if any((r.tones, r.waves) != (first.tones, first.waves) for r in chosen):
-        raise DataSetError(
-            f"readings '{name}' were not all taken with the same tones and waves: give them different names."
-        )
+    _require_alike(chosen, name)
     counts = [max(len(r.frequencies_hz), 1) for r in chosen]
     points = Points(
         name=name,
         frequency_hz=_frequencies(chosen),
-        tones=first.tones,
+        tones=chosen[0].tones,
         offsets_hz=np.repeat(np.array([r.offsets_hz for r in chosen], dtype=np.float64).T, counts, axis=1),
-        waves=first.waves,
-        data=_waves(chosen),
+        waves=chosen[0].waves,
+        data=np.ascontiguousarray(np.concatenate([_padded(r) for r in chosen], axis=-1)),
         coherent=all(r.coherent for r in chosen),
         conditions=_columns([r.conditions for r in chosen], counts),
         scalars=_numbers([r.scalars for r in chosen], counts),
@@ -133,12 +133,19 @@ def stack(readings: Iterable[Reading], name: str) -> Points:
         started_utc=min(r.started_utc for r in chosen),
         ended_utc=max(r.started_utc for r in chosen),
     )
-    if not np.all(np.isfinite(points.data)):
-        bad = points.frequency_hz[~np.all(np.isfinite(points.data), axis=(0, 1))][0]
-        raise DataSetError(
-            f"readings '{name}' hold a wave that is no number at {show(bad, 'frequency', 7)}: read that point again."
-        )
+    unsound = ~np.all(np.isfinite(points.data), axis=(0, 1))
+    if np.any(unsound):
+        raise DataSetError(f"{points.place(int(np.argmax(unsound)))}: a wave is no number. Read that point again.")
     return points
+
+
+def _require_alike(readings: list[Reading], name: str) -> None:
+    if not readings:
+        raise DataSetError(f"no reading called '{name}' was committed: there is nothing to derive from.")
+    if len({(r.tones, r.waves) for r in readings}) > 1:
+        raise DataSetError(
+            f"readings '{name}' were not all taken with the same tones and waves: give them different names."
+        )
 
 
 def _frequencies(readings: list[Reading]) -> FloatArray:
@@ -153,10 +160,6 @@ def _frequency_of(reading: Reading) -> float:
     if not isinstance(value, float | int):
         raise DataSetError(f"reading {reading.index} '{reading.name}' was taken at no known frequency.")
     return float(value)
-
-
-def _waves(readings: list[Reading]) -> ComplexArray:
-    return np.ascontiguousarray(np.concatenate([_padded(r) for r in readings], axis=-1))
 
 
 def _padded(reading: Reading) -> ComplexArray:

@@ -9,15 +9,16 @@ import numpy as np
 
 from benchrun.derive import comments
 from benchrun.derive.calibration import Calibration
-from benchrun.derive.corrected import PROBE, Corrected, correct
+from benchrun.derive.corrected import Corrected, correct
 from benchrun.derive.hot_match import HotMatch, flag_column, hot_flags, hot_match, hot_table, polar
 from benchrun.derive.levelling import Levelling
 from benchrun.derive.points import Points, condition_keys
 from benchrun.derive.results import Column, OnePortData, Results, Table
-from benchrun.derive.work import Chosen, Work, counted, flag_notes, groups
+from benchrun.derive.work import AMBIENT, Chosen, Work, counted, flag_notes, groups
 from benchrun.errors import CalibrationError
 
 Values = Mapping[str, Any]
+WORTH_SAYING_K = 3.0
 
 
 def correct_step(work: Work, values: Values) -> Results:
@@ -47,7 +48,7 @@ def hot_match_step(work: Work, values: Values) -> Results:
         for chosen, conditions in groups(corrected.points)
         for network in _hot_networks(work, corrected, match, chosen, conditions)
     ]
-    notes = (_drive_note(work, values.get("drive"), corrected.points), *flag_notes(flags))
+    notes = (_drive_note(work, values.get("drive"), corrected.points), *_drift_notes(corrected), *flag_notes(flags))
     return Results((hot_table(corrected, match),), tuple(networks), {}, notes, counted(flags))
 
 
@@ -55,7 +56,7 @@ def one_port_step(work: Work, values: Values) -> Results:
     """Derive the reflection of `readings` at the plane: one table, and one file for each swept condition."""
     corrected = work.of(values["readings"])
     points = corrected.points
-    reflection = np.asarray(corrected.b[PROBE] / corrected.a[PROBE])
+    reflection = corrected.reflection()
     columns: dict[str, Column] = {k: points.conditions[k] for k in condition_keys(points)}
     columns["frequency_hz"] = points.frequency_hz
     columns |= polar("output_reflection", reflection) | dict(points.scalars)
@@ -66,7 +67,8 @@ def one_port_step(work: Work, values: Values) -> Results:
         lines = _lines(work, corrected, what, comments.conditions_comment(conditions, points.where(chosen)))
         networks.append(work.network("S22", corrected, chosen, conditions, reflection, lines))
     table = Table("one-port", columns)
-    return Results((table,), tuple(networks), {}, flag_notes(corrected.flags), counted(corrected.flags))
+    notes = _drift_notes(corrected) + flag_notes(corrected.flags)
+    return Results((table,), tuple(networks), {}, notes, counted(corrected.flags))
 
 
 def _hot_networks(
@@ -91,6 +93,17 @@ def _lines(work: Work, corrected: Corrected, *middle: str) -> tuple[str, ...]:
         *middle,
         *comments.tail(work.provenance, corrected.calibration),
     )
+
+
+def _drift_notes(corrected: Corrected) -> tuple[str, ...]:
+    """Return what to say where the room was warmer or colder than at the calibration by more than WORTH_SAYING_K."""
+    then, now = corrected.calibration.circumstances.temperature_degc, corrected.points.scalars.get(AMBIENT)
+    if then is None or now is None or not np.any(np.isfinite(now)):
+        return ()
+    furthest = float(now[np.nanargmax(np.abs(now - then))])
+    if abs(furthest - then) <= WORTH_SAYING_K:
+        return ()
+    return (f"ambient went to {furthest:.1f} degC; it was {then:.1f} degC at the calibration, and receivers drift",)
 
 
 def _drive_note(work: Work, name: str | None, points: Points) -> str:

@@ -21,6 +21,7 @@ from benchrun.errors import DataSetError
 
 Known = Calibration | Levelling
 Chosen = npt.NDArray[np.bool_]
+AMBIENT = "ambient.temperature_degc"
 
 
 @dataclass(slots=True)
@@ -54,7 +55,7 @@ class Work:
 
     def circumstances(self, points: Points, plane: str, valid_for_s: float) -> Circumstances:
         """Return what a calibration of `plane` from `points` is to remember, valid from the last reading on."""
-        facts, temperature = self.facts(plane), points.scalars.get("ambient.temperature_degc")
+        facts, temperature = self.facts(plane), points.scalars.get(AMBIENT)
         return Circumstances(
             made_utc=points.ended_utc,
             valid_until_utc=valid_until(points.ended_utc, valid_for_s),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.hot import (
@@ -34,6 +34,7 @@ def sidebands(s, t, upper, lower, probe=1e-2):
     return np.array([a]), np.array([b]), np.array([np.conj(a_low)]), np.array([np.conj(b_low)])
 
 
+@settings(deadline=None)
 @given(disc(0.7), disc(0.25), disc(0.15), disc(0.15))
 def test_two_sidebands_take_the_bench_out(s, t, upper, lower):
     found_s, found_t = two_sidebands(*sidebands(s, t, upper, lower))
@@ -41,6 +42,7 @@ def test_two_sidebands_take_the_bench_out(s, t, upper, lower):
     assert abs(found_t - t)[0] < 1e-12
 
 
+@settings(deadline=None)
 @given(disc(0.7), disc(0.25), disc(0.15), disc(0.15))
 def test_one_sideband_is_biased_by_at_most_its_bound(s, t, upper, lower):
     a, b, _, _ = sidebands(s, t, upper, lower)
@@ -63,6 +65,7 @@ def test_an_image_as_strong_as_the_probe_is_refused():
         one_sideband(0 * one, one, 0.2, 0.1)
 
 
+@settings(deadline=None)
 @given(st.floats(0.01, 0.3), disc(1.0), disc(0.2), st.floats(0, 2 * np.pi))
 def test_distance_bound_holds_for_any_device(return_gain, s11, source, phase):
     assume(abs(source[0]) > 1e-3)
@@ -77,12 +80,14 @@ def test_an_input_match_that_is_none():
         distance_bound(-17.0, 0.0)
 
 
+@settings(deadline=None)
 @given(disc(0.3), st.floats(0, 2 * np.pi))
 def test_reference_to_the_pump_turns_twice(t, phase):
     found = referred_to_pump(t * np.exp(2j * phase), np.array([3.0 * np.exp(1j * phase)]))
     assert abs(found - t)[0] < 1e-13
 
 
+@settings(deadline=None)
 @given(disc(10.0), disc(0.7), disc(0.3), st.floats(0, 2 * np.pi), st.integers(3, 9))
 def test_on_carrier_recovers_any_device(s21, s22, t22, phi, count):
     turns = np.exp(2j * np.pi * np.arange(count) / count)[:, None]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.interpolation import interpolate, outside
@@ -30,6 +30,7 @@ def test_error_stays_below_the_stated_bound():
     assert error.max() < 3e-6
 
 
+@settings(deadline=None)
 @given(st.lists(st.floats(-3, 3), min_size=4, max_size=4), st.integers(4, 30), st.floats(0, 1))
 def test_cubics_are_reproduced(coefficients, count, share):
     grid = np.linspace(-1.0, 2.0, count)

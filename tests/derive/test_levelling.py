@@ -6,7 +6,7 @@ import json
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.levelling import Levelling
@@ -35,6 +35,7 @@ def test_between_its_points_the_drive_is_right_to_a_hundredth_of_a_decibel():
     assert np.abs(CHAIN(level, f) - drive).max() < 0.01
 
 
+@settings(deadline=None)
 @given(st.lists(st.floats(0.05, 3.0), min_size=2, max_size=6), st.integers(0, 100))
 def test_the_level_rises_with_the_drive_on_any_rising_chain(steps, seed):
     powers = 10 + np.cumsum([0.0, *steps])

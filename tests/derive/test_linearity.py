@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.linearity import (
@@ -26,6 +26,7 @@ def wave(level_dbm, phase):
     return np.array([np.sqrt(1e-3 * 10 ** (level_dbm / 10)) * np.exp(1j * phase)])
 
 
+@settings(deadline=None)
 @given(receivers, st.floats(-80, 3), phases)
 def test_restore_undoes_distort(receiver, above_db, phase):
     """Up to |kappa x^2| = 0.12: any figure's curve still rises there."""
@@ -66,6 +67,7 @@ def test_over_limit_marks_levels_above_the_figure():
     np.testing.assert_array_equal(RECEIVER.over_limit(np.concatenate([wave(-3.1, 0), wave(-2.9, 1)])), [False, True])
 
 
+@settings(deadline=None)
 @given(receivers, st.floats(-60, 0), phases, phases, st.floats(-60, -20), st.floats(-60, -20))
 def test_pair_round_trip(receiver, level_db, p1, p2, upper_db, lower_db):
     strong = wave(10 * np.log10(0.1 / abs(receiver.kappa) / 1e-3) + level_db, 0.4)
@@ -74,6 +76,7 @@ def test_pair_round_trip(receiver, level_db, p1, p2, upper_db, lower_db):
     np.testing.assert_allclose(found, [upper, lower], rtol=1e-11, atol=1e-11 * abs(strong[0]) * 10**-3)
 
 
+@settings(deadline=None)
 @given(st.floats(-30, -3), phases, phases)
 def test_without_coherence_the_bound_holds(level_dbm, p1, p2):
     strong, upper, lower = wave(level_dbm, 0.0), wave(-50, p1), wave(-56, p2)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.one_port import ErrorTerms, solve
@@ -26,6 +26,7 @@ def terms_strategy():
     )
 
 
+@settings(deadline=None)
 @given(terms_strategy(), st.lists(disc(1.0), min_size=1, max_size=5))
 def test_solve_then_apply_gives_the_device_back(terms, devices):
     standards = np.array([[1], [-1], [0], [0.8j]], dtype=complex)
@@ -34,6 +35,7 @@ def test_solve_then_apply_gives_the_device_back(terms, devices):
     np.testing.assert_allclose(found.apply(terms.raw(device)), device, rtol=0, atol=1e-11)
 
 
+@settings(deadline=None)
 @given(terms_strategy(), disc(1.0), disc(1.0), st.floats(0.1, 100.0))
 def test_waves_are_the_inverse_of_reading_them(terms, b, a, scale):
     """a2 = K r + c b2 and b2 = K (m - a r) / e, read the other way round."""

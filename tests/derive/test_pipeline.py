@@ -327,3 +327,33 @@ def test_steps_out_of_order_and_unknown_ones(bench):
 def test_without_a_levelling_the_drive_is_said_to_be_computed(bench):
     found = hot(bench, steps=[CORRECT, Step("hot-match", {"readings": "hot", "drive": None})])
     assert "computed from the bench's parts and not levelled" in found.notes[0]
+
+
+def test_a_point_without_a_probe_is_named(bench):
+    readings = bench.hot_readings()
+    dark = readings[25].data.copy()
+    dark[[0, 2]] = 0.0
+    readings[25] = replace(readings[25], data=dark)
+    with pytest.raises(
+        DataSetError, match=r"'hot' at 2\.24 GHz, drive_dbm = 18\.0: the image is as strong as the probe"
+    ):
+        hot(bench, readings)
+    cold = bench.cold_reading(np.full(HOT_GRID_HZ.size, 0.3j))
+    with pytest.raises(DataSetError, match=r"'cold' at 2\.2 GHz: no probe wave was read"):
+        derive(
+            COLD,
+            {"cold": [replace(cold, data=0 * cold.data)]},
+            bench.facts,
+            {"output-plane": calibrated(bench)},
+            {},
+            PROVENANCE,
+        )
+
+
+def test_a_room_that_warmed_up_is_said(bench):
+    warm = [replace(r, scalars=r.scalars | {"ambient.temperature_degc": 27.0}) for r in bench.hot_readings()]
+    assert (
+        "ambient went to 27.0 degC; it was 23.5 degC at the calibration, and receivers drift" in hot(bench, warm).notes
+    )
+    same = [replace(r, scalars=r.scalars | {"ambient.temperature_degc": 24.0}) for r in bench.hot_readings()]
+    assert not any("ambient" in note for note in hot(bench, same).notes)

@@ -104,5 +104,5 @@ def test_what_is_not_alike_or_no_number_is_refused():
         stack([reading(0, {})], "cold")
     with pytest.raises(DataSetError, match="not all taken with the same tones"):
         stack([reading(0, {}), replace(reading(1, {}), tones=("probe", "image"))], "hot")
-    with pytest.raises(DataSetError, match=r"no number at 2\.3 GHz"):
+    with pytest.raises(DataSetError, match=r"'hot' at 2\.3 GHz: a wave is no number"):
         stack([reading(0, {}, value=float("nan"))], "hot")

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 import skrf
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.standards import MeasuredStandard, Standard, define, read_standard, refer
@@ -19,6 +19,7 @@ def test_without_parameters_a_standard_is_ideal(kind, expected):
     np.testing.assert_allclose(Standard(kind).reflection(F), expected, rtol=0, atol=1e-15)
 
 
+@settings(deadline=None)
 @given(st.floats(0, 200e-12), st.floats(0, 50e9), st.floats(25, 100), st.sampled_from(["open", "short", "match"]))
 def test_every_standard_is_passive(delay_s, loss, z0, kind):
     standard = Standard(kind, delay_s=delay_s, loss_ohm_per_s=loss, line_impedance_ohm=z0)

@@ -6,7 +6,7 @@ import csv
 import io
 
 import numpy as np
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from benchrun.derive.results import Table
@@ -29,6 +29,7 @@ def test_numbers_texts_and_unknowns():
 texts = st.text(min_size=1, max_size=20).filter(lambda text: "\x00" not in text and text != "power_dbm")
 
 
+@settings(deadline=None)
 @given(st.lists(st.floats(-1e12, 1e12), min_size=1, max_size=10), texts)
 def test_any_table_comes_back(numbers, text):
     table = Table("t", {"power_dbm": np.array(numbers), text: np.array([text] * len(numbers), dtype=object)})

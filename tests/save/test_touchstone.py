@@ -43,7 +43,7 @@ def test_another_reference_impedance_is_kept(tmp_path):
 values = st.complex_numbers(max_magnitude=1e6, allow_nan=False, allow_infinity=False)
 
 
-@settings(max_examples=25, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=25, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(st.lists(values, min_size=1, max_size=5), st.text(max_size=40))
 def test_any_values_and_any_comment_come_back(tmp_path, some, comment):
     written = data(values=np.array(some), comments=(comment, "the last line"))

@@ -125,3 +125,28 @@ def test_the_match_sets_effective_directivity():
     found = solve(raw.raw(actual), nominal)
     effective_db = -20 * np.log10(np.abs(found.apply(raw.raw(np.zeros((1, 1), complex)))))[0, 0]
     assert effective_db == pytest.approx(47.0, abs=0.05)
+
+
+def readings_db(true_db: float, directivity_db: float, source_match_db: float) -> tuple[float, float]:
+    """Return the lowest and highest return loss that an uncorrected bridge reads, over all phases of its terms."""
+    phases = np.exp(2j * np.pi * np.arange(360) / 360)
+    e00 = 10 ** (-directivity_db / 20) * phases[:, None]
+    e11 = 10 ** (-source_match_db / 20) * phases[None, :]
+    raw = ErrorTerms(e00, e11, np.ones((1, 1), complex)).raw(np.full((1, 1), 10 ** (-true_db / 20) + 0j))
+    loss_db = -20 * np.log10(np.abs(raw))
+    return float(loss_db.min()), float(loss_db.max())
+
+
+@pytest.mark.parametrize(
+    ("true_db", "directivity_db", "source_match_db", "low", "high"),
+    [
+        (20, 35, 30, 18.55, 21.73),
+        (20, 46, 400, 20 - 0.42, 20 + 0.45),
+        (26, 46, 400, 26 - 0.83, 26 + 0.92),
+        (30, 46, 400, 30 - 1.28, 30 + 1.50),
+        (30, 35, 400, 26.12, 37.18),
+    ],
+)
+def test_rows_7_8_and_19_by_the_error_model(true_db, directivity_db, source_match_db, low, high):
+    """Vector sums: what directivity and source match make of a return loss that is read without correction."""
+    assert readings_db(true_db, directivity_db, source_match_db) == pytest.approx((low, high), abs=0.011)
