@@ -1,0 +1,73 @@
+"""Building a schedule from a recipe and a bench: every mistake at once, with its place, or the schedule."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Mapping, Sequence
+
+from benchrun.bench import Bench, Kit
+from benchrun.contract.hooks import StepSpec
+from benchrun.errors import FileProblemsError
+from benchrun.recipe import Recipe
+from benchrun.schedule.drive import DriveGain, Driver, PartsGain
+from benchrun.schedule.program import Node, StepNode, SweepNode, compiled, count_readings
+from benchrun.schedule.schedule import Schedule, Surroundings
+from benchrun.schedule.survey import Survey, kinds_of
+from benchrun.schedule.timing import ActionTimes, Timetable, Timing
+
+#: Changes when the same recipe and bench would give another schedule than before.
+VERSION = 1
+
+
+def build_schedule(
+    recipe: Recipe,
+    bench: Bench,
+    steps: Mapping[str, StepSpec],
+    drive_gain: DriveGain | None = None,
+    timing: Timing | None = None,
+    kit: Kit | None = None,
+) -> Schedule:
+    """Return the schedule of a recipe on a bench. Nothing is touched, and nothing is unrolled.
+
+    `drive_gain` is the levelled drive; without it a drive is worked out from the bench's parts. With `kit`, what is to be connected
+    is checked against its standards. Raises FileProblemsError with every mistake found.
+    """
+    body = compiled(recipe.acquire, steps)
+    signal = bench.drive_signal
+    driver = Driver(signal, drive_gain or PartsGain(bench, signal)) if signal is not None else None
+    known = {name: settable.kind for name, settable in bench.settables().items()}
+    clashes, kinds = kinds_of(body, known)
+    bias = frozenset(f"{name}.{quantity}" for name in bench.bias for quantity in ("voltage", "current-limit"))
+    around = Surroundings(recipe, bench, kinds, driver, bias)
+    survey = Survey(bench, kit, driver, around.scope(), around.state)
+    survey.run(body)
+    problems = [*clashes, *survey.problems]
+    if problems:
+        raise FileProblemsError(problems)
+    count_readings(body)
+    timetable = Timetable(body, around.state, around.scope(), ActionTimes(bench, timing or Timing(), steps))
+    return Schedule(body, around, timetable, _prompts(body), _hash(recipe, bench, steps, drive_gain))
+
+
+def _prompts(body: Sequence[Node]) -> int:
+    return sum(
+        node.prompts if isinstance(node, StepNode) else len(node.axis) * _prompts(node.body) for node in body
+    )
+
+
+def _hash(recipe: Recipe, bench: Bench, steps: Mapping[str, StepSpec], drive_gain: DriveGain | None) -> str:
+    used = sorted({node.spec.key for node in _steps(compiled(recipe.acquire, steps))})
+    content = {
+        "schedule": VERSION,
+        "recipe": recipe.document(),
+        "bench": json.loads(bench.canonical()),
+        "drive": drive_gain.to_document() if drive_gain is not None else None,
+        "steps": {key: [steps[key].expand.__module__, steps[key].model.model_json_schema()] for key in used},
+    }
+    text = json.dumps(content, sort_keys=True, separators=(",", ":"), allow_nan=False)
+    return hashlib.sha256(text.encode()).hexdigest()
+
+
+def _steps(body: Sequence[Node]) -> list[StepNode]:
+    return [step for node in body for step in (_steps(node.body) if isinstance(node, SweepNode) else [node])]

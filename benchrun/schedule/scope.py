@@ -1,0 +1,138 @@
+"""What a step sees while it expands: values in force, names of the bench, references. Nothing here does input or output."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping
+from functools import lru_cache
+
+from benchrun.bench import Bench
+from benchrun.contract.kinds import Kind, Settable
+from benchrun.errors import InputError
+from benchrun.quantities import parse, show
+from benchrun.recipe import Recipe
+from benchrun.recipe.references import DIFFERENCE, parse_sum, substitute
+
+
+class Noted(Mapping[str, float]):
+    """Values in force, which notes what was looked at. `values` and `words` are the walker's own, seen as they change."""
+
+    def __init__(self, values: Mapping[str, float], words: Mapping[str, str]) -> None:
+        self.values_, self.words, self.noted = values, words, set[str]()
+
+    def __getitem__(self, name: str) -> float:
+        self.noted.add(name)
+        return self.values_[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self.values_)
+
+    def __len__(self) -> int:
+        return len(self.values_)
+
+
+class Scope:
+    """The StepScope that schedules give to steps (contract.hooks)."""
+
+    def __init__(self, recipe: Recipe, bench: Bench, kinds: Mapping[str, Kind]) -> None:
+        self._settables = bench.settables()
+        self._kinds = kinds
+        self._signals, self._receivers = tuple(bench.signals), tuple(bench.receivers)
+        self._receiver = recipe.receiver
+        self._seen = Noted({}, {})
+        self._following: tuple[str, ...] = ()
+
+    def stand(self, values: Mapping[str, float], words: Mapping[str, str]) -> None:
+        """Look at these values and words from now on."""
+        self._seen = Noted(values, words)
+
+    def begin(self, following: tuple[str, ...]) -> None:
+        """Begin a step: nothing is noted yet."""
+        self._seen.noted.clear()
+        self._following = following
+
+    @property
+    def noted(self) -> frozenset[str]:
+        """Names of the conditions that the step looked at."""
+        return frozenset(self._seen.noted)
+
+    @property
+    def conditions(self) -> Mapping[str, float]:
+        """Values in force by full name, SI."""
+        return self._seen
+
+    @property
+    def signals(self) -> tuple[str, ...]:
+        """Names of the bench's signals."""
+        return self._signals
+
+    @property
+    def receivers(self) -> tuple[str, ...]:
+        """Names of the bench's receivers."""
+        return self._receivers
+
+    @property
+    def if_bandwidth_hz(self) -> float:
+        """The recipe's IF bandwidth."""
+        return self._receiver.if_bandwidth
+
+    @property
+    def averages(self) -> int:
+        """The recipe's averaging count."""
+        return self._receiver.averages
+
+    def following_read(self) -> tuple[str, ...]:
+        """Signals that the next read step in the same list uses."""
+        return self._following
+
+    def value(self, text_or_number: str | float, target: str) -> float:
+        """Resolve a quantity or a sum for a settable. Raises InputError where it has no value here, or is out of range."""
+        settable = self._settables.get(target)
+        if settable is None:
+            raise InputError(f"nothing that can be set is called '{target}'. It has {', '.join(self._settables)}.")
+        if not isinstance(text_or_number, str):
+            return in_range(parse(text_or_number, settable.kind), settable)
+        constant, references = _summed(text_or_number, settable.kind)
+        value = constant
+        for sign, name in references:
+            value += sign * self._reference(name, settable)
+        return in_range(value, settable)
+
+    def _reference(self, name: str, settable: Settable) -> float:
+        kind = self._kinds.get(name)
+        if kind not in (None, settable.kind, DIFFERENCE.get(settable.kind)):
+            raise InputError(f"{{{name}}} is a {kind}, and {settable.name} is a {settable.kind}.")
+        try:
+            return self._seen[name]
+        except KeyError:
+            raise InputError(f"{{{name}}} has no value here. Set it before, or sweep it around this step.") from None
+
+    def text(self, text: str) -> str:
+        """Replace references to swept words. Raises InputError for what is no word here."""
+        if "{" not in text:
+            return text
+        words = {name: word for name, word in self._seen.words.items() if "." not in name}
+        self._seen.noted.update(words)
+        return substitute(text, words)
+
+
+@lru_cache(maxsize=4096)
+def _summed(text: str, kind: Kind) -> tuple[float, tuple[tuple[float, str], ...]]:
+    """Return a sum's constant part, and its references with their signs. Raises QuantityError."""
+    read = parse_sum(text)
+    constant = read.evaluate(dict.fromkeys(read.references, 0.0), kind)
+    return constant, tuple((term.sign, term.reference) for term in read.terms if term.reference is not None)
+
+
+def in_range(value: float, settable: Settable) -> float:
+    """Return a value that its instrument takes. Raises InputError."""
+    low, high = settable.low, settable.high
+    if not math.isfinite(value):
+        raise InputError(f"{settable.name} would be {value}, which is no value. Check the sum and what it refers to.")
+    if (low is None or value >= low) and (high is None or value <= high):
+        return value
+    ends = f"{'any' if low is None else show(low, settable.kind)} to {'any' if high is None else show(high, settable.kind)}"
+    raise InputError(
+        f"{settable.name} would be {show(value, settable.kind)}; the bench file allows {ends} (limits and ceiling). "
+        "Change the recipe, or the bench file if the instrument can do it."
+    )
