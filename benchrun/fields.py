@@ -1,16 +1,18 @@
-"""Pydantic fields that read quantities with their units, for every model of a file."""
+"""Pydantic fields that every model of a file shares: quantities with their units, names, texts, file names."""
 
 from __future__ import annotations
 
+import re
+from collections.abc import Callable
 from typing import Annotated, Any
 
-from pydantic import BeforeValidator, Field, GetJsonSchemaHandler
+from pydantic import AfterValidator, GetJsonSchemaHandler
 from pydantic.json_schema import JsonSchemaValue
 from pydantic_core import core_schema
 
 from benchrun.contract.kinds import Kind
 from benchrun.errors import QuantityError
-from benchrun.quantities import example, parse
+from benchrun.quantities import example, parse, pattern
 
 
 class QuantityOf:
@@ -20,7 +22,7 @@ class QuantityOf:
         self.kind = kind
 
     def read(self, given: Any) -> float:
-        """Return the float; what is a float already (a model made by a program) stays. Raises ValueError with our message."""
+        """Return the float. Raises ValueError with our message."""
         try:
             return parse(given, self.kind)
         except QuantityError as error:
@@ -30,11 +32,19 @@ class QuantityOf:
         """Read before the float is checked."""
         return core_schema.no_info_before_validator_function(self.read, handler(source))
 
-    def __get_pydantic_json_schema__(self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
+    def __get_pydantic_json_schema__(
+        self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler
+    ) -> JsonSchemaValue:
         """Describe the text that people write."""
         if self.kind in ("number", "count"):
-            return {"type": "integer" if self.kind == "count" else "number", "description": f"a {self.kind}, without a unit"}
-        return {"type": "string", "description": f"{self.kind} with its unit", "examples": [example(self.kind)]}
+            return handler(schema)
+        return quantity_schema(self.kind)
+
+
+def quantity_schema(kind: Kind) -> dict[str, Any]:
+    """Return the JSON Schema of a quantity that is written with its unit."""
+    description = f"{kind.replace('-', ' ')} with its unit"
+    return {"type": "string", "description": description, "pattern": pattern(kind), "examples": [example(kind)]}
 
 
 Frequency = Annotated[float, QuantityOf("frequency")]
@@ -55,11 +65,48 @@ Number = Annotated[float, QuantityOf("number")]
 Count = Annotated[int, QuantityOf("count")]
 
 
-def _name(given: Any) -> Any:
-    return str(given) if isinstance(given, int) and not isinstance(given, bool) else given
+class Form:
+    """Marks a text field as one of a form; says in words what is wrong with another."""
+
+    def __init__(self, regular_expression: str, words: str) -> None:
+        self.expression, self.words = regular_expression, words
+
+    def check(self, text: str) -> str:
+        """Return the text. Raises ValueError with our message."""
+        if not re.fullmatch(self.expression, text):
+            raise ValueError(f"'{text[:60]}' is not {self.words}")
+        return text
+
+    def __get_pydantic_core_schema__(
+        self, source: Any, handler: Callable[[Any], core_schema.CoreSchema]
+    ) -> core_schema.CoreSchema:
+        """Check after it is known to be a text."""
+        return core_schema.no_info_after_validator_function(self.check, handler(source))
+
+    def __get_pydantic_json_schema__(
+        self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler
+    ) -> JsonSchemaValue:
+        """Give the form to editors."""
+        return {**handler(schema), "pattern": f"^(?:{self.expression})$"}
 
 
-#: A name of something on the bench or in a recipe: a word with hyphens, never a path.
-Name = Annotated[str, BeforeValidator(_name), Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9_-]{0,63}$")]
-#: A plain text, such as a serial number or a title.
-Text = Annotated[str, BeforeValidator(_name), Field(max_length=400)]
+def _at_most(length: int) -> AfterValidator:
+    def check(text: str) -> str:
+        if len(text) > length:
+            raise ValueError(f"this text is longer than {length} characters")
+        return text
+
+    return AfterValidator(check)
+
+
+#: A name of something on the bench or in a recipe.
+Name = Annotated[
+    str,
+    Form(r"[A-Za-z0-9][A-Za-z0-9_-]{0,63}", "a name: letters, digits and hyphens"),
+]
+#: A plain text on one line, such as a serial number or a title.
+Text = Annotated[str, Form(r"[^\x00-\x08\x0b-\x1f\x7f]*", "a plain text (it holds control characters)"), _at_most(400)]
+#: A file beside the one that names it: never a way to another folder.
+FileName = Annotated[str, Form(r"[^/\\\x00-\x1f:]{1,200}", "the name of a file beside this one")]
+#: A file by its way from the folder of the one that names it.
+FilePath = Annotated[str, Form(r"[^\x00-\x1f]{1,400}", "the name of a file")]

@@ -7,8 +7,8 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from benchrun.bench.ranges import FilePath, Fraction, FrequencyRange, LevelRange, PositiveRatio
-from benchrun.fields import Angle, Count, Level, Name, Ratio, Text
+from benchrun.bench.ranges import Fraction, FrequencyRange, LevelRange, PositiveRatio
+from benchrun.fields import Angle, Count, FilePath, Form, Level, Name, Ratio, Text
 from benchrun.quantities import show
 from benchrun.yaml_source import Strict
 
@@ -71,7 +71,9 @@ class Instrument(Strict):
     """One instrument."""
 
     driver: Name
-    address: str = Field(min_length=3, max_length=200, pattern=r"^[^\s]+$", description="VISA resource string")
+    address: Annotated[str, Form(r"[!-~]{3,200}", "a VISA resource string")] = Field(
+        examples=["TCPIP0::192.0.2.21::hislip0::INSTR"]
+    )
     dialect: FilePath | None = Field(
         None, description="dialect file, seen from this file's folder", examples=["my-receiver.dialect.yaml"]
     )

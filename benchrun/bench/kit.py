@@ -11,7 +11,7 @@ from pydantic import BeforeValidator, Field, PrivateAttr, WithJsonSchema
 from benchrun.bench.ranges import NotNegativeDuration, NotNegativeLoss, PositiveResistance
 from benchrun.contract.kinds import Kind
 from benchrun.errors import QuantityError
-from benchrun.fields import Name, Text
+from benchrun.fields import FileName, Form, Name, Text
 from benchrun.quantities import example, parse_coefficient
 from benchrun.yaml_source import Strict
 
@@ -96,9 +96,7 @@ class Measured(Strict):
     """A standard that is defined by data: a one-port Touchstone file."""
 
     kind: Literal["data"]
-    file: str = Field(
-        min_length=1, description="Touchstone file, from this file's folder", examples=["sliding-short.s1p"]
-    )
+    file: FileName = Field(description="Touchstone file beside the kit file", examples=["sliding-short.s1p"])
 
     def plain(self) -> dict[str, Any]:
         """Return the definition; the file's text is in Kit.files."""
@@ -112,7 +110,7 @@ class Connector(Strict):
     """The kit's connector, for the operator."""
 
     type: Text
-    torque: str | None = Field(None, pattern=r"^\d+(\.\d+)? N m$", examples=["1.1 N m"])
+    torque: Annotated[str, Form(r"[0-9]+(\.[0-9]+)? N m", "a torque, such as 1.1 N m")] | None = None
 
 
 class Kit(Strict):

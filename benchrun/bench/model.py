@@ -16,7 +16,7 @@ from benchrun.bench.parts import Coupler, Part
 from benchrun.bench.ranges import Fraction, PositiveCurrent, PositiveVoltage, VoltageRange
 from benchrun.contract.kinds import Readable, Settable
 from benchrun.contract.roles import ROLES
-from benchrun.fields import Count, Level, Name, Ratio, Text, Voltage
+from benchrun.fields import Count, Form, Level, Name, Ratio, Text, Voltage
 from benchrun.yaml_source import Strict
 
 Plane = Literal["input", "output"]
@@ -28,9 +28,7 @@ DRIVE_PLANE: Plane = "input"
 class Visa(Strict):
     """Which VISA is used: never a library's path."""
 
-    backend: str = Field(
-        default="py", pattern=r"^[a-z][a-z0-9_]*$", description="name of a VISA backend", examples=["py"]
-    )
+    backend: Annotated[str, Form(r"[a-z][a-z0-9_]*", "the name of a VISA backend, such as py")] = "py"
 
 
 class Signal(Strict):
@@ -87,7 +85,9 @@ class Rehearsal(Strict):
     """How a rehearsal assumes the world to be: its name, and imperfections that are switched off."""
 
     world: Name = "R1"
-    kit: str | None = Field(None, description="kit file that the simulated operator has at hand", examples=["my-kit.kit.yaml"])
+    kit: str | None = Field(
+        None, description="kit file that the simulated operator has at hand", examples=["my-kit.kit.yaml"]
+    )
     thermal_memory: bool = True
     noise: bool = True
     drift: bool = True
@@ -117,9 +117,7 @@ class Bench(Strict):
     device: Device
     rehearsal: Rehearsal | None = None
     simulated: bool = Field(False, description="true where the addresses are those of a served simulation")
-    rehearsal_channel: str | None = Field(
-        None, pattern=r"^[^\s:]+:\d{1,5}$", description="host:port; with simulated: true"
-    )
+    rehearsal_channel: Annotated[str, Form(r"[^\s:]+:[0-9]{1,5}", "an address, host:port")] | None = None
     _path: Path = PrivateAttr(default=Path("bench.yaml"))
     _text: str = PrivateAttr(default="")
     _roles: Mapping[str, str] = PrivateAttr(default_factory=dict)

@@ -25,7 +25,3 @@ PositiveVoltage = Annotated[Voltage, Field(gt=0.0)]
 PositiveResistance = Annotated[Resistance, Field(gt=0.0)]
 NotNegativeDuration = Annotated[Duration, Field(ge=0.0)]
 NotNegativeLoss = Annotated[OffsetLoss, Field(ge=0.0)]
-#: A file beside the one that names it: never a way to another folder.
-FileName = Annotated[str, Field(pattern=r"^[^/\\\x00-\x1f:]{1,200}$")]
-#: A file by its way from the folder of the one that names it.
-FilePath = Annotated[str, Field(pattern=r"^[^\x00-\x1f]{1,400}$")]

@@ -14,7 +14,8 @@ from pydantic import BeforeValidator, Field, ValidationInfo, WithJsonSchema
 from benchrun.bench import touchstone
 from benchrun.bench.touchstone import read_beside
 from benchrun.errors import QuantityError
-from benchrun.quantities import example, parse, show
+from benchrun.fields import quantity_schema
+from benchrun.quantities import parse, show
 from benchrun.yaml_source import Strict
 
 FloatArray = npt.NDArray[np.float64]
@@ -117,11 +118,10 @@ def _gain(given: Any, info: ValidationInfo) -> float | RatioTable:
     return _read(given, info, 1.0)
 
 
-_QUANTITY_SCHEMA = {"type": "string", "description": "ratio with its unit", "examples": [example("ratio")]}
 _SCHEMA = WithJsonSchema(
     {
         "anyOf": [
-            _QUANTITY_SCHEMA,
+            quantity_schema("ratio"),
             {
                 "type": "array",
                 "items": {"type": "array", "items": {"type": "string"}},

@@ -15,7 +15,7 @@ Checked = TypeVar("Checked", bound=BaseModel)
 
 
 class Strict(BaseModel):
-    """Base of every model of a file: frozen, hyphens in the file for underscores here, unknown keys told with the nearest."""
+    """Base of every model of a file: frozen, hyphens in the file for underscores here, unknown keys told."""
 
     model_config = ConfigDict(
         extra="forbid",
@@ -164,11 +164,11 @@ _LIST = _expected("a list")
 _SAID: Mapping[str, Callable[[Any, Mapping[str, Any]], str]] = {
     "literal_error": _one_of,
     "union_tag_invalid": _one_of,
-    "union_tag_not_found": lambda value, context: f"{context['discriminator']} is missing here",
+    "union_tag_not_found": lambda _value, context: f"{context['discriminator']} is missing here",
     "string_type": _a_text,
-    "string_pattern_mismatch": lambda value, context: f"{shown(value)} is not of the form that is expected here",
-    "string_too_short": lambda value, context: "a text is expected here, not an empty one",
-    "string_too_long": lambda value, context: f"this text is longer than {context['max_length']} characters",
+    "string_pattern_mismatch": lambda value, _context: f"{shown(value)} is not of the form that is expected here",
+    "string_too_short": lambda _value, _context: "a text is expected here, not an empty one",
+    "string_too_long": lambda _value, context: f"this text is longer than {context['max_length']} characters",
     "dict_type": _MAPPING,
     "model_type": _MAPPING,
     "model_attributes_type": _MAPPING,

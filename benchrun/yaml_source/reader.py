@@ -4,7 +4,7 @@ Rules that this keeps, whatever stands in a file:
 - YAML 1.2, one document, plain data: anchors, aliases, tags, directives, merge keys and repeated keys are refused;
 - plain scalars are null, true, false, decimal numbers or text; nothing else is guessed;
 - size, depth and number of values are bounded while reading, so that no file can fill the memory;
-- nothing is raised: what is wrong is in Source.problems, and Source.data is None only where there is nothing to go on with.
+- nothing is raised: what is wrong is in Source.problems; Source.data is None only where there is nothing to go on with.
 """
 
 from __future__ import annotations
@@ -83,7 +83,7 @@ def _parsed(source: Source) -> Source:
         reason = " ".join(str(error.problem or error.context).split())
         source.problems.append(Problem(source.file, *place, f"this is not YAML: {reason}.{_hint(source.text, place)}"))
     except (YAMLError, ValueError, LookupError, AttributeError, TypeError, AssertionError, RecursionError) as error:
-        # For odd characters the library raises its own unplaced errors, and plain ones: the text is at fault in each case.
+        # For odd characters the library raises unplaced errors, its own and plain ones: the text is at fault each time.
         source.whole(f"cannot be read as YAML ({(str(error).splitlines() or [''])[0] or type(error).__name__}).")
     return source
 
@@ -102,7 +102,7 @@ def _mark(event: Event) -> Mark:
 
 
 class _Builder:
-    """Turns the parser's events into plain data with marks; open mappings and lists are on a stack, so depth is no danger."""
+    """Turns the parser's events into plain data with marks; what is open is on a stack, so depth is no danger."""
 
     def __init__(self, source: Source) -> None:
         self._source = source
@@ -202,7 +202,7 @@ class _Builder:
             return
         before = around.value_event
         if before is not None and value is None and _is_decimal_comma(before, around.key_event):
-            # {from: 3,5 GHz} reads as {from: 3, "5 GHz": null}: put back together, so that the quantity's own message is given.
+            # {from: 3,5 GHz} reads as {from: 3, "5 GHz": null}: put back together, for the quantity's own message.
             placed[around.last_key] = f"{before.value},{key}"
             return
         placed[key] = value
