@@ -20,7 +20,6 @@ from benchrun.flow.planning import plan
 from benchrun.flow.produce import produce
 from benchrun.flow.result import RunResult
 from benchrun.flow.summary import rows_of
-from benchrun.plan.levels import check_levels
 from benchrun.schedule import Schedule
 
 if TYPE_CHECKING:
@@ -31,8 +30,8 @@ if TYPE_CHECKING:
 class Setting:
     """Where a measurement happens: the folder of runs, the clock, the way to the instruments, and who is told and asked.
 
-    `visa` is a backend word or a VISA library; `addresses` stand in for those of the bench file; `start_ns` is when bench
-    time begins in a rehearsal.
+    `visa` is a backend word or a VISA library; `addresses` stand in for those of the bench file; `start_ns` is where in the
+    simulated bench's time a rehearsal begins.
     """
 
     runs: Path
@@ -43,6 +42,7 @@ class Setting:
     seed: int | None
     listener: Progress
     prompter: Prompter
+    note: str = ""
     start_ns: int = 0
 
 
@@ -69,6 +69,8 @@ def prepare(inputs: Inputs, made: list[Made]) -> Schedule:
 
     Raises FileProblemsError, CalibrationError, LevelError.
     """
+    from benchrun.plan.levels import check_levels
+
     known = known_of(made)
     schedule = plan(inputs, known)
     check_levels(schedule, inputs.bench).require()
@@ -94,11 +96,13 @@ def measure(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setti
 def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting, folder: Path) -> RunResult:
     for name, text in inputs.files().items():
         (folder / Path(name).name).write_text(text, encoding="utf-8", newline="")
+    setting.listener.begin(inputs.recipe.title, len(schedule), setting.note)
     with ArchiveWriter.create(folder, meta_of(inputs, schedule, setting)) as writer:
+        writer.log(Event("bench-time", "where this run begins in the bench's time", {"start_ns": setting.start_ns}))
         for one in made:
             writer.log(Event("calibration", f"uses {one.kind} '{one.name}' of {one.folder.name}", {"run": str(one.folder)}))
         acquire_into(writer, inputs, schedule, setting)
-    setting.listener.phase("derive", "")
+    setting.listener.end()
     produced = produce(inputs, folder, known_of(made))
     return RunResult(folder, "complete", 0, rows_of(produced.results), produced.results.notes)
 
@@ -114,9 +118,8 @@ def acquire_into(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, sett
         try:
             writer.update(identities=identities_of(bench))
             acquire(
-                schedule, bench, inputs.bench, inputs.registry.steps, writer, setting.clock, setting.prompter, setting.listener,
-                title=inputs.recipe.title,
-            )  # fmt: skip
+                schedule, bench, inputs.bench, inputs.registry.steps, writer, setting.clock, setting.prompter, setting.listener
+            )
         finally:
             bench.close()
 

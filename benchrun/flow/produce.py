@@ -7,11 +7,14 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
+from typing import Any
+
+from pydantic import BaseModel
 
 from benchrun.archive import ArchiveReader, ArchiveWriter, Meta, open_archive
 from benchrun.derive.calibration import Calibration
 from benchrun.derive.levelling import Levelling
-from benchrun.derive.pipeline import derive, steps_of
+from benchrun.derive.pipeline import Step, derive
 from benchrun.derive.results import Provenance, Results
 from benchrun.errors import CalibrationError, FolderError
 from benchrun.flow.facts import definitions_of, facts_of
@@ -42,7 +45,7 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
         provenance = provenance_of(archive.meta, archive.digest())
         readings = {name: list(archive.readings(name)) for name in archive.names}
     results = derive(
-        steps_of(inputs.recipe.derive),
+        [Step(entry.kind, values_of(entry.model)) for entry in inputs.recipe.derive],
         readings,
         facts_of(inputs.bench, inputs.kit),
         known,
@@ -58,6 +61,11 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
             kind = "calibration" if isinstance(one, Calibration) else "levelling"
             writer.product(USED[kind], name, {"result": folder.name, "document": one.to_document()})
     return Produced(results, folder)
+
+
+def values_of(model: BaseModel) -> dict[str, Any]:
+    """Return an entry's values by field name; a duration carries its unit, valid_for_s."""
+    return {"valid_for_s" if name == "valid_for" else name: value for name, value in model.model_dump().items()}
 
 
 def _kinds(entries: tuple[Entry, ...]) -> list[str]:

@@ -11,6 +11,7 @@ from typing import cast
 from benchrun.acquire.progress import Progress
 from benchrun.acquire.prompts import RehearsalPrompter
 from benchrun.archive import open_archive
+from benchrun.contract.clock import Clock
 from benchrun.contract.rehearsal import ENTRY_POINT_GROUP, Rehearsal, RehearsalPlugin
 from benchrun.errors import CalibrationError, FileProblemsError, LinkError, PluginError
 from benchrun.flow.inputs import Inputs, load_inputs
@@ -55,16 +56,19 @@ def rehearse(
     made = find_calibrations(inputs, to, origin_of(seed), calibrations or {})
     schedule = prepare(inputs, made)
     with rehearsal_of(inputs, seed, real_time) as world:
-        world.clock.align(_start_ns(made))
+        start_ns = _start_ns(made)
+        world.clock.align(start_ns)
         setting = Setting(
             runs=to,
-            clock=world.clock,
+            clock=Shifted(world.clock, start_ns),
             visa=world.visa_library if world.visa_library is not None else inputs.bench.visa.backend,
             addresses=world.addresses,
             origin=origin_of(seed),
             seed=seed,
             listener=listener,
             prompter=RehearsalPrompter(world.connect),
+            note=NOTE,
+            start_ns=start_ns,
         )
         return measure(inputs, schedule, made, setting)
 
@@ -115,5 +119,29 @@ def _start_ns(made: list[Made]) -> int:
 
 def _end_ns(made: Made) -> int:
     with open_archive(made.folder) as archive:
-        return max((reading.ended_ns for reading in archive.readings()), default=0)
+        begins = [int(event.detail.get("start_ns", 0)) for event in archive.log("bench-time")]
+        return sum(begins[:1]) + max((reading.ended_ns for reading in archive.readings()), default=0)
 
+
+class Shifted:
+    """A clock that counts from `start_ns` of another one (contract.clock.Clock): a run's own time begins at 0."""
+
+    def __init__(self, clock: Clock, start_ns: int) -> None:
+        self._clock, self._start_ns = clock, start_ns
+
+    @property
+    def virtual(self) -> bool:
+        """Whether this time is simulated."""
+        return self._clock.virtual
+
+    def now_ns(self) -> int:
+        """Return the time since the start, in ns."""
+        return self._clock.now_ns() - self._start_ns
+
+    def sleep(self, duration_s: float) -> None:
+        """Let time pass."""
+        self._clock.sleep(duration_s)
+
+    def align(self, start_ns: int) -> None:
+        """Jump to `start_ns` of the run's own time, where that lies ahead."""
+        self._clock.align(self._start_ns + start_ns)
