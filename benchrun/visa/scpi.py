@@ -196,7 +196,7 @@ def parse_floats(payload: bytes, count: int) -> FloatArray:
     if len(payload) != 8 * count:
         raise ReplyError(f"{count} numbers of 8 bytes were expected ({8 * count} bytes), {len(payload)} bytes arrived")
     values = np.frombuffer(payload, dtype=">f8").astype(np.float64)
-    if count and not np.abs(values).max() < INFINITY:
+    if count and not (-INFINITY < values.min() and values.max() < INFINITY):
         where = int(np.flatnonzero(~(np.abs(values) < INFINITY))[0])
         raise ReplyError(f"number {where + 1} of {count} is {values[where]}: the instrument has no value there")
     return values

@@ -23,6 +23,7 @@ from typing import Any, ClassVar
 import pyvisa
 from pyvisa.constants import ResourceAttribute, StatusCode
 from pyvisa.highlevel import VisaLibraryBase
+from pyvisa.resources import SerialInstrument, TCPIPSocket
 
 from benchrun.contract.clock import Clock
 from benchrun.errors import BenchError, LinkError, NoAnswerError, ReplyError
@@ -52,6 +53,7 @@ class Wire:
         self._resource: Any = None
         self._handle: Any = None
         self._timeout_ms = -1
+        self._by_line = False
         self._quiet = contextlib.ExitStack()
 
     @property
@@ -66,10 +68,15 @@ class Wire:
             self._handle = self._resource.session
             self._quiet.enter_context(self._resource.ignore_warning(*QUIET))
             self._tune_socket()
+            self._by_line = self._ends_at_line_feeds()
             self._terminate(True)
         except Exception as error:
             self.close()
             raise self._cannot_open(error) from error
+
+    def _ends_at_line_feeds(self) -> bool:
+        """Whether a link tells the end of a message by its line feed: sockets and serial lines do, all others have an END."""
+        return isinstance(self._resource, SerialInstrument | TCPIPSocket)
 
     def _tune_socket(self) -> None:
         """Send small writes at once, and see a refused connection now: only pyvisa-py's raw sockets have one to tune."""
@@ -137,7 +144,7 @@ class Wire:
         try:
             self._write(message, deadline_s)
             self._terminate(False)
-            head = self._read_exactly(2, ends)
+            head = self._read_exactly(2 + len(str(payload_bytes)), ends)
             payload = self._read_payload(head, payload_bytes, ends) if head[:1] == b"#" else None
             self._terminate(True)
             tail = self._read_tail(payload, ends)
@@ -146,12 +153,17 @@ class Wire:
         return payload, self._text(tail if payload is not None else head + tail, message)
 
     def _read_payload(self, head: bytes, expected: int, ends: float) -> bytes:
-        digits = scpi.block_digits(head)
-        length = scpi.block_length(self._read_exactly(digits, ends)) if digits else expected
+        """Return the payload of a block of which as many bytes were read as its shortest header has."""
+        start = 2 + scpi.block_digits(head)
+        if start > len(head):
+            head += self._read_exactly(start - len(head), ends)
+        length = scpi.block_length(head[2:start]) if start > 2 else expected
         if length != expected:
             raise ReplyError(f"the block's header says {length} bytes, {expected} were expected")
+        begun = head[start:]
         with self._short_block(length):
-            payload = self._read_exactly(length, ends)
+            rest = self._read_exactly(length - len(begun), ends)
+        payload = begun + rest if begun else rest
         if len(payload) < length:
             raise ReplyError(f"the block's header says {length} bytes, {len(payload)} arrived")
         return payload
@@ -210,7 +222,7 @@ class Wire:
         if len(chunk) == count:
             return bytes(chunk)
         data = bytearray(chunk)
-        while len(data) < count and status == StatusCode.success_max_count_read:
+        while len(data) < count and (status == StatusCode.success_max_count_read or self._by_line):
             self._in_time(ends)
             chunk, status = self._library.read(self._handle, count - len(data))
             data += chunk
@@ -222,7 +234,8 @@ class Wire:
             raise TimeoutError
 
     def _terminate(self, on: bool) -> None:
-        self._resource.set_visa_attribute(ResourceAttribute.termchar_enabled, on)
+        if self._by_line:
+            self._resource.set_visa_attribute(ResourceAttribute.termchar_enabled, on)
 
     def _text(self, answer: bytes, message: str) -> str:
         try:

@@ -367,8 +367,8 @@ class TestFailures:
 
     def test_an_instrument_that_always_answers_out_of_turn(self, bench: Bench) -> None:
         receive = bench.instrument.receive
-        bench.instrument.receive = lambda message: b"7\n" + receive(message)  # type: ignore[method-assign]
-        with pytest.raises(ReplyError, match="not an entry"):
+        bench.instrument.receive = lambda message: b"7;" + receive(message)  # type: ignore[method-assign]
+        with pytest.raises(ReplyError, match="1 replies were expected, 2 came"):
             bench.session.ask("output")
         with pytest.raises(ReplyError, match="answers out of turn"):
             bench.session.ask("output")
