@@ -28,6 +28,7 @@ class OverLink:
     def __init__(self, link: Link, settings: InstrumentSettings) -> None:
         self.link = link
         self.bench = settings
+        self._stands: dict[str, object] = {}
 
     @property
     def settables(self) -> Mapping[str, Settable]:
@@ -46,12 +47,25 @@ class OverLink:
     def set(self, quantity: str, value: float) -> float:
         """Set one quantity (SI, dBm) and return what stands. Raises BenchError."""
         self._known(quantity, self.settables)
-        return float(self.link.confirm(quantity, **{quantity: value}))
+        self._stands.pop(quantity, None)
+        self._stands[quantity] = stands = float(self.link.confirm(quantity, **{quantity: value}))
+        return stands
 
     def read(self, quantity: str) -> float:
         """Read one scalar (SI, dBm). Raises BenchError."""
         self._known(quantity, self.readables)
         return float(self.link.ask(quantity))
+
+    def _see_untouched(self, found: Mapping[str, object]) -> None:
+        """Raise InstrumentError where a setting is not what was read back when it was set: somebody changed it by hand."""
+        for entry, value in found.items():
+            known = self._stands.get(entry, value)
+            if known != value:
+                self._stands.clear()
+                raise InstrumentError(
+                    f"{self.link.name}: its {entry} is now {value!r}; it was set to {known!r} and read back. Somebody changed it "
+                    "at the front panel or over another link, or it was switched off and on. Set the bench up again"
+                )
 
     def _switch(self, on: bool, **values: float) -> None:
         """Switch an output, read back. Off is tried twice: an entry left in the error queue is no reason to leave it on."""

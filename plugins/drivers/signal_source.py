@@ -23,12 +23,17 @@ class GenericSignalSource(OverLink):
 
     def prepare(self) -> None:
         """RF off, fixed frequency, external reference, front panel locked; frequency and level stay as they are."""
+        self._stands.clear()
         self.output(on=False)
         self.leave_list()
         self.link.confirm_all(self._available(("reference", {"source": "EXTernal"}), ("panel-lock", {"on": True})))
 
     def output(self, on: bool) -> None:
-        """Switch RF, read back. Raises BenchError."""
+        """Switch RF, read back; before it comes on, see that nobody changed frequency or level. Raises BenchError."""
+        if on and self._stands:
+            entries = tuple(self._stands)
+            found = self.link.exchange([], [(entry, {}) for entry in entries])
+            self._see_untouched(dict(zip(entries, found, strict=True)))
         self._switch(on)
 
     def locked(self) -> bool:
@@ -50,6 +55,7 @@ class GenericSignalSource(OverLink):
                 f"{self.link.name}: {len(frequencies_hz)} frequencies and {len(levels_dbm)} levels make no list"
             )
         self.leave_list()
+        self._stands.clear()
         self.link.confirm("level", level=levels_dbm[0])
         self.link.confirm_all([
             ("list-frequencies", {"frequencies": list(frequencies_hz)}),

@@ -17,6 +17,8 @@ from .over_link import OverLink, generic_dialect
 #: A deadline is this many times the sweep's modelled time, and this much more.
 PATIENCE = 3.0
 PATIENCE_S = 5.0
+#: Settings that are read back with every sweep, as far as they were set: a hand at the front panel is noticed.
+WATCHED = ("level", "frequency", "if-bandwidth", "averages")
 #: Frequencies closer than this are the same point.
 SAME_HZ = 1e-3
 
@@ -32,7 +34,7 @@ class GenericWaveReceiver(OverLink):
     def __init__(self, link: Link, settings: InstrumentSettings) -> None:
         super().__init__(link, settings)
         self._capture: Capture | None = None
-        self._stands: dict[str, Mapping[str, Value]] = {}
+        self._sent: dict[str, Mapping[str, Value]] = {}
 
     def prepare(self) -> None:
         """RF off, sweeps one at a time, data as REAL,64, source port chosen, reference external, front panel locked."""
@@ -70,9 +72,9 @@ class GenericWaveReceiver(OverLink):
 
     def set(self, quantity: str, value: float) -> float:
         """Set the probe's frequency (Hz) or level (dBm) and return what stands. Raises BenchError."""
+        self._sent.pop(quantity, None)
         stands = super().set(quantity, value)
-        if quantity == "frequency":
-            self._stands["frequency"] = {"frequency": value}
+        self._sent[quantity] = {quantity: value}
         return stands
 
     def output(self, on: bool) -> None:
@@ -89,13 +91,14 @@ class GenericWaveReceiver(OverLink):
             return
         self._capture = None
         wanted = [*self._grid(capture), *self._receivers(capture)]
-        changed = [(entry, values) for entry, values in wanted if self._stands.get(entry) != values]
+        changed = [(entry, values) for entry, values in wanted if self._sent.get(entry) != values]
         try:
-            self.link.confirm_all(changed)
+            stands = self.link.confirm_all(changed)
         except BaseException:
             self._forget()
             raise
-        self._stands.update(changed)
+        self._sent.update(changed)
+        self._stands.update(zip((entry for entry, _ in changed), stands, strict=True))
         self._capture = capture
 
     def _receivers(self, capture: Capture) -> list[Call]:
@@ -144,7 +147,10 @@ class GenericWaveReceiver(OverLink):
             raise
 
     def _sweep(self, capture: Capture) -> WaveData:
-        (limits,) = self.link.exchange([("sweep", {})], [("limits", {})], deadline_s=self._deadline_s(capture))
+        watched = tuple(entry for entry in WATCHED if entry in self._stands)
+        asks = [(entry, {}) for entry in ("limits", *watched)]
+        limits, *found = self.link.exchange([("sweep", {})], asks, deadline_s=self._deadline_s(capture))
+        self._see_untouched(dict(zip(watched, found, strict=True)))
         if len(limits) != len(capture.waves):
             raise InstrumentError(f"{self.link.name} gave {len(limits)} limit flags for {len(capture.waves)} waves")
         tones, waves, points = capture.shape
@@ -159,6 +165,7 @@ class GenericWaveReceiver(OverLink):
     def _forget(self) -> None:
         """Believe nothing of what stands: the next configure() sets all of it."""
         self._capture = None
+        self._sent.clear()
         self._stands.clear()
 
     def make_safe(self) -> None:

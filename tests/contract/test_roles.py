@@ -47,6 +47,17 @@ class TestSignalSource:
         levels = [float(one.split(" ")[1]) for one in bout.said[before:] if one.startswith("SOUR:POW ")]
         assert levels == [-34.0, -28.0, -22.0, -16.0, -10.0, -4.0, 0.0]
 
+    def test_a_hand_at_the_front_panel_is_noticed(self, bout: Bout) -> None:
+        bout.driver.prepare()
+        bout.driver.set("frequency", 2.3e9)
+        bout.driver.set("level", -30.0)
+        bout.driver.output(on=True)
+        bout.driver.output(on=False)
+        bout.simulated.rack.instruments["pump"].execute("SOUR:POW -20")
+        with pytest.raises(InstrumentError, match=r"its level is now -20\.0; it was set to -30\.0"):
+            bout.driver.output(on=True)
+        assert bout.session.ask("output") is False
+
     def test_a_list_waits_for_pulses(self, bout: Bout) -> None:
         bout.driver.prepare()
         frequencies = [2.2e9, 2.25e9, 2.3e9]
@@ -151,6 +162,18 @@ class TestWaveReceiver:
         before = len(bout.said)
         bout.driver.configure(capture(2.3e9))
         assert "SENS:BAND:RES" in "".join(bout.said[before:])
+        bout.driver.acquire()
+
+    @pytest.mark.parametrize("by_hand", ["SOUR:POW -11", "SENS:FREQ:CW 2.2E9", "SENS:BAND 10", "SENS:AVER:COUN 2"])
+    def test_a_hand_at_the_front_panel_is_noticed(self, bout: Bout, by_hand: str) -> None:
+        bout.driver.prepare()
+        bout.driver.set("level", -20.0)
+        bout.driver.configure(capture(2.3e9))
+        bout.driver.acquire()
+        bout.simulated.rack.instruments["analyser"].execute(by_hand)
+        with pytest.raises(InstrumentError, match="Somebody changed it at the front panel"):
+            bout.driver.acquire()
+        bout.driver.configure(capture(2.3e9))
         bout.driver.acquire()
 
     def test_over_the_limit(self, bout: Bout) -> None:

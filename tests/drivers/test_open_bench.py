@@ -136,6 +136,8 @@ def test_a_restart_is_noticed_and_stops_everything_but_off(rehearsed: Rehearsed)
     rehearsed.rehearsal.faults.add("power-cycle", at=1 + rehearsed.rehearsal.faults.by_instrument["pump"], instrument="pump")
     with pytest.raises(LinkError):
         opened.signal("pump").output(on=True)
+    with pytest.raises(InstrumentError, match="or it was switched off and on"):
+        opened.signal("pump").output(on=True)
     with pytest.raises(InstrumentError, match="its settings are gone"):
         opened.signal("pump").output(on=True)
     opened.instruments["pump"].make_safe()
