@@ -1,12 +1,12 @@
 """The whole way in order: inputs, planning, calibrations, acquisition, derivation, files. Read this room first.
 
-    inputs.py      recipe + bench + kit, read together; all mistakes at once
-    planning.py    -> Schedule, and the level check
-    known.py       calibrations and levellings in a folder of runs: which there are, which fits
-    measure.py     -> readings in an archive, committed before anything else; then produce.py
-    produce.py     archive -> results -> files, from the archive alone
-    rehearse.py    the same on simulated instruments;   run.py on real ones
-    simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way
+inputs.py      recipe + bench + kit, read together; all mistakes at once
+planning.py    -> Schedule, and the level check
+known.py       calibrations and levellings in a folder of runs: which there are, which fits
+measure.py     -> readings in an archive, committed before anything else; then produce.py
+produce.py     archive -> results -> files, from the archive alone
+rehearse.py    the same on simulated instruments;   run.py on real ones
+simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way
 """
 
 from benchrun.flow.check import check_files

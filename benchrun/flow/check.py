@@ -33,7 +33,9 @@ def _check(path: Path) -> Sequence[Problem]:
         return load_kit(path)[1]
     if name.endswith(".dialect.yaml"):
         return load_dialect(path)[1]
-    return [Problem(str(path), 0, 0, f"what kind of file this is, its name does not say: it ends in {', '.join(KINDS)}.")]
+    return [
+        Problem(str(path), 0, 0, f"what kind of file this is, its name does not say: it ends in {', '.join(KINDS)}.")
+    ]
 
 
 def _check_recipe(path: Path) -> Sequence[Problem]:

@@ -56,5 +56,7 @@ def require_run(run: Path) -> Path:
     """Return the run folder meant by `run` (a folder or its archive file). Raises FolderError where there is none."""
     folder = run.parent if run.name == ARCHIVE else run
     if not (folder / ARCHIVE).is_file():
-        raise FolderError(f"{run}: no run here: a run folder holds {ARCHIVE}. `benchrun calibrations FOLDER` and a look at the folder help.")
+        raise FolderError(
+            f"{run}: there is no run here. A run folder holds {ARCHIVE}; `benchrun run` and `rehearse` name it last."
+        )
     return folder

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from benchrun.acquire.clock import RealClock
 from benchrun.drivers.registry import Registry, load_registry
+
+if TYPE_CHECKING:
+    from pydantic import BaseModel
 
 
 def drivers() -> list[dict[str, Any]]:
@@ -39,7 +42,9 @@ def identify(address: str, backend: str = "py") -> dict[str, Any]:
         "driver": best.driver if best else "none of the installed ones fits",
         "left_to_a_dialect_file": list(best.left_open) if best else [],
         "optional_and_not_answered": list(best.optional_unanswered) if best else [],
-        "drivers": [{"driver": fit.driver, "fits": fit.fits, "not_answered": ", ".join(fit.unanswered)} for fit in finding.fits],
+        "drivers": [
+            {"driver": fit.driver, "fits": fit.fits, "not_answered": ", ".join(fit.unanswered)} for fit in finding.fits
+        ],
     }
 
 
@@ -55,4 +60,5 @@ def schema(kind: str) -> dict[str, Any]:
         return recipe_schema(load_registry().steps)
     from benchrun.bench import Bench, Kit
 
-    return {"bench": Bench, "kit": Kit}[kind].model_json_schema(by_alias=True)
+    model: type[BaseModel] = Bench if kind == "bench" else Kit
+    return model.model_json_schema(by_alias=True)

@@ -69,7 +69,9 @@ def misfit(made: Made, bench: Bench, origin: str) -> str:
     """Return why something made does not fit a bench and an origin, "" where it does."""
     circumstances, plane = made.known.circumstances, made.known.plane
     try:
-        circumstances.require(made.name, bench.part_hash(plane), circumstances.made_utc, origin, bench.part_summaries(plane))
+        circumstances.require(
+            made.name, bench.part_hash(plane), circumstances.made_utc, origin, bench.part_summaries(plane)
+        )
     except CalibrationError as error:
         return str(error)
     return ""
@@ -78,7 +80,9 @@ def misfit(made: Made, bench: Bench, origin: str) -> str:
 def _of_run(name: str, folder: Path) -> Made:
     found = [made for made in made_in(folder) if made.name == name]
     if not found:
-        raise CalibrationError(f"{folder}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is.")
+        raise CalibrationError(
+            f"{folder}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is."
+        )
     return found[-1]
 
 
@@ -112,7 +116,9 @@ def _record(made: Made) -> dict[str, Any]:
         "origin": circumstances.origin,
         "from_hz": float(grid[0]),
         "to_hz": float(grid[-1]),
-        "parts": ", ".join(f"{name} {text}" for name, text in circumstances.parts.items() if not name.startswith("receiver ")),
+        "parts": ", ".join(
+            f"{name} {text}" for name, text in circumstances.parts.items() if not name.startswith("receiver ")
+        ),
         "run": str(made.folder),
     }
 

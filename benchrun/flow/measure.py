@@ -28,10 +28,10 @@ if TYPE_CHECKING:
 
 @dataclass(frozen=True, slots=True)
 class Setting:
-    """Where a measurement happens: the folder of runs, the clock, the way to the instruments, and who is told and asked.
+    """Where a measurement happens: folder of runs, clock, way to the instruments, and who is told and asked.
 
-    `visa` is a backend word or a VISA library; `addresses` stand in for those of the bench file; `start_ns` is where in the
-    simulated bench's time a rehearsal begins.
+    `visa` is a backend word or a VISA library; `addresses` stand in for those of the bench file; `start_ns` is where
+    in the simulated bench's time a rehearsal begins.
     """
 
     runs: Path
@@ -65,7 +65,7 @@ def _unknown_choice(name: str, known: str) -> BenchrunError:
 
 
 def prepare(inputs: Inputs, made: list[Made]) -> Schedule:
-    """Return the schedule once every level in it has passed, and the calibrations cover it. Nothing is switched on before.
+    """Return the schedule once every level in it has passed and the calibrations cover it. Nothing is touched before.
 
     Raises FileProblemsError, CalibrationError, LevelError.
     """
@@ -84,7 +84,9 @@ def measure(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setti
     """
     require_somebody(schedule.prompts, setting.prompter)
     device = inputs.recipe.device
-    folder = make_run_folder(setting.runs, device.serial if device else None, inputs.path.name.removesuffix(".recipe.yaml"))
+    folder = make_run_folder(
+        setting.runs, device.serial if device else None, inputs.path.name.removesuffix(".recipe.yaml")
+    )
     try:
         return _measured(inputs, schedule, made, setting, folder)
     except BenchrunError as error:
@@ -100,7 +102,9 @@ def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Set
     with ArchiveWriter.create(folder, meta_of(inputs, schedule, setting)) as writer:
         writer.log(Event("bench-time", "where this run begins in the bench's time", {"start_ns": setting.start_ns}))
         for one in made:
-            writer.log(Event("calibration", f"uses {one.kind} '{one.name}' of {one.folder.name}", {"run": str(one.folder)}))
+            writer.log(
+                Event("calibration", f"uses {one.kind} '{one.name}' of {one.folder.name}", {"run": str(one.folder)})
+            )
         acquire_into(writer, inputs, schedule, setting)
     setting.listener.end()
     produced = produce(inputs, folder, known_of(made))
@@ -118,7 +122,14 @@ def acquire_into(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, sett
         try:
             writer.update(identities=identities_of(bench))
             acquire(
-                schedule, bench, inputs.bench, inputs.registry.steps, writer, setting.clock, setting.prompter, setting.listener
+                schedule,
+                bench,
+                inputs.bench,
+                inputs.registry.steps,
+                writer,
+                setting.clock,
+                setting.prompter,
+                setting.listener,
             )
         finally:
             bench.close()

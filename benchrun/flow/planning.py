@@ -20,7 +20,9 @@ def plan(inputs: Inputs, known: Known) -> Schedule:
 
     Raises FileProblemsError for what only shows itself when values meet the bench.
     """
-    return build_schedule(inputs.recipe, inputs.bench, inputs.registry.steps, drive_gain=_levelling(inputs, known), kit=inputs.kit)
+    return build_schedule(
+        inputs.recipe, inputs.bench, inputs.registry.steps, drive_gain=_levelling(inputs, known), kit=inputs.kit
+    )
 
 
 def _levelling(inputs: Inputs, known: Known) -> Levelling | None:

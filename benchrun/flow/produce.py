@@ -105,7 +105,9 @@ def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
     for name, other in calibrations.items():
         found = [made for made in made_in(require_run(other)) if made.name == name]
         if not found:
-            raise CalibrationError(f"{other}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is.")
+            raise CalibrationError(
+                f"{other}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is."
+            )
         known[name] = found[-1].known
     with tempfile.TemporaryDirectory() as place:
         produced = produce(restored(meta, Path(place)), folder, known)

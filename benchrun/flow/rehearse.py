@@ -28,11 +28,16 @@ def rehearsal_plugin() -> RehearsalPlugin:
     """Return the installed simulated bench. Raises PluginError where there is none, or where it cannot be loaded."""
     found = list(entry_points(group=ENTRY_POINT_GROUP))
     if not found:
-        raise PluginError("no simulated bench is installed: nothing offers the entry point group benchrun.rehearsal. Install benchrun again.")
+        raise PluginError(
+            f"no simulated bench is installed: nothing offers the entry point group {ENTRY_POINT_GROUP}. "
+            "Install benchrun again."
+        )
     try:
         return cast("RehearsalPlugin", found[0].load())
     except Exception as error:
-        raise PluginError(f"the simulated bench '{found[0].name}' ({found[0].value}) cannot be loaded: {error}.") from error
+        raise PluginError(
+            f"the simulated bench '{found[0].name}' ({found[0].value}) cannot be loaded: {error}."
+        ) from error
 
 
 def origin_of(seed: int) -> str:
@@ -50,7 +55,10 @@ def rehearse(
     calibrations: Mapping[str, Path] | None = None,
     listener: Progress,
 ) -> RunResult:
-    """Rehearse a recipe, and first what makes the calibrations that it uses where they are absent. Raises BenchrunError."""
+    """Rehearse a recipe, and first what makes the calibrations that it uses where they are absent.
+
+    Raises BenchrunError.
+    """
     inputs = load_inputs(recipe, bench)
     _make_absent(inputs, to, bench, seed, real_time, calibrations or {}, listener)
     made = find_calibrations(inputs, to, origin_of(seed), calibrations or {})
@@ -74,7 +82,13 @@ def rehearse(
 
 
 def _make_absent(
-    inputs: Inputs, to: Path, bench: Path | None, seed: int, real_time: bool, chosen: Mapping[str, Path], listener: Progress
+    inputs: Inputs,
+    to: Path,
+    bench: Path | None,
+    seed: int,
+    real_time: bool,
+    chosen: Mapping[str, Path],
+    listener: Progress,
 ) -> None:
     """Rehearse the recipe of each calibration that no run in the folder holds."""
     for name, file in inputs.recipe.calibrations.items():
@@ -96,9 +110,14 @@ def rehearsal_of(inputs: Inputs, seed: int, real_time: bool) -> Iterator[Rehears
     try:
         world = _open(rehearsal_plugin(), inputs, channel, seed, real_time)
     except OSError as error:
-        raise LinkError(f"rehearsal channel {channel}: nothing serves a simulated bench there ({error}). Start `benchrun simulate` again.") from error
+        raise LinkError(
+            f"rehearsal channel {channel}: nothing serves a simulated bench there ({error}). "
+            "Start `benchrun simulate` again."
+        ) from error
     except ValueError as error:
-        raise FileProblemsError([inputs.bench_problem(f"the simulated bench cannot be built of this bench file: {error}.")]) from error
+        raise FileProblemsError(
+            [inputs.bench_problem(f"the simulated bench cannot be built of this bench file: {error}.")]
+        ) from error
     try:
         yield world
     finally:
@@ -112,7 +131,7 @@ def _open(plugin: RehearsalPlugin, inputs: Inputs, channel: str | None, seed: in
 
 
 def _start_ns(made: list[Made]) -> int:
-    """Return when bench time begins: some minutes after the last calibration ended, so that drift since then is real."""
+    """Return when bench time begins: some minutes after the last calibration ended, so that drift since is real."""
     ends = [_end_ns(one) for one in made]
     return max(ends) + PAUSE_NS if ends else 0
 

@@ -25,10 +25,16 @@ def run(
     listener: Progress,
     prompter: Prompter,
 ) -> RunResult:
-    """Run a recipe on the bench that its bench file describes. Raises BenchrunError; RF and drain are off on every way out."""
+    """Run a recipe on the bench that its bench file describes; RF and drain are off on every way out.
+
+    Raises BenchrunError.
+    """
     inputs = load_inputs(recipe, bench)
     if inputs.bench.simulated:
-        raise InputError(f"{inputs.bench.path}: this bench is marked simulated. Use `benchrun rehearse` with --bench. Nothing was switched on.")
+        raise InputError(
+            f"{inputs.bench.path}: this bench is marked simulated. Use `benchrun rehearse` with --bench. "
+            "Nothing was switched on."
+        )
     made = find_calibrations(inputs, to, REAL, calibrations or {})
     schedule = prepare(inputs, made)
     setting = Setting(

@@ -34,7 +34,9 @@ def show(run: Path) -> dict[str, Any]:
             "results": [place.name if place != folder else "first" for place in _results(folder)],
             "reading": _readings(archive),
             "instruments": [{"name": name, **who} for name, who in meta.identities.items()],
-            "products": [{"number": p.number, "kind": p.kind, "name": p.name, "made_utc": p.made_utc} for p in archive.products()],
+            "products": [
+                {"number": p.number, "kind": p.kind, "name": p.name, "made_utc": p.made_utc} for p in archive.products()
+            ],
             "log": [{"at_utc": event.at_utc, "kind": event.kind, "text": event.text} for event in archive.log()],
             "damage": [{"problem": problem} for problem in archive.check()],
         }
@@ -48,7 +50,8 @@ def _readings(archive: ArchiveReader) -> list[dict[str, Any]]:
         for reading in archive.readings(name):
             count += 1
             flags.update(reading.flags)
-            shape = f"{'/'.join(reading.tones) or 'no tones'} x {'/'.join(reading.waves) or 'no waves'} x {len(reading.frequencies_hz)} points"
+            tones, waves = "/".join(reading.tones) or "no tones", "/".join(reading.waves) or "no waves"
+            shape = f"{tones} x {waves} x {len(reading.frequencies_hz)} points"
         flagged = ", ".join(f"{number} {word}" for word, number in flags.most_common())
         records.append({"name": name, "count": count, "each": shape, "flags": flagged})
     return records
@@ -63,17 +66,23 @@ def _results(folder: Path) -> list[Path]:
 def export(run: Path, form: str, to: Path) -> list[Path]:
     """Copy the newest result of a run in one form into a folder, and return the copies. Nothing there is overwritten.
 
-    Raises FolderError where there is no result of this form, a file of the name is there already, or it cannot be written.
+    Raises FolderError where there is no result of this form, where a file of the name is there already, or where it
+    cannot be written.
     """
     folder = require_run(run)
     results = [place for place in _results(folder) if any(place.glob(FORMS[form]))]
     if not results:
-        raise FolderError(f"{folder}: no result of this run is saved as {form}. `benchrun derive {folder}` makes one where its recipe asks for it.")
+        raise FolderError(
+            f"{folder}: no result of this run is saved as {form}. "
+            f"`benchrun derive {folder}` makes one where its recipe asks for it."
+        )
     try:
         to.mkdir(parents=True, exist_ok=True)
         return [_copied(path, to / path.name) for path in sorted(results[-1].glob(FORMS[form]))]
     except OSError as error:
-        raise FolderError(f"{to}: cannot be written ({error.strerror or error}). Choose another folder with --to.") from error
+        raise FolderError(
+            f"{to}: cannot be written ({error.strerror or error}). Choose another folder with --to."
+        ) from error
 
 
 def _copied(source: Path, target: Path) -> Path:

@@ -54,11 +54,15 @@ def simulate(bench_path: Path, seed: int, write_bench: Path | None = None) -> Se
     if bench is None:
         raise FileProblemsError(problems)
     if bench.simulated:
-        raise InputError(f"{bench_path}: points at a served simulation itself. Give the bench file that it was written from.")
+        raise InputError(
+            f"{bench_path}: points at a served simulation itself. Give the bench file that it was written from."
+        )
     try:
         served = ServedBench(rehearsal_plugin().serve(bench.wiring(rehearsal_kit(bench)), seed=seed))
     except ValueError as error:
-        raise FileProblemsError([Problem(str(bench_path), 0, 0, f"the simulated bench cannot be built of this bench file: {error}.")]) from error
+        raise FileProblemsError(
+            [Problem(str(bench_path), 0, 0, f"the simulated bench cannot be built of this bench file: {error}.")]
+        ) from error
     try:
         if write_bench is not None:
             write_served_bench(bench, served, write_bench)
@@ -98,7 +102,9 @@ def write_served_bench(bench: Bench, served: ServedBench, target: Path) -> None:
         _copy_beside(bench, target.parent)
         target.write_text(text.getvalue(), encoding="utf-8")
     except OSError as error:
-        raise FolderError(f"{target}: cannot be written ({error.strerror or error}). Choose another file with --write-bench.") from error
+        raise FolderError(
+            f"{target}: cannot be written ({error.strerror or error}). Choose another file with --write-bench."
+        ) from error
 
 
 def _copy_beside(bench: Bench, folder: Path) -> None:

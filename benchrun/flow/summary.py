@@ -33,7 +33,9 @@ def _hot(table: Table) -> Iterator[dict[str, str]]:
         for name, title in (("gain_db", "gain"), ("compression_db", "compr.")):
             if name in columns:
                 row[title] = f"{columns[name][index]:.2f} dB"
-        row[f"output reflection, {show(float(columns['frequency_hz'][index]), 'frequency', 4)}"] = _polar(columns, "output_reflection", index)
+        row[f"output reflection, {show(float(columns['frequency_hz'][index]), 'frequency', 4)}"] = _polar(
+            columns, "output_reflection", index
+        )
         if "t22_magnitude_ratio" in columns:
             row["|T22|"] = f"{columns['t22_magnitude_ratio'][index]:.3f}"
         if "optimum_load_extrapolated_magnitude_ratio" in columns:

@@ -42,14 +42,20 @@ def draw(run: Path, target: Path) -> None:
     for colour, (drive_dbm, network) in zip(colours, s22, strict=True):
         gamma = network.s[:, 0, 0]
         ends = drive_dbm in (s22[0][0], s22[-1][0])
-        chart.plot(gamma.real, gamma.imag, color=colour, lw=2 if ends else 1, label=f"{drive_dbm:+.0f} dBm" if ends else None)
+        chart.plot(
+            gamma.real, gamma.imag, color=colour, lw=2 if ends else 1, label=f"{drive_dbm:+.0f} dBm" if ends else None
+        )
     chart.set(title="Hot output reflection, 2.2 to 2.4 GHz", xticks=[], yticks=[])
     chart.legend(loc="lower left", frameon=False, title="drive")
     drives = [drive_dbm for drive_dbm, _ in s22]
     for networks, mark, label in ((s22, "o-", "|output reflection|"), (t22, "s--", "|T22|")):
         values = [abs(n.s[np.argmin(np.abs(n.f - AT_HZ)), 0, 0]) for _, n in networks]
         graph.plot(drives, values, mark, color="0.15" if mark == "o-" else "0.5", ms=4, label=label)
-    graph.set(xlabel="drive at the device-input plane, dBm", ylabel="magnitude", title="At 2.30 GHz, probe 7 MHz above the pump")
+    graph.set(
+        xlabel="drive at the device-input plane, dBm",
+        ylabel="magnitude",
+        title="At 2.30 GHz, probe 7 MHz above the pump",
+    )
     graph.set_ylim(bottom=0)
     graph.grid(alpha=0.3)
     graph.legend(frameon=False)
