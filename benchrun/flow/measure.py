@@ -4,15 +4,18 @@ from __future__ import annotations
 
 import uuid
 from collections.abc import Mapping
+from contextlib import suppress
 from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from benchrun.acquire.outcome import Outcome, outcome_of
 from benchrun.acquire.progress import Progress
 from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software_versions
+from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
-from benchrun.errors import BenchrunError
+from benchrun.errors import BenchrunError, CalibrationError, DiskError
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
 from benchrun.flow.known import Made, known_of, pick
@@ -51,17 +54,11 @@ def find_calibrations(inputs: Inputs, runs: Path, origin: str, chosen: Mapping[s
     for name in chosen:
         if name not in inputs.recipe.calibrations:
             known = ", ".join(inputs.recipe.calibrations) or "none"
-            raise _unknown_choice(name, known)
+            raise CalibrationError(f"--calibration {name}: the recipe uses no calibration of this name, but {known}.")
     return [
         pick(name, runs, inputs.bench, origin, chosen.get(name), str(inputs.folder / file))
         for name, file in inputs.recipe.calibrations.items()
     ]
-
-
-def _unknown_choice(name: str, known: str) -> BenchrunError:
-    from benchrun.errors import CalibrationError
-
-    return CalibrationError(f"--calibration {name}: the recipe uses no calibration of this name; it uses {known}.")
 
 
 def prepare(inputs: Inputs, made: list[Made]) -> Schedule:
@@ -96,41 +93,53 @@ def measure(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setti
 
 
 def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting, folder: Path) -> RunResult:
-    for name, text in inputs.files().items():
-        (folder / Path(name).name).write_text(text, encoding="utf-8", newline="")
+    _copy_files(inputs, folder)
     setting.listener.begin(inputs.recipe.title, len(schedule), setting.note)
-    with ArchiveWriter.create(folder, meta_of(inputs, schedule, setting)) as writer:
-        writer.log(Event("bench-time", "where this run begins in the bench's time", {"start_ns": setting.start_ns}))
-        for one in made:
-            writer.log(
-                Event("calibration", f"uses {one.kind} '{one.name}' of {one.folder.name}", {"run": str(one.folder)})
-            )
-        acquire_into(writer, inputs, schedule, setting)
-    setting.listener.end()
+    writer = ArchiveWriter.create(folder, meta_of(inputs, schedule, setting))
+    state: State = "failed"
+    try:
+        state = _acquired(writer, inputs, schedule, made, setting).state
+    except BaseException as error:
+        outcome = outcome_of(error)
+        state = outcome.state if outcome is not None else "failed"
+        with suppress(DiskError):  # the first error is the one to be told
+            writer.close(state)
+        raise
+    finally:
+        setting.listener.end()
+    writer.close(state)
     produced = produce(inputs, folder, known_of(made))
-    return RunResult(folder, "complete", 0, rows_of(produced.results), produced.results.notes)
+    return RunResult(folder, state, 0, rows_of(produced.results), produced.results.notes)
 
 
-def acquire_into(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, setting: Setting) -> None:
+def _copy_files(inputs: Inputs, folder: Path) -> None:
+    """Keep the files as run beside the archive, for people; the archive has them too."""
+    try:
+        for name, text in inputs.files().items():
+            (folder / Path(name).name).write_text(text, encoding="utf-8", newline="")
+    except OSError as error:
+        raise DiskError(
+            f"{folder}: could not be written ({error.strerror or error}). Nothing was switched on. "
+            "Make room, or choose another folder with --to."
+        ) from error
+
+
+def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting) -> Outcome:
     """Open the bench and acquire. The bus is closed last, whatever happens."""
     from benchrun.acquire.runner import acquire
     from benchrun.drivers.open_bench import open_bench
     from benchrun.visa.session import Bus
 
+    writer.log(Event("bench-time", "where this run begins in the bench's time", {"start_ns": setting.start_ns}))
+    for one in made:
+        text = f"uses {one.kind} '{one.name}' of {one.folder.name}"
+        writer.log(Event("calibration", text, {"run": str(one.folder)}))
+    clock, steps = setting.clock, inputs.registry.steps
     with Bus(setting.visa) as bus:
-        bench = open_bench(inputs.bench, inputs.registry, bus, setting.clock, setting.addresses or None)
+        bench = open_bench(inputs.bench, inputs.registry, bus, clock, setting.addresses or None)
         try:
             writer.update(identities=identities_of(bench))
-            acquire(
-                schedule,
-                bench,
-                inputs.bench,
-                inputs.registry.steps,
-                writer,
-                setting.clock,
-                setting.prompter,
-                setting.listener,
-            )
+            return acquire(schedule, bench, inputs.bench, steps, writer, clock, setting.prompter, setting.listener)
         finally:
             bench.close()
 
