@@ -79,7 +79,7 @@ def explained(error: BaseException, outcome: Outcome, around: Surroundings) -> B
 
 
 def _message(outcome: Outcome, around: Surroundings) -> str:
-    lines = [f"{time.strftime('%H:%M:%S')}  {_sentence(outcome.cause)}"]
+    lines = [f"{time.strftime('%H:%M:%S')}  {(outcome.cause or 'the run came to its end').rstrip('.')}."]
     safe = outcome.safe
     if safe.safe:
         lines.append(f"Made safe: {safe.text}.")
@@ -87,8 +87,3 @@ def _message(outcome: Outcome, around: Surroundings) -> str:
         lines += [f"{safe.text}.", *(f"  {reason}" for reason in safe.reasons if reason not in outcome.cause)]
     lines.append(f"{around.writer.readings} of {outcome.planned} readings are safe in {around.writer.path}.")
     return "\n".join(lines)
-
-
-def _sentence(text: str) -> str:
-    text = text or "the run came to its end"
-    return f"{text[0].upper()}{text[1:].rstrip('.')}."

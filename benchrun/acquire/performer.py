@@ -27,6 +27,10 @@ from benchrun.contract.reading import Reading
 from benchrun.errors import InstrumentError, StoppedError
 
 
+#: Virtual time at which the timetable begins: opening and preparing a bench takes less, however it is reached.
+LEAD_NS = 5_000_000_000
+
+
 class Planned(Protocol):
     """An action of the schedule, what is in force when it is done, and the number of the reading that it takes."""
 
@@ -88,7 +92,8 @@ class Performer:
         self._grid = Grid(around.bench, around.outputs.signals)
         self._taker = Taker(around.bench, around.outputs, around.clock, witness)
         self._skipping: list[int] | None = None
-        self._started_s = time.monotonic()
+        self._origin_ns = 0
+        self._started_s = 0.0
         self._asked_s = 0.0
         self._phase = ""
         self._does: Mapping[type, Callable[[Any, Planned], None]] = {
@@ -98,6 +103,12 @@ class Performer:
             AskAction: self._ask,
             ProcedureAction: self._work,
         }
+
+    def begin(self) -> None:
+        """Start the timetable now; in virtual time always at the same moment, so that a rehearsal can be done again."""
+        self._around.clock.align(LEAD_NS)
+        self._origin_ns = self._around.clock.now_ns()
+        self._started_s = time.monotonic()
 
     def perform(self, planned: Planned, following: Action | None) -> None:
         """Carry out one action; for a reading `following` it the receiver is set up before RF settles."""
@@ -161,7 +172,8 @@ class Performer:
         self._feed(Event.RADIATE if action.signals else Event.REST, action.signals)
         self._feed(Event.READ)
         drains = around.outputs.drains_below_v if self._machine.bias_up else ()
-        reading = self._taker.take(index, action, planned.conditions, around.schedule.start_ns(index), drains)
+        start_ns = self._origin_ns + around.schedule.start_ns(index)
+        reading = self._taker.take(index, action, planned.conditions, start_ns, drains)
         self._feed(Event.TAKEN)
         around.writer.commit(reading)
         self._feed(Event.COMMITTED)
@@ -231,11 +243,11 @@ class Performer:
             self._grid.set(SetAction(kept))
         elif planned.reading_index is not None and self._skipping is not None:
             self._skipping.append(planned.reading_index)
+            self.skipped += 1
 
     def _end_skipping(self) -> None:
         skipped, self._skipping = self._skipping, None
         if skipped:
-            self.skipped += len(skipped)
             self._log(
                 "skipped", f"{len(skipped)} readings were skipped by the operator", first=skipped[0], last=skipped[-1]
             )

@@ -94,6 +94,7 @@ class _Run:
         stop = self._around.stop
         try:
             self._begin()
+            self._performer.begin()
             for planned, following in _with_next(self._around.schedule.walk(self._start)):
                 if stop.requested:
                     break
