@@ -49,6 +49,10 @@ def test_check_of_files_without_mistakes(flow, benchrun_command):
     assert benchrun_command("check", "a.yaml", "b.yaml").code == 0
 
 
+def fail_over_limit():
+    raise LevelError("1 level is over the limit")
+
+
 def level_report(refused=False, **changes):
     row = {
         "plane": "device input", "tone": "pump", "level_dbm": 30.6, "limit_dbm": 33.0, "limit_kind": "maximum",
@@ -57,7 +61,7 @@ def level_report(refused=False, **changes):
     free = row | {"plane": "coupler, reflected arm", "limit_dbm": None, "limit_kind": None, "margin_db": None}
     rows = [SimpleNamespace(**row), SimpleNamespace(**free)]
     values = {
-        "table": SimpleNamespace(rows=rows, refused=refused), "duration_s": 1320.0, "operator_actions": 9,
+        "table": SimpleNamespace(rows=rows, require=fail_over_limit if refused else lambda: None), "duration_s": 1320.0, "operator_actions": 9,
         "readings": 1377, "axes": "17 drives x 81 frequencies", "notes": ["Expected U(S22), k=2: 0.004 to 0.006."],
         "to_dict": lambda: {"rows": [row, free], "nan": float("nan")},
     }  # fmt: skip
@@ -80,6 +84,8 @@ def test_levels_refused_ends_with_3_and_does_not_say_that_all_is_well(flow, benc
     flow.plan_levels = lambda recipe, bench=None: level_report(refused=True)
     ended = benchrun_command("levels", "hot.recipe.yaml")
     assert ended.code == LevelError.exit_code == 3
+    assert ended.err == "1 level is over the limit\n"
+    assert "device input" in ended.out
     assert "inside its limit" not in ended.out
     assert benchrun_command("levels", "hot.recipe.yaml", "--json").code == 3
 
