@@ -9,7 +9,7 @@ from benchrun.derive.calibration import Calibration
 from benchrun.derive.levelling import Levelling
 from benchrun.flow.inputs import Inputs, load_inputs
 from benchrun.flow.result import LevelReport
-from benchrun.recipe.model import HotMatch
+from benchrun.recipe.entries import HotMatch
 from benchrun.schedule import Schedule, build_schedule
 
 Known = Mapping[str, Calibration | Levelling]

@@ -3,17 +3,22 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Any, cast, overload
+from typing import Any, TypeVar, overload
 
 from benchrun.contract.kinds import Kind
 from benchrun.errors import QuantityError
-from benchrun.quantities import UNITS, parse, show
+from benchrun.quantities import kind_of, parse, show
 from benchrun.recipe.references import DIFFERENCE
+from benchrun.yaml_source import Path_
 
 MOST_VALUES = 10_000_000
+#: How far the last step may miss the end of a range, in steps: what decimal fractions lose in binary, and no more.
+STEP_TOLERANCE = 1e-6
+Got = TypeVar("Got")
 _WORD = re.compile(r"[A-Za-z][A-Za-z0-9-]*")
+_SHAPES = "a list, [1 V, 2 V], or a range, {from: 1 V, to: 2 V, points: 11} or {from: 1 V, to: 2 V, step: 0.1 V}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -22,7 +27,7 @@ class Evenly(Sequence[float]):
 
     start: float
     stop: float
-    count: int
+    count: int  # type: ignore[assignment]  # the number of values; nobody counts how often one occurs
 
     def __len__(self) -> int:
         return self.count
@@ -48,7 +53,7 @@ class Evenly(Sequence[float]):
 
 @dataclass(frozen=True, slots=True)
 class Axis:
-    """What a sweep goes over. `kind` is "text" where the values are words. `settable`: the values are set on the bench."""
+    """What a sweep goes over. `kind` is "text" where the values are words; `settable`: they are set on the bench."""
 
     name: str
     kind: Kind
@@ -62,63 +67,99 @@ class Axis:
         """Return plain data for hashing."""
         values = self.values
         if isinstance(values, Evenly):
-            return {"name": self.name, "kind": self.kind, "from": values.start, "to": values.stop, "points": values.count}
+            start, stop, count = values.start, values.stop, values.count
+            return {"name": self.name, "kind": self.kind, "from": start, "to": stop, "points": count}
         return {"name": self.name, "kind": self.kind, "values": list(values)}
 
 
+class AxisProblemsError(QuantityError):
+    """The values of a sweep have mistakes: each with its way from the sweep's name, and its message."""
+
+    def __init__(self, found: Sequence[tuple[Path_, str]]) -> None:
+        self.found = tuple(found)
+        super().__init__("; ".join(message for _, message in found))
+
+
 def read_axis(name: str, given: Any, kind: Kind | None, *, settable: bool) -> Axis:
-    """Read the values of a sweep over `name`; where `kind` is None it is found from their units. Raises QuantityError."""
-    if isinstance(given, dict):
-        return _range(name, given, kind, settable)
+    """Read the values of a sweep over `name`; where `kind` is None it is found from their units.
+
+    Raises AxisProblemsError with every mistake.
+    """
+    if isinstance(given, Mapping):
+        return Axis(*_range(name, given, kind), settable)
     if not isinstance(given, list) or not given:
-        raise QuantityError(f"a sweep goes over a list, [1 V, 2 V], or a range, {{from: 1 V, to: 2 V, points: 11}}; not {given!r}")
+        raise AxisProblemsError([((), f"a sweep goes over {_SHAPES}")])
     if kind is None and all(isinstance(value, str) and _WORD.fullmatch(value) for value in given):
         return Axis(name, "text", tuple(given), settable)
-    found = kind or kind_of(given[0])
-    return Axis(name, found, tuple(parse(value, found) for value in given), settable)
+    found, values = _read_all(dict(enumerate(given)), kind)
+    return Axis(name, found, tuple(values.values()), settable)
 
 
-def kind_of(given: Any) -> Kind:
-    """Return the kind of a quantity from its unit. Raises QuantityError where it has none that is known."""
-    if isinstance(given, int | float) and not isinstance(given, bool):
-        return "number"
-    unit = str(given).strip().rpartition(" ")[2].lstrip("+-.0123456789")
-    for kind, units in UNITS.items():
-        if unit in units:
-            return cast("Kind", kind)
-    raise QuantityError(f"{given!r} is not a quantity with a unit, such as 2.2 GHz")
+def _read_all(given: Mapping[Any, Any], kind: Kind | None) -> tuple[Kind, dict[Any, float]]:
+    """Read several quantities of one kind, by key; the kind is that of the first one that has one."""
+    problems: list[tuple[Path_, str]] = []
+    values: dict[Any, float] = {}
+    for key, text in given.items():
+        try:
+            kind = kind or kind_of(text)
+            values[key] = parse(text, kind)
+        except QuantityError as error:
+            problems.append(((key,), str(error)))
+    if problems or kind is None:
+        raise AxisProblemsError(problems)
+    return kind, values
 
 
-def _range(name: str, given: dict[str, Any], kind: Kind | None, settable: bool) -> Axis:
+def _range(name: str, given: Mapping[str, Any], kind: Kind | None) -> tuple[str, Kind, Evenly]:
     if set(given) not in ({"from", "to", "step"}, {"from", "to", "points"}):
-        raise QuantityError("a range has from, to and either step or points")
-    found = kind or kind_of(given["from"])
-    start, stop = parse(given["from"], found), parse(given["to"], found)
-    count = _points(given["points"]) if "points" in given else _steps(given, start, stop, found)
-    if count == 1 and start != stop:
-        raise QuantityError("one point cannot reach from one value to another; use a list of one value")
-    return Axis(name, found, Evenly(start, stop, count), settable)
+        raise AxisProblemsError([((), f"a sweep goes over {_SHAPES}; here stands {', '.join(given) or 'nothing'}")])
+    problems: list[tuple[Path_, str]] = []
+    ends = _gather(problems, lambda: _read_all({"from": given["from"], "to": given["to"]}, kind))
+    count = _gather(problems, lambda: _points(given["points"])) if "points" in given else None
+    if ends is not None and "step" in given:
+        count = _gather(problems, lambda: _steps(given, *ends))
+    if problems or ends is None or count is None:
+        raise AxisProblemsError(problems)
+    found, values = ends
+    if count == 1 and values["from"] != values["to"]:
+        raise AxisProblemsError([(("points",), "one point cannot reach from one value to another; use a list")])
+    return name, found, Evenly(values["from"], values["to"], count)
+
+
+def _gather(problems: list[tuple[Path_, str]], read: Callable[[], Got]) -> Got | None:
+    """Return what is read; None where it has mistakes, which are gathered."""
+    try:
+        return read()
+    except AxisProblemsError as error:
+        problems.extend(error.found)
+    return None
 
 
 def _points(given: Any) -> int:
-    count = int(parse(given, "count"))
+    try:
+        count = int(parse(given, "count"))
+    except QuantityError as error:
+        raise AxisProblemsError([(("points",), str(error))]) from None
     if not 1 <= count <= MOST_VALUES:
-        raise QuantityError(f"{count} points: a sweep has 1 to {MOST_VALUES}")
+        raise AxisProblemsError([(("points",), f"{count} points; a sweep has 1 to {MOST_VALUES}")])
     return count
 
 
-def _steps(given: dict[str, Any], start: float, stop: float, kind: Kind) -> int:
-    step_kind = cast("Kind", DIFFERENCE.get(kind, kind))
-    step = parse(given["step"], step_kind)
+def _steps(given: Mapping[str, Any], kind: Kind, ends: Mapping[str, float]) -> int:
+    """Return the number of values of a range with a step; it must end where it says."""
+    step_kind = DIFFERENCE.get(kind, kind)
+    try:
+        step = parse(given["step"], step_kind)
+    except QuantityError as error:
+        raise AxisProblemsError([(("step",), str(error))]) from None
     if step <= 0.0:
-        raise QuantityError(f"a step is written without a sign and is not 0; {given['step']!r} is neither")
-    steps = abs(stop - start) / step
-    whole = round(steps)
-    if abs(steps - whole) > 1e-6 * max(whole, 1):
-        last = start + (1 if stop > start else -1) * int(steps) * step
-        raise QuantityError(
-            f"steps of {show(step, step_kind)} from {given['from']} do not end at {given['to']}, but at {show(round(last, 9), kind)}: change one of them"
-        )
-    if whole >= MOST_VALUES:
-        raise QuantityError(f"{whole + 1} points: a sweep has 1 to {MOST_VALUES}")
-    return whole + 1
+        raise AxisProblemsError([(("step",), f"'{given['step']}': a step is written without a sign, and is not 0")])
+    span = ends["to"] - ends["from"]
+    steps = abs(span) / step
+    if steps >= MOST_VALUES:
+        raise AxisProblemsError([(("step",), f"{steps + 1:.0f} points; a sweep has 1 to {MOST_VALUES}")])
+    if abs(steps - round(steps)) > STEP_TOLERANCE:
+        last = show(ends["from"] + (step if span > 0 else -step) * int(steps), kind, digits=6)
+        message = f"steps of {given['step']} from {given['from']} reach {last}, not {given['to']}: change one of them"
+        raise AxisProblemsError([(("step",), message)])
+    return round(steps) + 1

@@ -4,16 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Annotated, Any, Literal
+from typing import Any, Literal
 
 from pydantic import BaseModel, Field
 
 from benchrun.errors import Problem
-from benchrun.fields import Count, Duration, Frequency, Name, Text
+from benchrun.fields import Count, FilePath, Frequency, Name, Text
 from benchrun.recipe.axis import Axis
-from benchrun.yaml_source import Strict
-
-FileName = Annotated[str, Field(pattern=r"^[^\\\x00]{1,200}$")]
+from benchrun.yaml_source import Path_, Strict
 
 
 class DeviceEntry(Strict):
@@ -31,71 +29,17 @@ class ReceiverSettings(Strict):
     averages: Count = Field(1, ge=1, le=65536)
 
 
-class Correct(Strict):
-    """Correct the raw waves of readings with a calibration."""
-
-    readings: Name
-    calibration: Name
-
-
-class OnePort(Strict):
-    """Reflection of corrected readings, as one port."""
-
-    readings: Name
-
-
-class HotMatch(Strict):
-    """Hot S22 and T22 of corrected readings by the offset probe; `drive` names the levelled drive they refer to."""
-
-    readings: Name
-    drive: Name | None = None
-
-
-class Calibrate(Strict):
-    """Make a calibration of a plane from readings of standards and of a power meter."""
-
-    name: Name
-    plane: Literal["input", "output"]
-    standards: Name
-    power: Name | None = None
-    valid_for: Duration = Field(7 * 86400.0, gt=0.0)
-
-
-class LevelChain(Strict):
-    """Make the table of what a signal's chain delivers at a plane, from power meter readings."""
-
-    name: Name
-    signal: Name
-    plane: Literal["input", "output"]
-    readings: Name
-    valid_for: Duration = Field(7 * 86400.0, gt=0.0)
-
-
-class SaveTouchstone(Strict):
-    """Write Touchstone files."""
-
-
-class SaveSummary(Strict):
-    """Write summary.csv."""
-
-
-DERIVE: Mapping[str, type[BaseModel]] = {
-    "correct": Correct, "one-port": OnePort, "hot-match": HotMatch, "calibrate": Calibrate, "level": LevelChain,
-}  # fmt: skip
-SAVE: Mapping[str, type[BaseModel]] = {"touchstone": SaveTouchstone, "summary": SaveSummary}
-
-
 class RecipeFile(Strict):
-    """A *.recipe.yaml file. Its acquire, derive and save parts are lists of one-key mappings, each with a model of its own."""
+    """A *.recipe.yaml file. Acquire, derive and save are lists of one-key mappings, each with a model of its own."""
 
     benchrun: Literal[1]
     title: Text
-    bench: FileName
+    bench: FilePath
     device: DeviceEntry | None = None
-    calibrations: Mapping[Name, FileName] = Field(default_factory=dict)
-    kit: FileName | None = None
+    calibrations: Mapping[Name, FilePath] = Field(default_factory=dict)
+    kit: FilePath | None = None
     receiver: ReceiverSettings
-    acquire: list[Any] = Field(min_length=1)
+    acquire: list[Any] = Field(min_length=1, description="steps, in order; sweeps nest")
     derive: list[Any] = Field(default_factory=list)
     save: list[Any] = Field(default_factory=list)
 
@@ -141,11 +85,12 @@ class Sweep:
 
 @dataclass(frozen=True, slots=True)
 class Entry:
-    """One entry of a derive or save part."""
+    """One entry of a derive or save part: its kind, its checked model, its place, and its way into the file's data."""
 
     kind: str
     model: BaseModel
     at: Place
+    path: Path_ = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,7 +1,8 @@
 """References: "{frequency} - 7 MHz" is a sum of references and quantities. Nothing else is ever evaluated.
 
-A sum is terms with " + " or " - " between them (spaces around the sign, so that "-7 MHz" and "1e-3 s" are one term each). The terms of a
-level are one level and otherwise ratios in dB, of a temperature one temperature and otherwise differences in K.
+A sum is terms with " + " or " - " between them, with spaces around the sign, so that "-7 MHz" and "1e-3 s" are one term
+each. The terms of a level are one level and then ratios in dB; those of a temperature one temperature and then
+differences in K.
 """
 
 from __future__ import annotations
@@ -9,17 +10,16 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import cast
 
 from benchrun.contract.kinds import Kind
 from benchrun.errors import InputError, QuantityError
 from benchrun.quantities import parse
 
-NAME = r"[A-Za-z][A-Za-z0-9-]*(?:\.[A-Za-z][A-Za-z0-9-]*)?"
+NAME = r"[A-Za-z0-9][A-Za-z0-9_-]*(?:\.[A-Za-z][A-Za-z0-9-]*)?"
 _REFERENCE = re.compile(rf"\{{({NAME})\}}")
 _SIGN = re.compile(r"\s+([+-])\s+")
 #: What may be added to a quantity of a kind, where that is another kind.
-DIFFERENCE: Mapping[str, Kind] = {"level": "ratio", "temperature": "temperature-difference"}
+DIFFERENCE: Mapping[Kind, Kind] = {"level": "ratio", "temperature": "temperature-difference"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,14 +42,19 @@ class Sum:
         """Names that the sum refers to."""
         return tuple(term.reference for term in self.terms if term.reference is not None)
 
+    def fits(self, reference: str, kind: Kind, target: Kind) -> bool:
+        """Whether a reference of one kind may stand where it does in a sum for a target of another."""
+        places = [position for position, term in enumerate(self.terms) if term.reference == reference]
+        return all(kind == (DIFFERENCE.get(target, target) if position else target) for position in places)
+
     def evaluate(self, values: Mapping[str, float], kind: Kind) -> float:
-        """Return the sum (SI). Raises InputError for a reference without a value, QuantityError for a quantity of another kind."""
+        """Return the sum (SI). Raises InputError for a reference without a value, QuantityError for another kind."""
         return sum(term.sign * _value(term, position, values, kind) for position, term in enumerate(self.terms))
 
 
 def _value(term: Term, position: int, values: Mapping[str, float], kind: Kind) -> float:
     if term.reference is None:
-        return parse(term.text, cast("Kind", DIFFERENCE.get(kind, kind) if position else kind))
+        return parse(term.text, DIFFERENCE.get(kind, kind) if position else kind)
     if term.reference not in values:
         known = ", ".join(sorted(values)) or "nothing"
         raise InputError(f"'{{{term.reference}}}' has no value here. What has one: {known}.")
@@ -57,7 +62,7 @@ def _value(term: Term, position: int, values: Mapping[str, float], kind: Kind) -
 
 
 def parse_sum(text: str) -> Sum:
-    """Read a sum. Raises QuantityError where a brace is left over or a term is empty; quantities are read by evaluate()."""
+    """Read a sum. Raises QuantityError for a stray brace or an empty term; quantities are read by evaluate()."""
     pieces = _SIGN.split(text.strip())
     signs = ["+", *pieces[1::2]]
     return Sum(tuple(_term(sign, piece.strip(), text) for sign, piece in zip(signs, pieces[0::2], strict=True)))
@@ -83,7 +88,9 @@ def substitute(text: str, words: Mapping[str, str]) -> str:
 
     def word(match: re.Match[str]) -> str:
         if match[1] not in words:
-            raise InputError(f"'{{{match[1]}}}' stands for no word here. What does: {', '.join(sorted(words)) or 'nothing'}.")
+            raise InputError(
+                f"'{{{match[1]}}}' stands for no word here. What does: {', '.join(sorted(words)) or 'nothing'}."
+            )
         return words[match[1]]
 
     return _REFERENCE.sub(word, text)

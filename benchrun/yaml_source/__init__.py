@@ -3,6 +3,7 @@
 from benchrun.yaml_source.checking import Strict, check
 from benchrun.yaml_source.places import Mark, Path_, Placed, PlacedList, Source
 from benchrun.yaml_source.reader import MAX_BYTES, MAX_DEPTH, MAX_NODES, read_source, read_text
+from benchrun.yaml_source.schema import json_schema
 
 __all__ = [
     "MAX_BYTES",
@@ -15,6 +16,7 @@ __all__ = [
     "Source",
     "Strict",
     "check",
+    "json_schema",
     "read_source",
     "read_text",
 ]

@@ -1,0 +1,71 @@
+"""What the parts of a recipe say of each other: readings nobody takes, calibrations nobody makes, a missing kit."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from benchrun.bench import Bench
+from benchrun.errors import Problem
+from benchrun.recipe.entries import OF_READINGS, Calibrate, Correct, HotMatch, LevelChain, OnePort
+from benchrun.recipe.messages import no_such
+from benchrun.recipe.model import Entry, RecipeFile, Step, Sweep, steps_of
+from benchrun.yaml_source import Source
+
+
+def problems_between(
+    source: Source,
+    file: RecipeFile,
+    acquire: Sequence[Step | Sweep],
+    derive: Sequence[Entry],
+    bench: Bench | None,
+) -> list[Problem]:
+    """Return every mistake between the parts of a recipe."""
+    return [
+        *_readings(source, acquire, derive),
+        *_corrected(source, derive),
+        *_calibrations(source, file, derive),
+        *_made(source, file, derive, bench),
+    ]
+
+
+def _readings(source: Source, acquire: Sequence[Step | Sweep], derive: Sequence[Entry]) -> Iterator[Problem]:
+    taken = {name: None for step in steps_of(acquire) if isinstance(name := getattr(step.model, "name", None), str)}
+    for entry in derive:
+        for field in OF_READINGS:
+            name = getattr(entry.model, field, None)
+            if name is not None and name not in taken:
+                yield source.problem((*entry.path, field), no_such("reading", name, taken))
+
+
+def _corrected(source: Source, derive: Sequence[Entry]) -> Iterator[Problem]:
+    """What needs corrected waves stands behind the entry that corrects them."""
+    corrected: set[str] = set()
+    for entry in derive:
+        if isinstance(entry.model, Correct):
+            corrected.add(entry.model.readings)
+        elif isinstance(entry.model, OnePort | HotMatch) and entry.model.readings not in corrected:
+            name = entry.model.readings
+            message = (
+                f"'{name}' is not corrected yet: put `- correct: {{readings: {name}, calibration: ...}}` before this."
+            )
+            yield source.problem((*entry.path, "readings"), message)
+
+
+def _calibrations(source: Source, file: RecipeFile, derive: Sequence[Entry]) -> Iterator[Problem]:
+    for entry in derive:
+        field = "calibration" if isinstance(entry.model, Correct) else "drive"
+        name = getattr(entry.model, field, None)
+        if name is not None and name not in file.calibrations:
+            advice = "Name the recipe that makes it under `calibrations`."
+            message = f"{no_such('calibration', name, file.calibrations)} {advice}"
+            yield source.problem((*entry.path, field), message)
+
+
+def _made(source: Source, file: RecipeFile, derive: Sequence[Entry], bench: Bench | None) -> Iterator[Problem]:
+    """Calibrations that this recipe makes have what they need."""
+    for entry in derive:
+        if isinstance(entry.model, Calibrate) and file.kit is None:
+            message = "no kit is named that says what the standards are: write `kit: FILE.kit.yaml` at the top."
+            yield source.problem(entry.path, message, at_key=True)
+        if isinstance(entry.model, LevelChain) and bench and entry.model.signal not in bench.signals:
+            yield source.problem((*entry.path, "signal"), no_such("signal", entry.model.signal, bench.signals))
