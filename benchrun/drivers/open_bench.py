@@ -224,7 +224,7 @@ def _identified(bench: Bench, registry: Registry, name: str, session: Session) -
                 f"({identity.maker} {identity.model}, serial {identity.serial}). Check the address, or correct the bench file"
             )
     spec = registry.drivers[bench.instruments[name].driver]
-    strange = session.not_understood(spec.needs, enough=1)
+    strange = [] if session.understands_all(spec.needs) else session.not_understood(spec.needs, enough=1)
     if strange:
         raise IdentityError(
             f"{name}: {identity.maker} {identity.model} answers, and does not know {strange[0]!r}, which driver "

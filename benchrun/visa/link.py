@@ -41,8 +41,8 @@ EVENTS_QUERY = "*ESR?"
 POWER_ON = 1 << 7
 #: How long the error queue may take to say why an exchange was not answered.
 EXPLAIN_S = 0.5
-#: How long a query may take that only asks whether it is understood; where its entry allows more, this much.
-PROBE_S = 0.5
+#: How long a query may take that only asks whether it is understood, and how long the error queue may then be waited for.
+PROBE_S = 0.25
 LONG_PROBE_S = 3.0
 REMEMBERED = 64
 #: How often a link is opened anew before it is given up.
@@ -201,18 +201,21 @@ class Session:
 
         Entries without a query form and those that answer in blocks are passed over. Only a command error (-199 to -100,
         SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may still have nothing to tell.
-        Raises BenchError where the instrument does not talk at all.
+        Raises LinkError where the link breaks.
         """
-        asks = {name: self._probe(name) for name in entries if self._askable(name)}
-        if not asks or self._understands(list(asks.values())):
-            return []
         found: list[str] = []
-        for name, ask in asks.items():
-            if not self._understands([ask]):
+        for name in entries:
+            if self._askable(name) and not self._understands([self._probe(name)], PROBE_S):
                 found.append(name)
             if enough is not None and len(found) >= enough:
                 break
         return found
+
+    def understands_all(self, entries: Sequence[str]) -> bool:
+        """Whether not_understood() would find nothing, asked in one message. Raises LinkError."""
+        asks = [self._probe(name) for name in entries if self._askable(name)]
+        deadline_s = sum(use.entry.deadline_s or PROBE_S for use in asks)
+        return not asks or self._understands(asks, min(deadline_s, LONG_PROBE_S))
 
     def _askable(self, name: str) -> bool:
         entry = self._dialect.entries.get(name)
@@ -223,16 +226,23 @@ class Session:
         entry = self._dialect[name]
         return Use(entry, dict.fromkeys(entry.ask.names if entry.ask else (), 1))
 
-    def _understands(self, asks: Sequence[Use]) -> bool:
+    def _understands(self, asks: Sequence[Use], deadline_s: float) -> bool:
+        """Whether queries are answered, or at least bring no command error in the time a slow one may need."""
         message = self._unsent(lambda: compose([], asks))
-        deadline_s = min(max(use.entry.deadline_s or PROBE_S for use in asks), LONG_PROBE_S)
         with self._lock:
             try:
-                first = take_apart(self._say(message, deadline_s)).error
-            except (InstrumentError, NoAnswerError, ReplyError):
+                entries = [take_apart(self._say(message, deadline_s, explain=False)).error]
+            except (NoAnswerError, ReplyError):
+                entries = []
+            if not entries or entries[0].number:
                 self.suspect = True
-                return False
-            return not any(-200 < one.number <= -100 for one in [first, *(self._drain() if first.number else ())])
+                try:
+                    entries += self._queue(LONG_PROBE_S)
+                except NoAnswerError:
+                    return False
+                except ReplyError:
+                    return True  # the answer itself came, too late
+            return not any(-200 < one.number <= -100 for one in entries)
 
     def reopen(self) -> None:
         """Open the link anew, clear it, and forget what was believed of the instrument. Raises LinkError, ReplyError."""
@@ -315,7 +325,7 @@ class Session:
         except (QuantityError, InstrumentError) as error:
             raise InstrumentError(f"{self._wire.where}: {error}. Nothing was sent") from None
 
-    def _say(self, message: str, deadline_s: float) -> str:
+    def _say(self, message: str, deadline_s: float, *, explain: bool = True) -> str:
         """Send a message and return its answer; the link is suspect if that fails."""
         if self.suspect:
             self.reopen()
@@ -324,7 +334,7 @@ class Session:
             text = self._wire.query(message, deadline_s)
         except BaseException as error:
             self._failed(started_ns, message, error)
-            if isinstance(error, NoAnswerError):
+            if explain and isinstance(error, NoAnswerError):
                 raise self._explained(error, message) from error
             raise
         self.exchanges.append(Exchange(started_ns, message, text, ""))
@@ -361,11 +371,11 @@ class Session:
         telling = [entry for entry in entries if not -500 < entry.number <= -400]
         return self._complaint(telling, message) if telling else error
 
-    def _queue(self) -> list[scpi.ErrorEntry]:
+    def _queue(self, deadline_s: float = EXPLAIN_S) -> list[scpi.ErrorEntry]:
         """Read the error queue of a link as it is, until it is empty."""
         entries: list[scpi.ErrorEntry] = []
         while len(entries) < LONGEST_QUEUE:
-            entry = scpi.parse_error(self._wire.query(ERROR_QUERY, EXPLAIN_S))
+            entry = scpi.parse_error(self._wire.query(ERROR_QUERY, deadline_s))
             if entry.number == 0:
                 break
             entries.append(entry)
