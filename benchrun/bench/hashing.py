@@ -1,8 +1,8 @@
 """What a calibration of a plane depends on: the parts and receivers between that plane and the receivers.
 
 At a plane with receivers these are the coupler, the parts behind its arms, and what the bench says of the receivers.
-What lies between a source and the coupler is not among them: the incident receiver sees what it does. At a plane without
-receivers a calibration levels the signal that arrives there, so that signal's instrument and path count.
+What lies between a source and the coupler is not among them: the incident receiver sees what it does. At a plane
+without receivers a calibration levels the signal that arrives there, so that signal's instrument and path count.
 """
 
 from __future__ import annotations

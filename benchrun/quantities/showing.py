@@ -9,6 +9,8 @@ from benchrun.quantities.reading import parse
 from benchrun.quantities.units import BARE, UNITS
 
 _PRECISE = Context(prec=60)
+#: Times beyond this are not shown in whole days: a hundred years.
+_LONGEST_S = 3.2e9
 _TIME_UNITS = (("days", 86400), ("h", 3600), ("min", 60))
 
 
@@ -28,12 +30,19 @@ def show(value: float, kind: Kind, digits: int | None = None) -> str:
 
 
 def _exact(value: float, kind: Kind) -> str:
-    for unit in (_fitting(value, kind), _first(kind)):
-        for figures in (12, 15, 17, None):
-            shown = f"{_in_unit(value, kind, unit, figures)} {unit}"
-            if parse(shown, kind) == value:
-                return shown
-    return f"{_plain(_decimal(value, None))} {_first(kind)}"
+    if kind == "angle":
+        return _exact_angle(value)
+    unit = _fitting(value, kind)
+    return f"{_in_unit(value, kind, unit)} {unit}"
+
+
+def _exact_angle(value: float) -> str:
+    """Return degrees where they are read again as the same float, else radian."""
+    for figures in (12, 15, 17):
+        shown = f"{_in_unit(value, 'angle', 'deg', figures)} deg"
+        if parse(shown, "angle") == value:
+            return shown
+    return f"{_plain(_decimal(value, None))} rad"
 
 
 def _short(value: float, kind: Kind, digits: int) -> str:
@@ -42,7 +51,7 @@ def _short(value: float, kind: Kind, digits: int) -> str:
     return f"{_in_unit(value, kind, unit, digits)} {unit}"
 
 
-def _in_unit(value: float, kind: Kind, unit: str, figures: int | None) -> str:
+def _in_unit(value: float, kind: Kind, unit: str, figures: int | None = None) -> str:
     with localcontext(_PRECISE):
         number = _decimal(value, None) / UNITS[kind][unit]
         if figures is not None:
@@ -71,7 +80,7 @@ def _fitting(value: float, kind: Kind) -> str:
     """Return the unit that leaves one to three digits before the point; degrees, and whole minutes, hours or days."""
     if kind == "angle":
         return "deg"
-    if kind == "time" and value:
+    if kind == "time" and 0.0 < value < _LONGEST_S:
         for unit, seconds in _TIME_UNITS:
             if value % seconds == 0:
                 return unit

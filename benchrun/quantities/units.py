@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import re
 from collections.abc import Mapping
 from decimal import Decimal
@@ -15,6 +14,10 @@ _PREFIXES = {"f": -15, "p": -12, "n": -9, "u": -6, "m": -3, "-": 0, "k": 3, "M":
 NUMBER = r"[+-]?[0-9]+(?:\.[0-9]+)?(?:[eE][+-]?[0-9]+)?"
 #: Kinds that are written without a unit.
 BARE: tuple[Kind, ...] = ("number", "count", "switch")
+
+
+#: pi / 180, to more places than a float has (OEIS A019685).
+_DEGREE = Decimal("0.01745329251994329576923690768488612713")
 
 
 def _prefixed(unit: str, prefixes: str) -> dict[str, Decimal]:
@@ -52,7 +55,7 @@ UNITS: Mapping[Kind, Mapping[str, Decimal]] = MappingProxyType(
         },
         "temperature": {"degC": Decimal(1)},
         "temperature-difference": _prefixed("K", "-m"),
-        "angle": {"rad": Decimal(1), "deg": Decimal(repr(math.pi / 180.0))},
+        "angle": {"rad": Decimal(1), "deg": _DEGREE},
         "resistance": _prefixed("ohm", "-mkM"),
         "capacitance": _per_frequency("F", "-fpnu"),
         "inductance": _per_frequency("H", "-fpnum"),
