@@ -49,11 +49,11 @@ class Circumstances:
         made, until, date = (_moment(text) for text in (self.made_utc, self.valid_until_utc, date_utc))
         if date > until:
             raise CalibrationError(
-                f"{who} expired on {_day(until)}; the readings are of {_day(date)}. Calibrate again."
+                f"{who} expired on {_show(until)}; the readings are of {_show(date)}. Calibrate again."
             )
         if date < made - (until - made):
             raise CalibrationError(
-                f"{who} was made on {_day(made)}, long after the readings of {_day(date)}. Choose an older one."
+                f"{who} was made on {_show(made)}, long after the readings of {_show(date)}. Choose an older one."
             )
 
     def _difference(self, parts: Mapping[str, str]) -> str:
@@ -190,7 +190,7 @@ def require_kind(document: Mapping[str, Any], kind: str) -> None:
 
 def valid_until(made_utc: str, valid_for_s: float) -> str:
     """Return the ISO 8601 UTC time `valid_for_s` seconds after `made_utc`."""
-    return (_moment(made_utc) + datetime.timedelta(seconds=valid_for_s)).isoformat()
+    return (_moment(made_utc) + datetime.timedelta(seconds=valid_for_s)).isoformat(timespec="seconds")
 
 
 def _moment(text: str) -> datetime.datetime:
@@ -203,7 +203,12 @@ def _moment(text: str) -> datetime.datetime:
     return moment if moment.tzinfo else moment.replace(tzinfo=datetime.UTC)
 
 
-def _day(moment: datetime.datetime) -> str:
+def show_time(text: str) -> str:
+    """Return an ISO 8601 time as people read it: 2026-12-01 21:14 UTC."""
+    return _show(_moment(text))
+
+
+def _show(moment: datetime.datetime) -> str:
     return f"{moment.astimezone(datetime.UTC):%Y-%m-%d %H:%M} UTC"
 
 

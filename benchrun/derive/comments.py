@@ -7,7 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from benchrun.derive.calibration import Calibration
+from benchrun.derive.calibration import Calibration, show_time
 from benchrun.derive.corrected import PUMP, Corrected
 from benchrun.derive.hot_match import PHASE_REFERENCE
 from benchrun.derive.points import Points
@@ -52,9 +52,9 @@ def tail(provenance: Provenance, calibration: Calibration) -> tuple[str, ...]:
     there = calibration.circumstances
     residuals = ", ".join(f"{name} {rms:.4f}" for name, rms in calibration.residuals.items())
     return (
-        f"Calibration: {calibration.name}, {calibration.plane} plane, made {there.made_utc}, "
-        f"valid until {there.valid_until_utc}, kit {there.kit or 'unnamed'}, "
-        f"parts {there.part_hash}, readings {there.readings_hash or 'unhashed'}",
+        f"Calibration: {calibration.name}, {calibration.plane} plane, made {show_time(there.made_utc)}, "
+        f"valid until {show_time(there.valid_until_utc)}, kit '{there.kit or 'unnamed'}', "
+        f"parts {there.part_hash[:16]}, readings {there.readings_hash or 'unhashed'}",
         f"Calibration residuals (rms of corrected less defined reflection): {residuals}",
         f"Uncertainty: not evaluated in full; {_spread(calibration)}",
         f"Readings: {provenance.readings_hash or 'unhashed'}; schedule: {provenance.schedule_hash or 'unhashed'}",
@@ -70,7 +70,7 @@ def conditions_comment(conditions: Mapping[str, float | str], points: Points) ->
     }
     told = [f"{k} = {_value(v)}" for k, v in (dict(conditions) | fixed).items()]
     means = [f"mean {k} = {np.nanmean(v):.6g}" for k, v in points.scalars.items() if np.any(np.isfinite(v))]
-    return f"Conditions: {'; '.join([*told, *means, f'read from {points.started_utc}'])}"
+    return f"Conditions: {'; '.join([*told, *means, f'read from {show_time(points.started_utc)}'])}"
 
 
 def tones_comment(corrected: Corrected) -> str:

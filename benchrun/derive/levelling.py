@@ -73,6 +73,10 @@ class Levelling:
         levels = _monotone(power, self.level_dbm, np.clip(wanted, power[:, 0], power[:, -1]))
         return np.asarray((levels + below).reshape(drive.shape))
 
+    def below_db(self, drive_dbm: FloatArray, frequency_hz: FloatArray) -> float:
+        """Return how far the drives (N,) at these frequencies (N,) go below what was levelled, at least 0."""
+        return float(np.max(self.power_at(frequency_hz)[:, 0] - drive_dbm, initial=0.0))
+
     def _require_reach(self, wanted: FloatArray, power: FloatArray, frequency: FloatArray) -> None:
         low, high = power[:, 0] - REACH_DOWN_DB, power[:, -1]
         unreached = ~((wanted >= low) & (wanted <= high))

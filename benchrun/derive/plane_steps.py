@@ -9,7 +9,7 @@ import numpy as np
 
 from benchrun.contract.capture import ComplexArray
 from benchrun.derive.calibrate import calibrate, level
-from benchrun.derive.calibration import Calibration
+from benchrun.derive.calibration import Calibration, show_time
 from benchrun.derive.results import Column, Results, Table
 from benchrun.derive.work import Work, counted, flag_notes
 
@@ -24,7 +24,7 @@ def calibrate_step(work: Work, values: Values) -> Results:
     facts = work.facts(plane)
     calibration, residuals = calibrate(values["name"], standards, power, work.definitions, facts, circumstances)
     told = ", ".join(f"{name} {rms:.4f}" for name, rms in calibration.residuals.items())
-    until = circumstances.valid_until_utc
+    until = show_time(circumstances.valid_until_utc)
     notes = (f"calibration '{calibration.name}': residuals (rms) {told}; valid until {until}",)
     return Results(
         (Table("calibration", _calibration_columns(calibration, residuals)),),
@@ -50,7 +50,7 @@ def level_step(work: Work, values: Values) -> Results:
     }
     note = (
         f"levelling '{levelling.name}': {power.min():.2f} to {power.max():.2f} dBm at the {levelling.plane} plane; "
-        f"valid until {circumstances.valid_until_utc}"
+        f"valid until {show_time(circumstances.valid_until_utc)}"
     )
     document = {("levelling", levelling.name): levelling.to_document()}
     notes = (note, *flag_notes(points.flags))

@@ -8,8 +8,8 @@ from typing import Any
 import numpy as np
 
 from benchrun.derive import comments
-from benchrun.derive.calibration import Calibration
-from benchrun.derive.corrected import Corrected, correct
+from benchrun.derive.calibration import Calibration, show_time
+from benchrun.derive.corrected import PUMP, Corrected, correct
 from benchrun.derive.hot_match import HotMatch, flag_column, hot_flags, hot_match, hot_table, polar
 from benchrun.derive.levelling import Levelling
 from benchrun.derive.points import Points, condition_keys
@@ -118,5 +118,7 @@ def _drive_note(work: Work, name: str | None, points: Points) -> str:
         )
     facts = work.facts(levelling.plane)
     levelling.check_fits(facts.part_hash, points.ended_utc, work.provenance.origin, facts.parts)
-    made = levelling.circumstances.made_utc
-    return f"drive is power at the device-input plane, levelled by '{name}' of {made}; gain refers to it"
+    made = show_time(levelling.circumstances.made_utc)
+    below_db = levelling.below_db(points.number("drive_dbm"), points.tone_hz(PUMP))
+    reach = f" (up to {below_db:.2f} dB below what was levelled: the gain is carried on)" if below_db > 0.0 else ""
+    return f"drive is power at the device-input plane, levelled by '{name}' of {made}{reach}; gain refers to it"

@@ -185,7 +185,7 @@ def test_comments_say_what_stands_in_the_file(results):
         "drive_dbm = 14",
         "pump at -7 MHz",
         "Calibration: output-plane, output plane, made 2026-12-01",
-        "kit field-kit",
+        "kit 'field-kit'",
         "Uncertainty:",
         "readings-hash",
     ):
@@ -357,3 +357,9 @@ def test_a_room_that_warmed_up_is_said(bench):
     )
     same = [replace(r, scalars=r.scalars | {"ambient.temperature_degc": 24.0}) for r in bench.hot_readings()]
     assert not any("ambient" in note for note in hot(bench, same).notes)
+
+
+def test_a_drive_below_what_was_levelled_is_said(bench):
+    found = hot(bench, bench.hot_readings(drives=[11.0, 14.0]))
+    assert "dB below what was levelled: the gain is carried on" in found.notes[0]
+    assert "below what was levelled" not in hot(bench).notes[0]
