@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import cast
 
 from benchrun.contract.kinds import UNIT_SUFFIX, Kind
@@ -40,16 +41,45 @@ def clock_text(duration_s: float) -> str:
 
 def condition_text(key: str, value: float | str) -> str:
     """Return a condition of a reading for a person: ("pump.level_dbm", 3.0) gives 'pump.level +3.0 dBm'."""
-    if isinstance(value, str):
-        return f"{key.replace('connected.', 'at ')} {value}"
+    name, text = named_figure(key, value)
+    return f"{name.replace('connected.', 'at ')} {text}"
+
+
+def named_figure(key: str, value: object) -> tuple[str, str]:
+    """Return a name and its value for a person: ("start_hz", 2.2e9) gives ('start', '2.2 GHz').
+
+    The key's suffix says the unit, as in all of our documents; times in UTC are given to the second.
+    """
     name, _, suffix = key.rpartition("_")
-    match _KIND_OF.get(suffix):
-        case None:
-            return f"{key} {value:g}"
-        case "level":
-            return f"{name} {level_text(value)}"
-        case kind:
-            return f"{name} {show(value, kind, 6)}"
+    kind = _KIND_OF.get(suffix) if name else None
+    match value:
+        case str() if suffix == "utc" and value:
+            return f"{name} (UTC)".replace("_", " "), value[:19].replace("T", " ")
+        case int() | float() if kind == "level":
+            return name.replace("_", " "), level_text(value)
+        case int() | float() if kind == "ratio":
+            return name.replace("_", " "), show(round(value, 2), kind)
+        case int() | float() if kind is not None and not isinstance(value, bool):
+            return name.replace("_", " "), show(value, kind, 6)
+        case _:
+            return key.replace("_", " "), plain_text(value)
+
+
+def plain_text(value: object) -> str:
+    """Return any value of a document as a person reads it."""
+    match value:
+        case None | "":
+            return "-"
+        case bool():
+            return "yes" if value else "no"
+        case float():
+            return f"{value:.6g}"
+        case Mapping():
+            return ", ".join(" ".join(named_figure(str(key), item)) for key, item in value.items()) or "none"
+        case list() | tuple():
+            return ", ".join(map(plain_text, value)) or "none"
+        case _:
+            return str(value)
 
 
 def count_text(count: int, thing: str) -> str:

@@ -10,7 +10,7 @@ import click
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
-FILE = click.Path(dir_okay=False, path_type=Path)
+FILE = click.Path(path_type=Path)
 FOLDER = click.Path(file_okay=False, path_type=Path)
 RUN = click.Path(path_type=Path)
 

@@ -13,6 +13,8 @@ if TYPE_CHECKING:
 
 def show_result(result: RunResult) -> int:
     """Print a result, its folder on the last line of standard output, and return its exit code."""
+    if columns(err=True):
+        talk()  # on a terminal, a blank line below what was said on the way
     for line in record_lines(result.table, columns()):
         say(line)
     for note in result.notes:

@@ -61,7 +61,8 @@ def level_report(refused=False, **changes):
     free = row | {"plane": "coupler, reflected arm", "limit_dbm": None, "limit_kind": None, "margin_db": None}
     rows = [SimpleNamespace(**row), SimpleNamespace(**free)]
     values = {
-        "table": SimpleNamespace(rows=rows, require=fail_over_limit if refused else lambda: None), "duration_s": 1320.0, "operator_actions": 9,
+        "table": SimpleNamespace(rows=rows, require=fail_over_limit if refused else lambda: None),
+        "duration_s": 1320.0, "operator_actions": 9,
         "readings": 1377, "axes": "17 drives x 81 frequencies", "notes": ["Expected U(S22), k=2: 0.004 to 0.006."],
         "to_dict": lambda: {"rows": [row, free], "nan": float("nan")},
     }  # fmt: skip

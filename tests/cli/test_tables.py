@@ -63,3 +63,24 @@ def test_every_line_of_one_column_starts_at_one_place(rows):
 def test_a_note_for_which_nothing_is_left_goes_below_its_row():
     lines = table(("plane", "level", ""), [("measurement receiver", "-4.2 dBm", "0.08 dB compressed")], width=40)
     assert lines == ["plane                 level", "measurement receiver  -4.2 dBm", "    0.08 dB compressed"]
+
+
+def test_units_that_a_column_shares_move_into_its_heading_where_that_helps():
+    headings = ("drive", "gain", "note")
+    rows = [("+14.0 dBm", "14.1 dB", "first"), ("+30.0 dBm", "-", "last")]
+    assert table(headings, rows, width=25) == [
+        "drive      gain     note",
+        "+14.0 dBm  14.1 dB  first",
+        "+30.0 dBm  -        last",
+    ]
+    assert table(headings, rows, width=20) == [
+        "drive,  gain,",
+        "dBm     dB     note",
+        "+14.0   14.1   first",
+        "+30.0   -      last",
+    ]
+
+
+def test_units_that_differ_stay_where_they_are():
+    lines = table(("a", "b"), [("1 dB", "1 V"), ("2 dBm", "2 mV")], width=8)
+    assert [word for line in lines for word in line.split()] == ["a", "b", "1", "dB", "1", "V", "2", "dBm", "2", "mV"]
