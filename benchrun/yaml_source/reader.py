@@ -33,7 +33,7 @@ from benchrun.yaml_source.places import START, Mark, Placed, PlacedList, Source
 
 MAX_BYTES = 1_000_000
 MAX_DEPTH = 40
-MAX_NODES = 100_000
+MAX_NODES = 20_000
 
 _NULL = ("", "~", "null", "Null", "NULL")
 _SWITCH = {"true": True, "True": True, "TRUE": True, "false": False, "False": False, "FALSE": False}
@@ -155,7 +155,8 @@ class _Builder:
         if event.anchor is not None:
             self._tell(event, f"the anchor '&{event.anchor}' is not taken: write the value out where it is needed.")
         if event.ctag is not None:
-            self._tell(event, f"the tag {event.ctag} is not taken: files are plain data.")
+            tag = str(event.ctag).replace("tag:yaml.org,2002:", "!!")
+            self._tell(event, f"the tag {tag} is not taken: files are plain data.")
 
     def _enter(self, event: MappingStartEvent | SequenceStartEvent) -> None:
         mapping = isinstance(event, MappingStartEvent)
@@ -207,7 +208,8 @@ class _Builder:
             return
         placed[key] = value
         placed.keys_at[key] = _mark(around.key_event)
-        placed.values_at[key] = _mark(event)
+        # An empty value begins where the next thing does: its place is its key's.
+        placed.values_at[key] = _mark(event if event.start_mark.index != event.end_mark.index else around.key_event)
         around.last_key, around.value_event = key, event if isinstance(event, ScalarEvent) else None
 
     def _tell(self, event: Event, message: str) -> None:
