@@ -5,9 +5,9 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from hypothesis import settings
+from hypothesis import HealthCheck, settings
 
-settings.register_profile("benchrun", deadline=None)
+settings.register_profile("benchrun", deadline=None, suppress_health_check=[HealthCheck.too_slow])
 settings.load_profile("benchrun")
 
 
