@@ -1,1 +1,1 @@
-"""The plan room."""
+"""Planning: what will happen at every plane before anything is switched on."""

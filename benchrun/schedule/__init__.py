@@ -1,4 +1,4 @@
-"""The schedule: what will happen, in order, from a recipe and a bench. Pure, hashed, decoded by index; no input or output."""
+"""The schedule: what will happen, in order, from a recipe and a bench. Pure, hashed, decoded by index."""
 
 from benchrun.schedule.build import build_schedule
 from benchrun.schedule.columns import Columns

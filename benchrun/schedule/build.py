@@ -11,7 +11,7 @@ from benchrun.contract.hooks import StepSpec
 from benchrun.errors import FileProblemsError
 from benchrun.recipe import Recipe
 from benchrun.schedule.drive import DriveGain, Driver, PartsGain
-from benchrun.schedule.program import Node, StepNode, SweepNode, compiled, count_readings
+from benchrun.schedule.program import Node, StepNode, SweepNode, compiled
 from benchrun.schedule.schedule import Schedule, Surroundings
 from benchrun.schedule.survey import Survey, kinds_of
 from benchrun.schedule.timing import ActionTimes, Timetable, Timing
@@ -30,8 +30,8 @@ def build_schedule(
 ) -> Schedule:
     """Return the schedule of a recipe on a bench. Nothing is touched, and nothing is unrolled.
 
-    `drive_gain` is the levelled drive; without it a drive is worked out from the bench's parts. With `kit`, what is to be connected
-    is checked against its standards. Raises FileProblemsError with every mistake found.
+    `drive_gain` is the levelled drive; without it a drive is worked out from the bench's parts. With `kit`, what is to
+    be connected is checked against its standards. Raises FileProblemsError with every mistake found.
     """
     body = compiled(recipe.acquire, steps)
     signal = bench.drive_signal
@@ -45,15 +45,12 @@ def build_schedule(
     problems = [*clashes, *survey.problems]
     if problems:
         raise FileProblemsError(problems)
-    count_readings(body)
     timetable = Timetable(body, around.state, around.scope(), ActionTimes(bench, timing or Timing(), steps))
     return Schedule(body, around, timetable, _prompts(body), _hash(recipe, bench, steps, drive_gain))
 
 
 def _prompts(body: Sequence[Node]) -> int:
-    return sum(
-        node.prompts if isinstance(node, StepNode) else len(node.axis) * _prompts(node.body) for node in body
-    )
+    return sum(node.prompts if isinstance(node, StepNode) else len(node.axis) * _prompts(node.body) for node in body)
 
 
 def _hash(recipe: Recipe, bench: Bench, steps: Mapping[str, StepSpec], drive_gain: DriveGain | None) -> str:

@@ -12,8 +12,8 @@ from benchrun.bench.chain import path_gain_db
 from benchrun.contract.capture import FloatArray
 
 DRIVE = "drive"
-#: Levels that follow from a drive are rounded to 0.1 mdB, far below any instrument's resolution, so that they are the same
-#: number however they were computed: alone, or thousands at once.
+#: Levels that follow from a drive are rounded to 0.1 mdB, far below any instrument's resolution, so that they are the
+#: same number however they were computed: alone, or thousands at once.
 LEVEL_DIGITS = 4
 #: Levels remembered at most.
 MOST_KNOWN = 1 << 14

@@ -1,4 +1,4 @@
-"""A schedule's program: steps and sweeps, nested as in the recipe, each knowing how many readings it holds. Never unrolled."""
+"""A schedule's program: steps and sweeps, nested as in the recipe, each with its number of readings. Never unrolled."""
 
 from __future__ import annotations
 
@@ -14,11 +14,12 @@ from benchrun.recipe.model import Place
 
 @dataclass(frozen=True, slots=True)
 class ReadSite:
-    """What a place that reads has in common at every condition: the reading's name, the signals that are on, the waves read."""
+    """What a place that reads has in common at every condition: its name, the signals on, and what is read."""
 
     name: str
     signals: tuple[str, ...]
     waves: tuple[str, ...]
+    scalars: tuple[str, ...]
     grid_hz: tuple[float, ...]
     """The receiver's own sweep, () where the reading is at the frequency in force."""
 
@@ -81,8 +82,8 @@ Node = StepNode | SweepNode
 class Site:
     """One place that reads, and the way to it: at each level of nesting the list, and the position in it.
 
-    `sweeps` are the sweeps around it, outermost first; `offset` is the index of its first reading, `strides` how many readings
-    lie between two values of each of those sweeps.
+    `sweeps` are the sweeps around it, outermost first; `offset` is the index of its first reading, `strides` how many
+    readings lie between two values of each of those sweeps.
     """
 
     read: ReadSite
@@ -92,6 +93,11 @@ class Site:
     sweeps: tuple[SweepNode, ...]
     offset: int
     strides: tuple[int, ...]
+
+    @property
+    def swept(self) -> tuple[str, ...]:
+        """Names of what is swept around."""
+        return tuple(sweep.axis.name for sweep in self.sweeps)
 
 
 def compiled(items: Sequence[Step | Sweep], steps: Mapping[str, StepSpec]) -> tuple[Node, ...]:

@@ -13,11 +13,12 @@ from benchrun.contract.actions import ReadAction
 from benchrun.contract.kinds import Kind
 from benchrun.recipe import Recipe
 from benchrun.recipe.model import Place
-from benchrun.schedule.columns import Columns, Moments, Table, blocks
+from benchrun.schedule.columns import Columns, all_rounds
 from benchrun.schedule.drive import DRIVE, Driver
 from benchrun.schedule.program import Node, Site, SweepNode, sites
 from benchrun.schedule.scope import Scope
 from benchrun.schedule.state import State
+from benchrun.schedule.table import Table
 from benchrun.schedule.timing import NS, Timetable
 from benchrun.schedule.walk import PlannedAction, Walk
 
@@ -78,6 +79,11 @@ class Schedule:
         return sum(node.readings for node in self._body)
 
     @property
+    def kinds(self) -> Mapping[str, Kind]:
+        """Kind of each condition by its full name."""
+        return self._around.kinds
+
+    @property
     def duration_s(self) -> float:
         """Time that the whole schedule is expected to take."""
         return self._timetable.duration_ns / NS
@@ -116,21 +122,20 @@ class Schedule:
         raise AssertionError("a walk from a reading takes that reading")
 
     def columns(self, chunk: int = CHUNK) -> Iterator[Columns]:
-        """Yield the conditions of all readings as arrays, at most `chunk` readings at once, place by place. Raises InputError."""
+        """Yield the conditions of all readings as arrays, at most `chunk` at once, by place. Raises InputError."""
         for site in self._sites:
-            for rounds in blocks(site, chunk):
+            for rounds in all_rounds(site, chunk):
                 yield self._table.columns(site, rounds)
 
     def moments(self, chunk: int = CHUNK) -> Iterator[Columns]:
-        """Yield what is in force between readings, after each single set while RF may be on, as arrays. Raises InputError."""
-        moments = Moments(self._around.table())
+        """Yield what is in force between readings, after each set while a signal is on. Raises InputError."""
         for site in self._sites:
-            for rounds in blocks(site, chunk):
-                yield from moments.on_the_way(site, rounds)
-        yield from moments.at_the_end(self._body, len(self))
+            for rounds in all_rounds(site, chunk):
+                yield from self._table.moments(site, rounds)
+        yield from self._table.moments_at_end(self._body, len(self))
 
     def _foresee(self, rounds: Sequence[tuple[SweepNode, int]]) -> None:
-        """Work out the levels of the readings that come next, all at once: one by one they would cost more than the walk."""
+        """Work out the levels of the next readings all at once: one by one they would cost more than the walk."""
         sweep, k = rounds[-1]
         driver = self._around.driver
         if driver is None or k % AHEAD:

@@ -1,4 +1,4 @@
-"""What a step sees while it expands: values in force, names of the bench, references. Nothing here does input or output."""
+"""What a step sees while it expands: values in force, names of the bench, references. No input or output."""
 
 from __future__ import annotations
 
@@ -15,7 +15,7 @@ from benchrun.recipe.references import DIFFERENCE, parse_sum, substitute
 
 
 class Noted(Mapping[str, float]):
-    """Values in force, which notes what was looked at. `values` and `words` are the walker's own, seen as they change."""
+    """Values in force; notes what was looked at. The mappings are the walker's own, seen as they change."""
 
     def __init__(self, values: Mapping[str, float], words: Mapping[str, str]) -> None:
         self.values_, self.words, self.noted = values, words, set[str]()
@@ -86,7 +86,7 @@ class Scope:
         return self._following
 
     def value(self, text_or_number: str | float, target: str) -> float:
-        """Resolve a quantity or a sum for a settable. Raises InputError where it has no value here, or is out of range."""
+        """Resolve a quantity or a sum for a settable. Raises InputError without a value here, or out of range."""
         settable = self._settables.get(target)
         if settable is None:
             raise InputError(f"nothing that can be set is called '{target}'. It has {', '.join(self._settables)}.")
@@ -131,7 +131,7 @@ def in_range(value: float, settable: Settable) -> float:
         raise InputError(f"{settable.name} would be {value}, which is no value. Check the sum and what it refers to.")
     if (low is None or value >= low) and (high is None or value <= high):
         return value
-    ends = f"{'any' if low is None else show(low, settable.kind)} to {'any' if high is None else show(high, settable.kind)}"
+    ends = " to ".join("any" if end is None else show(end, settable.kind) for end in (low, high))
     raise InputError(
         f"{settable.name} would be {show(value, settable.kind)}; the bench file allows {ends} (limits and ceiling). "
         "Change the recipe, or the bench file if the instrument can do it."

@@ -35,7 +35,7 @@ class State:
         self.words.pop(name, None)
 
     def apply(self, action: Action) -> Action | None:
-        """Bring an action into force. Returns what of it changes anything, None where nothing does. Raises InputError."""
+        """Bring an action into force. Returns what of it changes anything, None for nothing. Raises InputError."""
         if isinstance(action, SetAction):
             changed = [(name, value) for name, value in self._set(action) if name != DRIVE]
             return SetAction(tuple(changed)) if changed else None

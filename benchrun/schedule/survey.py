@@ -1,8 +1,8 @@
-"""The survey of a program, before anything is walked: every mistake that can be found without going through all conditions.
+"""The survey of a program: every mistake that can be found without going through all conditions.
 
-Each step is expanded where every sweep is at its first value, and where every sweep is at its last; a step that sets something also
-at the extremes of every sweep that it refers to. Sums of references have their extremes there. What lies between is looked at by the
-level check, which goes through all conditions.
+Each step is expanded where every sweep is at its first value, and where every sweep is at its last; a step that sets
+something also at the extremes of every sweep that it refers to. Sums of references have their extremes there. What
+lies between is looked at by the level check, which goes through all conditions.
 """
 
 from __future__ import annotations
@@ -18,7 +18,7 @@ from benchrun.quantities import show
 from benchrun.recipe.axis import Evenly
 from benchrun.recipe.model import Place
 from benchrun.schedule.drive import DRIVE, Driver
-from benchrun.schedule.program import Node, ReadSite, StepNode, SweepNode
+from benchrun.schedule.program import Node, ReadSite, StepNode, SweepNode, count_readings
 from benchrun.schedule.scope import Scope, in_range
 from benchrun.schedule.state import CONNECTED, PROBE_FREQUENCY, State
 
@@ -53,6 +53,19 @@ class Survey:
             self._scope.stand(self._state.values, self._state.words)
             self._list(body, pick)
         self._order(body, [])
+        count_readings(body)
+        self._reading(body)
+
+    def _reading(self, body: Sequence[Node]) -> None:
+        """Refuse sweeps that read nothing: what is between their ends would never be looked at."""
+        for node in body:
+            if isinstance(node, SweepNode):
+                self._reading(node.body)
+                if not node.each and not self.problems:
+                    text = (
+                        f"the sweep of {node.axis.name} reads nothing. Put a read step into it, or write its steps out."
+                    )
+                    self.problems.append(node.place.problem(text))
 
     def _list(self, body: Sequence[Node], pick: int) -> None:
         for node in body:
@@ -118,7 +131,9 @@ class Survey:
             self._state.apply(action)
         node.uses |= self._scope.noted
         if node.reads and node.reads != tuple(reads):
-            raise InputError(f"step '{node.spec.key}' reads other things at other conditions; a step always reads the same.")
+            raise InputError(
+                f"step '{node.spec.key}' reads other things at other conditions; a step always reads the same."
+            )
         node.reads, node.prompts = tuple(reads), prompts
 
     def _remember(self, node: StepNode, action: Action) -> None:
@@ -156,14 +171,20 @@ class Survey:
         for sweep in self._around:
             swept = sweep.axis.name
             if swept == name:
-                raise InputError(f"{name} is swept around this step, at line {sweep.place.line}; it cannot be set inside as well.")
+                raise InputError(
+                    f"{name} is swept around this step, at line {sweep.place.line}; it cannot be set inside as well."
+                )
             if {swept, name} <= tied:
-                raise InputError(f"{swept} is swept around this step, at line {sweep.place.line}, and {DRIVE} sets the level.")
+                raise InputError(
+                    f"{swept} is swept around this step, at line {sweep.place.line}, and {DRIVE} sets the level."
+                )
 
     def _check_read(self, action: ReadAction) -> None:
         for name in action.scalars:
             if name not in self._readables:
-                raise InputError(f"also: nothing that can be read is called '{name}'. It has {', '.join(self._readables)}.")
+                raise InputError(
+                    f"also: nothing that can be read is called '{name}'. It has {', '.join(self._readables)}."
+                )
         capture = action.capture
         own_grid = capture is not None and capture.frequencies_hz != (self._state.values.get(PROBE_FREQUENCY),)
         self._check_on(action.signals, needs_probe_frequency=not own_grid)
@@ -178,7 +199,9 @@ class Survey:
                 if full in self._state.values or (full == PROBE_FREQUENCY and not needs_probe_frequency):
                     continue
                 or_drive = f" (or {DRIVE})" if self._driver and full == self._driver.level else ""
-                raise InputError(f"{name} is on here, and {full}{or_drive} was not set before. Set it, so that its level is known.")
+                raise InputError(
+                    f"{name} is on here, and {full}{or_drive} was not set before. Set it, so that its level is known."
+                )
 
     def _check_tuning(self, action: ReadAction) -> None:
         """Raise InputError where a receiver would be tuned beyond its instrument's frequencies."""
@@ -188,7 +211,9 @@ class Survey:
             for frequency_hz in _tunings(action):
                 if limits is not None and not limits[0] <= frequency_hz <= limits[1]:
                     ends = f"{show(limits[0], 'frequency')} to {show(limits[1], 'frequency')}"
-                    raise InputError(f"receiver {wave} would be tuned to {show(frequency_hz, 'frequency')}; the bench file allows {ends}.")
+                    raise InputError(
+                        f"receiver {wave} would be at {show(frequency_hz, 'frequency')}; the bench file allows {ends}."
+                    )
 
     def _check_connect(self, plane: str, what: str) -> None:
         if plane not in self._planes:
@@ -227,8 +252,8 @@ class Survey:
                 for name in sorted(node.uses & self._settables.keys()):
                     if _stale(name, way):
                         self.problems.append(node.place.problem(
-                            f"{name} is set later in the same sweep, so what this step makes of it would depend on the round before. "
-                            "Set it before this step."
+                            f"{name} is set later in the same sweep, so what this step makes of it would depend on "
+                            "the round before. Set it before this step."
                         ))  # fmt: skip
 
 
@@ -250,7 +275,7 @@ def _site(action: ReadAction) -> ReadSite:
     capture = action.capture
     waves = () if capture is None else capture.waves
     grid = capture.frequencies_hz if capture is not None and len(capture.frequencies_hz) > 1 else ()
-    return ReadSite(action.name, action.signals, waves, grid)
+    return ReadSite(action.name, action.signals, waves, action.scalars, grid)
 
 
 def _tunings(action: ReadAction) -> Iterator[float]:

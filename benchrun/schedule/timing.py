@@ -1,7 +1,7 @@
-"""How long a schedule takes, by a model of what each action costs: to say beforehand, and to give each reading its start.
+"""How long a schedule takes, by a model of what each action costs; and when each reading starts.
 
-The timetable is an upper estimate by a little: a reading waits for its start where time is virtual, so every reading of a rehearsal
-starts at its time exactly, resumed or not. All numbers of the model stand in `Timing`.
+The timetable is an upper estimate by a little: a reading waits for its start where time is virtual, so every reading
+of a rehearsal starts at its time exactly, resumed or not. All numbers of the model stand in `Timing`.
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 from benchrun.bench import Bench
-from benchrun.contract.actions import Action, AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
+from benchrun.contract.actions import Action, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.capture import Capture
 from benchrun.contract.hooks import StepSpec
 from benchrun.schedule.program import Node, StepNode, SweepNode
@@ -140,8 +140,8 @@ class ActionTimes:
         return self._timing.procedure_s if known is None else known(action.parameters)
 
 
-# The timetable: each list of the program with the times of its steps. A sweep has two: for its first round, where much is set
-# for the first time, and for each later one.
+# The timetable: each list of the program with the times of its steps. A sweep has two: for its first round, where much
+# is set for the first time, and for each later one.
 
 
 @dataclass(frozen=True, slots=True)
@@ -201,7 +201,7 @@ class _TimedSweep:
 
 
 class Timetable:
-    """When each reading starts, and when all is over (ns from the beginning). Made by going through the first two rounds of sweeps."""
+    """When each reading starts and when all is over, in ns; from the first two rounds of every sweep."""
 
     def __init__(self, body: Sequence[Node], new_state: Callable[[], State], scope: Scope, times: ActionTimes) -> None:
         self._state, self._scope, self._times = new_state(), scope, times
@@ -264,5 +264,3 @@ class Timetable:
                 self._scope.begin(inner.following)
                 for action in inner.spec.expand(inner.model, self._scope):
                     self._state.apply(action)
-
-

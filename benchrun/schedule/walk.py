@@ -1,8 +1,8 @@
-"""Walking a program: action by action from the beginning, or from any reading, standing there as if all before had been done.
+"""Walking a program, action by action: from the beginning, or from any reading as if all before had been done.
 
-To stand at a reading, each list around it is gone through up to it; of a sweep that is over its last round is, of a sweep that it lies
-in the round before. That is enough, because a round sets the same names each time and from nothing that an earlier round left behind
-(the survey refuses steps that would).
+To stand at a reading, each list around it is gone through up to it; of a sweep that is over its last round is, of a
+sweep that it lies in the round before. That is enough, because a round sets the same names each time and from nothing
+that an earlier round left behind (the survey refuses steps that would).
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from benchrun.schedule.state import PROBE_FREQUENCY, State
 
 @dataclass(frozen=True, slots=True)
 class PlannedAction:
-    """One action of the schedule: what is in force when it is done, the reading it takes (None: none), and where it is written."""
+    """One action of the schedule: what is in force with it, the reading it takes (None: none), where it is written."""
 
     action: Action
     conditions: dict[str, float | str]
@@ -182,8 +182,15 @@ def _still_in_force(events: Sequence[_Event], state: State) -> Iterator[_Event]:
     asks = [n for n, event in enumerate(events) if isinstance(event.action, AskAction)]
     reads = [n for n, event in enumerate(events) if isinstance(event.action, ReadAction)]
     after_asks, after_reads = max(asks, default=-1), max(reads, default=-1)
-    last_set = {name: n for n, event in enumerate(events) if isinstance(event.action, SetAction) for name, _ in event.action.values}
-    last_link = {e.action.connect[0]: n for n, e in enumerate(events) if isinstance(e.action, AskAction) and e.action.connect}
+    last_set = {
+        name: n
+        for n, event in enumerate(events)
+        if isinstance(event.action, SetAction)
+        for name, _ in event.action.values
+    }
+    last_link = {
+        e.action.connect[0]: n for n, e in enumerate(events) if isinstance(e.action, AskAction) and e.action.connect
+    }
     waits = []
     for n, event in enumerate(events):
         action = event.action
