@@ -30,7 +30,7 @@ def dialect_for(spec: DriverSpec, path: Path | None) -> Dialect:
     over = _or_raise(_checked(source)) if path else None
     problems = _strangers(source, generic, over) if over else []
     dialect, wrong = compile_dialect(merged(generic, over))
-    problems += [source.problem(_at(source, name), f"entry '{name}': {text}") for name, text in wrong.items()]
+    problems += [source.problem(_at(source, name), f"entry '{name}': {text}", at_key=True) for name, text in wrong.items()]
     absent = missing(dialect, set(spec.needs) - set(wrong))
     if absent:
         advice = "give their headers in this file" if path else "name a dialect file of its make under `dialect:`"

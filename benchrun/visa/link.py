@@ -14,6 +14,7 @@ from __future__ import annotations
 import threading
 from collections import deque
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 from functools import partial
 from typing import Any, Protocol, TypeVar
 
@@ -44,6 +45,8 @@ EXPLAIN_S = 0.5
 #: How long a query may take that only asks whether it is understood, and how long the error queue may then be waited for.
 PROBE_S = 0.25
 LONG_PROBE_S = 3.0
+#: Length of the shortest text behind a block, ;0,"" and a line feed; what this instrument says is learned.
+SHORTEST_TAIL = 6
 REMEMBERED = 64
 #: How often a link is opened anew before it is given up.
 REOPENINGS = 3
@@ -66,7 +69,9 @@ class Wire(Protocol):
     def query(self, message: str, deadline_s: float) -> str:
         """Write a message, return the line that answers it."""
 
-    def query_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[bytes | None, str]:
+    def query_block(
+        self, message: str, payload_bytes: int, tail_bytes: int, deadline_s: float
+    ) -> tuple[memoryview | None, str]:
         """Write a message, return the block that answers it and the text behind it."""
 
     def reopen(self) -> None:
@@ -93,6 +98,8 @@ class Session:
         self.suspect = False
         self.restarted = False
         self._watching = False
+        self._seen_ns = 0
+        self._tail_bytes = SHORTEST_TAIL
         self._wire = wire
         self._dialect = dialect
         self._clock = clock
@@ -296,6 +303,12 @@ class Session:
 
     # Exchanges
 
+    def _now_ns(self) -> int:
+        """Return the bench time; the last known one where the clock is out of reach (that of a served rehearsal is remote)."""
+        with suppress(OSError):
+            self._seen_ns = self._clock.now_ns()
+        return self._seen_ns
+
     def _set_and_read_back(self, wanted: Sequence[Use], deadline_s: float | None) -> tuple[Any, ...]:
         stands = self._run(wanted, wanted, deadline_s)
         for use, there in zip(wanted, stands, strict=True):
@@ -329,7 +342,7 @@ class Session:
         """Send a message and return its answer; the link is suspect if that fails."""
         if self.suspect:
             self.reopen()
-        started_ns = self._clock.now_ns()
+        started_ns = self._now_ns()
         try:
             text = self._wire.query(message, deadline_s)
         except BaseException as error:
@@ -340,12 +353,12 @@ class Session:
         self.exchanges.append(Exchange(started_ns, message, text, ""))
         return text
 
-    def _say_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[bytes | None, str]:
+    def _say_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[memoryview | None, str]:
         if self.suspect:
             self.reopen()
-        started_ns = self._clock.now_ns()
+        started_ns = self._now_ns()
         try:
-            payload, text = self._wire.query_block(message, payload_bytes, deadline_s)
+            payload, text = self._wire.query_block(message, payload_bytes, self._tail_bytes, deadline_s)
         except BaseException as error:
             self._failed(started_ns, message, error)
             if isinstance(error, NoAnswerError):
@@ -391,6 +404,7 @@ class Session:
             raise self._explained(self._garbled(message, error), message) from error
         if answer.error.number:
             raise self._complaint(self._rest_of_queue(answer.error), message)
+        self._tail_bytes = len(text) - text.rfind(";") + 1
         return answer
 
     def _understood(self, message: str, read: Callable[[], T]) -> T:
@@ -402,7 +416,7 @@ class Session:
 
     def _garbled(self, message: str, error: ReplyError) -> ReplyError:
         full = ReplyError(f"{self._wire.where}: answer to '{message}': {error}")
-        self._failed(self._clock.now_ns(), message, full)
+        self._failed(self._now_ns(), message, full)
         return full
 
     def _complaint(self, entries: Sequence[scpi.ErrorEntry], message: str) -> InstrumentError:
@@ -411,7 +425,7 @@ class Session:
         error = InstrumentError(
             f"{self._wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual"
         )
-        self.exchanges.append(Exchange(self._clock.now_ns(), message, listed, str(error)))
+        self.exchanges.append(Exchange(self._now_ns(), message, listed, str(error)))
         return error
 
     def _rest_of_queue(self, first: scpi.ErrorEntry) -> list[scpi.ErrorEntry]:
@@ -457,7 +471,7 @@ class Session:
         What was in the queue belongs to the exchange that failed, and goes to the transcript only.
         """
         for _ in range(LONGEST_QUEUE):
-            started_ns = self._clock.now_ns()
+            started_ns = self._now_ns()
             text = self._wire.query(ERROR_QUERY, DEADLINE_S)
             self.exchanges.append(Exchange(started_ns, ERROR_QUERY, text, "after opening the link anew"))
             try:

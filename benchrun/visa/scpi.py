@@ -191,7 +191,7 @@ def make_block(payload: bytes) -> bytes:
     return b"#%d%b%b" % (len(length), length, payload)
 
 
-def parse_floats(payload: bytes, count: int) -> FloatArray:
+def parse_floats(payload: bytes | memoryview, count: int) -> FloatArray:
     """Return `count` numbers from big-endian float64. Raises ReplyError for another count, NaN, infinity or 9.9E37."""
     if len(payload) != 8 * count:
         raise ReplyError(f"{count} numbers of 8 bytes were expected ({8 * count} bytes), {len(payload)} bytes arrived")

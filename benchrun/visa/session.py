@@ -17,7 +17,6 @@ import socket
 import threading
 import time
 from collections import Counter, deque
-from collections.abc import Iterator
 from typing import Any, ClassVar
 
 import pyvisa
@@ -37,7 +36,7 @@ __all__ = ["Bus", "Session", "Wire"]
 #: Bytes asked for in one read of text; an answer may be longer.
 CHUNK = 16384
 #: Bytes that pyvisa-py takes from a raw socket at once (its own 4096 costs a block 20 % of its time).
-SOCKET_CHUNK = 1 << 18
+SOCKET_CHUNK = 1 << 17
 OPEN_DEADLINE_S = 5.0
 QUIET = (StatusCode.success_max_count_read, StatusCode.success_device_not_present)
 
@@ -54,6 +53,7 @@ class Wire:
         self._handle: Any = None
         self._timeout_ms = -1
         self._by_line = False
+        self._promised = 0
         self._quiet = contextlib.ExitStack()
 
     @property
@@ -134,67 +134,54 @@ class Wire:
             raise self._failed(error, message, deadline_s) from error
         return self._text(answer, message)
 
-    def query_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[bytes | None, str]:
+    def query_block(
+        self, message: str, payload_bytes: int, tail_bytes: int, deadline_s: float
+    ) -> tuple[memoryview | None, str]:
         """Write a message and return the block that answers it, and the text behind it.
 
-        (None, text) where the answer is no block: the instrument had an error to tell of. Raises ReplyError for a block that is
-        shorter than its header says or of another length, and as query() does.
+        `tail_bytes` is how long that text is at least; it comes with the payload in one read. (None, text) where the answer
+        is no block: the instrument had an error to tell of. Raises ReplyError for a block that is shorter than its header
+        says or of another length, and as query() does.
         """
         ends = time.monotonic() + deadline_s
         try:
             self._write(message, deadline_s)
             self._terminate(False)
             head = self._read_exactly(2 + len(str(payload_bytes)), ends)
-            payload = self._read_payload(head, payload_bytes, ends) if head[:1] == b"#" else None
+            payload, tail = self._read_block(head, payload_bytes, tail_bytes, ends) if head[:1] == b"#" else (None, head)
             self._terminate(True)
-            tail = self._read_tail(payload, ends)
+            if tail[-1:] != b"\n":
+                tail += self._read_line(ends)
+            self._see_end(payload, tail)
         except Exception as error:
             raise self._failed(error, message, deadline_s) from error
-        return payload, self._text(tail if payload is not None else head + tail, message)
+        finally:
+            self._promised = 0
+        return payload, self._text(tail, message)
 
-    def _read_payload(self, head: bytes, expected: int, ends: float) -> bytes:
-        """Return the payload of a block of which as many bytes were read as its shortest header has."""
+    def _read_block(self, head: bytes, expected: int, tail_bytes: int, ends: float) -> tuple[memoryview, bytes]:
+        """Return payload and tail of a block of which as many bytes were read as its shortest header has."""
         start = 2 + scpi.block_digits(head)
         if start > len(head):
             head += self._read_exactly(start - len(head), ends)
         length = scpi.block_length(head[2:start]) if start > 2 else expected
         if length != expected:
             raise ReplyError(f"the block's header says {length} bytes, {expected} were expected")
-        begun = head[start:]
-        with self._short_block(length):
-            rest = self._read_exactly(length - len(begun), ends)
-        payload = begun + rest if begun else rest
-        if len(payload) < length:
-            raise ReplyError(f"the block's header says {length} bytes, {len(payload)} arrived")
-        return payload
+        self._promised = length
+        data = self._read_exactly(length + start - len(head) + tail_bytes, ends)
+        if start < len(head):
+            data = head[start:] + data
+        if len(data) < length:
+            raise ReplyError(f"the block's header says {length} bytes, {len(data)} arrived")
+        return memoryview(data)[:length], data[length:]
 
-    def _read_tail(self, payload: bytes | None, ends: float) -> bytes:
-        """Return the text behind a block, or the rest of the line that came in its place.
-
-        A block that is shorter than it says swallows what follows it: so what follows must begin as it should.
-        """
-        if payload is None:
-            return self._read_line(ends)
-        with self._short_block(len(payload)):
-            tail = self._read_line(ends)
-        if tail[:1] != b";":
+    @staticmethod
+    def _see_end(payload: memoryview | None, tail: bytes) -> None:
+        """A block that is shorter than it says swallows what follows it: so what follows must begin as it should."""
+        if payload is not None and tail[:1] != b";":
             raise ReplyError(
                 f"the block's header says {len(payload)} bytes, and its end is not there: fewer or more arrived"
             )
-        return tail
-
-    @staticmethod
-    @contextlib.contextmanager
-    def _short_block(length: int) -> Iterator[None]:
-        """Turn running into the deadline in the middle of a block into what it means."""
-        try:
-            yield
-        except pyvisa.VisaIOError as error:
-            if error.error_code != StatusCode.error_timeout:
-                raise
-            raise ReplyError(
-                f"the block's header says {length} bytes, and fewer arrived before the deadline"
-            ) from error
 
     def _write(self, message: str, deadline_s: float) -> None:
         if self._handle is None:
@@ -251,6 +238,9 @@ class Wire:
         if isinstance(error, BenchError):
             return error
         timed_out = isinstance(error, TimeoutError) or getattr(error, "error_code", None) == StatusCode.error_timeout
+        if timed_out and self._promised:
+            text = f"the block's header says {self._promised} bytes, and fewer arrived before the deadline"
+            return ReplyError(f"{self.where}: answer to '{message}': {text}. {CHECK_LINE}")
         if timed_out and not self._hung_up():
             return NoAnswerError(f"{self.where}: did not answer '{message}' within {deadline_s:g} s. {CHECK_LINE}")
         return LinkError(f"{self.where}: the link broke at '{message}' ({_reason(error)}). {CHECK_LINE}")

@@ -148,7 +148,7 @@ class GenericWaveReceiver(OverLink):
 
     def _sweep(self, capture: Capture) -> WaveData:
         watched = tuple(entry for entry in WATCHED if entry in self._stands)
-        asks = [(entry, {}) for entry in ("limits", *watched)]
+        asks: list[Call] = [(entry, {}) for entry in ("limits", *watched)]
         limits, *found = self.link.exchange([("sweep", {})], asks, deadline_s=self._deadline_s(capture))
         self._see_untouched(dict(zip(watched, found, strict=True)))
         if len(limits) != len(capture.waves):

@@ -59,7 +59,7 @@ def test_all_mistakes_at_once_each_at_its_place(tmp_path: Path, registry: Regist
     with pytest.raises(FileProblemsError) as caught:
         dialect_for(registry.drivers["signal-source"], path)
     told = [str(problem).removeprefix(str(path)) for problem in caught.value.problems]
-    assert [one.split(" ")[0] for one in told] == [":3:3:", ":5:5:", ":6:22:"]
+    assert [one.split(" ")[0] for one in told] == [":3:3:", ":4:3:", ":6:22:"]
     assert "no entry 'lvel'" in told[0]
     assert "entry 'level'" in told[1]
     assert "never fills {onn}" in told[2]
