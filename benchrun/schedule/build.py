@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping, Sequence
+from typing import Any
 
 from benchrun.bench import Bench, Kit
 from benchrun.contract.hooks import StepSpec
@@ -18,6 +19,7 @@ from benchrun.schedule.timing import ActionTimes, Timetable, Timing
 
 #: Changes when the same recipe and bench would give another schedule than before.
 VERSION = 1
+_WAYS = ("visa", "simulated", "rehearsal-channel")
 
 
 def build_schedule(
@@ -58,12 +60,23 @@ def _hash(recipe: Recipe, bench: Bench, steps: Mapping[str, StepSpec], drive_gai
     content = {
         "schedule": VERSION,
         "recipe": recipe.document(),
-        "bench": json.loads(bench.canonical()),
-        "drive": drive_gain.to_document() if drive_gain is not None else None,
+        "bench": _without_ways(json.loads(bench.canonical())),
+        "drive": _without_dates(drive_gain.to_document()) if drive_gain is not None else None,
         "steps": {key: [steps[key].expand.__module__, steps[key].model.model_json_schema()] for key in used},
     }
     text = json.dumps(content, sort_keys=True, separators=(",", ":"), allow_nan=False)
     return hashlib.sha256(text.encode()).hexdigest()
+
+
+def _without_ways(bench: dict[str, Any]) -> dict[str, Any]:
+    """Leave out how the instruments are reached: the same happens in-process, over HiSLIP and over raw sockets."""
+    instruments = {name: {**one, "address": ""} for name, one in bench["instruments"].items()}
+    return {key: value for key, value in bench.items() if key not in _WAYS} | {"instruments": instruments}
+
+
+def _without_dates(drive: Mapping[str, Any]) -> dict[str, Any]:
+    """Leave out when and from what the drive was levelled: the same table gives the same levels."""
+    return {key: value for key, value in drive.items() if key != "circumstances"}
 
 
 def _steps(body: Sequence[Node]) -> list[StepNode]:
