@@ -20,8 +20,8 @@ def calibrate_step(work: Work, values: Values) -> Results:
     """Calibrate `plane` from the readings `standards` and `power`: a table with residuals, and the calibration."""
     plane, standards = values["plane"], work.points(values["standards"])
     power = work.points(values["power"]) if values.get("power") else None
-    circumstances = work.circumstances(power or standards, plane, values["valid_for_s"])
-    facts = work.facts(plane)
+    circumstances = work.circumstances(power if power is not None else standards, plane, values["valid_for_s"])
+    facts, flags = work.facts(plane), standards.flags + (power.flags if power is not None else ())
     calibration, residuals = calibrate(values["name"], standards, power, work.definitions, facts, circumstances)
     told = ", ".join(f"{name} {rms:.4f}" for name, rms in calibration.residuals.items())
     until = show_time(circumstances.valid_until_utc)
@@ -30,8 +30,8 @@ def calibrate_step(work: Work, values: Values) -> Results:
         (Table("calibration", _calibration_columns(calibration, residuals)),),
         (),
         {("calibration", calibration.name): calibration.to_document()},
-        notes + flag_notes(standards.flags),
-        counted(standards.flags),
+        notes + flag_notes(flags),
+        counted(flags),
     )
 
 

@@ -363,3 +363,12 @@ def test_a_drive_below_what_was_levelled_is_said(bench):
     found = hot(bench, bench.hot_readings(drives=[11.0, 14.0]))
     assert "dB below what was levelled: the gain is carried on" in found.notes[0]
     assert "below what was levelled" not in hot(bench).notes[0]
+
+
+def test_flags_of_a_calibration_are_counted(bench):
+    power = bench.power_readings()
+    power[3] = replace(power[3], flags=("over-limit:incident",))
+    readings = {"standard": bench.calibration_readings(), "power": power}
+    found = derive([CALIBRATE], readings, bench.facts, {}, STANDARDS, PROVENANCE)
+    assert found.flags == {"over-limit:incident": 1}
+    assert any("flagged over-limit:incident" in note for note in found.notes)
