@@ -11,7 +11,7 @@ from benchrun.derive.standards import Standard
 LABELLED_OPEN = Standard(
     "open",
     delay_s=40.856e-12,
-    offset_loss_ohm_per_s=0.93e9,
+    loss_ohm_per_s=0.93e9,
     capacitance=(89.939e-15, 2536.8e-27, -264.99e-36, 13.4e-45),
 )
 
