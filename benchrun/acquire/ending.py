@@ -66,10 +66,10 @@ def log(around: Surroundings, outcome: Outcome, said: Iterable[Said], error: Bas
     around.writer.log(Event("safe-state", safe.text, detail, at_ns))
 
 
-def explained(error: BaseException, outcome: Outcome, around: Surroundings) -> BaseException:
+def explained(error: BaseException | None, outcome: Outcome, around: Surroundings) -> BaseException:
     """Return the error to raise: one message that says what happened, how the bench was left, and what is safe."""
     text = _message(outcome, around)
-    if not outcome.safe.safe:
+    if error is None or not outcome.safe.safe:
         return UnsafeError(text)
     if isinstance(error, KeyboardInterrupt):
         return StoppedError(text)

@@ -26,8 +26,7 @@ from benchrun.contract.hooks import StepSpec
 from benchrun.contract.reading import Reading
 from benchrun.errors import InstrumentError, StoppedError
 
-
-#: Virtual time at which the timetable begins: opening and preparing a bench takes less, however it is reached.
+#: In virtual time the timetable begins at the next whole multiple of this: opening and preparing a bench takes less.
 LEAD_NS = 5_000_000_000
 
 
@@ -106,8 +105,9 @@ class Performer:
 
     def begin(self) -> None:
         """Start the timetable now; in virtual time always at the same moment, so that a rehearsal can be done again."""
-        self._around.clock.align(LEAD_NS)
-        self._origin_ns = self._around.clock.now_ns()
+        clock = self._around.clock
+        clock.align((clock.now_ns() // LEAD_NS + 1) * LEAD_NS)
+        self._origin_ns = clock.now_ns()
         self._started_s = time.monotonic()
 
     def perform(self, planned: Planned, following: Action | None) -> None:

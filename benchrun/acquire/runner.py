@@ -17,6 +17,7 @@ from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.acquire.safe_state import SafeReport, make_safe
 from benchrun.acquire.stop import StopRequest
 from benchrun.acquire.witness import Witness
+from benchrun.archive.meta import Event as Happening
 from benchrun.archive.write import ArchiveWriter
 from benchrun.contract.actions import Action, AskAction
 from benchrun.contract.clock import Clock
@@ -80,7 +81,7 @@ class _Run:
         report = self._made_safe()
         outcome = self._outcome(error, report)
         error = self._written_down(outcome, said, error)
-        if error is None:
+        if error is None and report.safe:
             self._around.progress.phase("bring-down", report.text)
             return outcome
         raised = ending.explained(error, outcome, self._around)
@@ -115,6 +116,16 @@ class _Run:
         if not report.safe:
             raise InstrumentError(f"the bench cannot be brought to rest: {'; '.join(report.reasons)}")
         around.bench.prepare()
+        self._see_reference()
+
+    def _see_reference(self) -> None:
+        """Write down which instruments are locked to the common reference; readings are flagged one by one."""
+        around = self._around
+        locked = {name: around.bench.signal(name).locked() for name in around.outputs.signals}
+        text = ", ".join(f"{name} {'locked' if there else 'NOT locked'}" for name, there in locked.items())
+        around.writer.log(Happening("reference", text, locked, around.clock.now_ns()))
+        if not all(locked.values()):
+            around.progress.message(f"reference: {text}. Readings are flagged; check the reference's cable")
 
     def _made_safe(self) -> SafeReport:
         around = self._around

@@ -2,8 +2,8 @@
 
 Sources off, read back; a receiver looks whether it still sees them; drain off, and read back below the bench's limit,
 with patience; only then the gate. If anything before the gate is not confirmed the gate is never touched, and that is
-said loudly. A link that fails is opened anew. Nothing that an instrument, a link or a driver does keeps the steps behind
-it from being tried.
+said loudly. A link that fails is opened anew. Nothing that an instrument, a link or a driver does keeps the steps
+behind it from being tried.
 """
 
 from __future__ import annotations

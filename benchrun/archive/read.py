@@ -22,7 +22,7 @@ from benchrun.errors import FolderError
 
 PATIENCE_MS = 5000
 _IN_ORDER = "ORDER BY schedule_index, name, attempt"
-_DAMAGED = "`benchrun show` says what of it can still be read; look for a copy before you work on it"
+_DAMAGED = "Look for a copy of the run folder, and keep this one as it is"
 
 
 class ArchiveReader:
@@ -128,7 +128,7 @@ class ArchiveReader:
 
 
 def open_archive(path: Path) -> ArchiveReader:
-    """Open the archive of a run: its folder, or the file. Nothing is written.
+    """Open the archive of a run: its folder, or the file. No reading is touched.
 
     Raises FolderError where there is none, where the file is damaged or foreign, or where a later benchrun wrote it.
     """
@@ -152,18 +152,32 @@ def _connect(file: Path) -> apsw.Connection:
     """Open read-only; on a disk that cannot be written, without the files beside it that SQLite would want to make."""
     flags = apsw.SQLITE_OPEN_READONLY | apsw.SQLITE_OPEN_URI
     frozen = not media.writable(file.parent)
-    if frozen and _unsettled(file):
+    if frozen and (_beside(file, "-wal") or _beside(file, "-journal")):
         raise FolderError(
-            f"{file}: its run did not end in order, and its newest readings are in {file.name}-wal beside it. "
+            f"{file}: its run did not end in order, and its newest readings are in a file beside it. "
             "Copy the whole folder to a disk that can be written, and open it there"
         )
+    if _beside(file, "-journal"):
+        _roll_back(file)
     with _readable(file):
         return apsw.Connection(f"{file.resolve().as_uri()}{'?immutable=1' if frozen else ''}", flags=flags)
 
 
-def _unsettled(file: Path) -> bool:
-    log = file.with_name(f"{file.name}-wal")
-    return log.exists() and log.stat().st_size > 0
+def _beside(file: Path, ending: str) -> bool:
+    """Whether SQLite left something in a file beside this one."""
+    other = file.with_name(f"{file.name}{ending}")
+    return other.exists() and other.stat().st_size > 0
+
+
+def _roll_back(file: Path) -> None:
+    """Let SQLite undo a closing that broke off in the middle, which a reader may not. No reading is touched."""
+    with _readable(file):
+        connection = apsw.Connection(str(file), flags=apsw.SQLITE_OPEN_READWRITE)
+        connection.set_busy_timeout(PATIENCE_MS)
+        try:
+            _pragma(connection, "user_version")
+        finally:
+            connection.close(force=True)
 
 
 def _require_ours(file: Path, connection: apsw.Connection) -> None:

@@ -56,14 +56,15 @@ class ArchiveWriter:
                 f"{folder}: cannot be made ({error.strerror or error}). Choose another folder with --to"
             ) from error
         media.refuse_network(folder)
-        lock = media.WriterLock(folder)
-        try:
+        with contextlib.ExitStack() as undo:
+            lock = media.WriterLock(folder)
+            undo.callback(lock.release)
             _require_absent(path)
+            undo.callback(_remove, path)
             writer = cls._opened(path, lock, vfs, make=True)
+            undo.callback(writer._connection.close, force=True)
             writer._begin(meta)
-        except BaseException:
-            lock.release()
-            raise
+            undo.pop_all()
         return writer
 
     @classmethod
@@ -71,16 +72,13 @@ class ArchiveWriter:
         """Open the archive of a run that has ended, to add to it. Raises FolderError, DiskError."""
         from benchrun.archive.read import open_archive
 
-        with open_archive(folder) as reader:
-            count = reader.count_all
+        open_archive(folder).close()
         media.refuse_network(folder)
-        lock = media.WriterLock(folder)
-        try:
+        with contextlib.ExitStack() as undo:
+            lock = media.WriterLock(folder)
+            undo.callback(lock.release)
             writer = cls._opened(folder / schema.FILE_NAME, lock, None, make=False)
-        except BaseException:
-            lock.release()
-            raise
-        writer._readings = count
+            undo.pop_all()
         return writer
 
     @classmethod
@@ -92,6 +90,7 @@ class ArchiveWriter:
         try:
             with _on_disk(path, "opened", 0):
                 _configure(connection)
+                writer._readings = 0 if make else int(connection.execute("SELECT count(*) FROM reading").get)
         except BaseException:
             connection.close(force=True)
             raise
@@ -100,14 +99,9 @@ class ArchiveWriter:
     def _begin(self, meta: Meta) -> None:
         stored = asdict(meta)
         stored["started_utc"] = meta.started_utc or utc_now()
-        try:
-            with self._transaction("begun"):
-                self._execute(schema.TABLES)
-                self._connection.executemany(_META, [(key, to_json(value)) for key, value in stored.items()])
-        except BaseException:
-            self._connection.close(force=True)
-            self.path.unlink(missing_ok=True)
-            raise
+        with self._transaction("begun"):
+            self._execute(schema.TABLES)
+            self._connection.executemany(_META, [(key, to_json(value)) for key, value in stored.items()])
 
     @property
     def readings(self) -> int:
@@ -214,6 +208,13 @@ def _require_absent(path: Path) -> None:
         raise FolderError(
             f"{path}: there is an archive already, and none is overwritten. Choose another folder with --to"
         )
+
+
+def _remove(path: Path) -> None:
+    """Remove an archive that could not be begun, so that the folder can be used once there is room."""
+    for ending in ("", "-wal", "-shm", "-journal"):
+        with contextlib.suppress(OSError):
+            path.with_name(f"{path.name}{ending}").unlink()
 
 
 def _configure(connection: apsw.Connection) -> None:

@@ -1,4 +1,4 @@
-"""A bench of plain objects that counts its exchanges, can fail at any of them, and remembers what was done to the device.
+"""A bench of plain objects: it counts exchanges, fails at any of them, and remembers what was done to the device.
 
 Independent of drivers and of the simulated bench: it says only what a switch, a supply or a receiver does.
 """
@@ -6,9 +6,10 @@ Independent of drivers and of the simulated bench: it says only what a switch, a
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
+from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -83,8 +84,8 @@ class FakeSession:
 class FakeInstrument:
     """What all fakes share."""
 
-    settables: dict[str, Any] = {}
-    readables: dict[str, Any] = {}
+    settables: Mapping[str, Any] = MappingProxyType({})
+    readables: Mapping[str, Any] = MappingProxyType({})
 
     def __init__(self, bench: FakeBench, name: str) -> None:
         self.bench, self.name = bench, name
@@ -171,7 +172,9 @@ class FakeReceiver(FakeSource):
         for tone, name in enumerate(self.capture.tones):
             if name in self.bench.rf or name in self.bench.leaking:
                 data[tone] = 0.1 + 0.01j * (1 + np.arange(data[tone].size).reshape(data[tone].shape))
-        return self.bench.mangle(WaveData(data, tuple(name in self.bench.overdriven for name in self.capture.waves), True))
+        return self.bench.mangle(
+            WaveData(data, tuple(name in self.bench.overdriven for name in self.capture.waves), True)
+        )
 
     def make_safe(self) -> None:
         self.capture = None
@@ -221,7 +224,7 @@ Fault = Callable[[FakeSession, str], BaseException]
 
 
 class FakeBench:
-    """Pump, analyser, meter, supply and thermometer (acquire.opened.OpenBench), and everything a test wants to know of them."""
+    """The bench (acquire.opened.OpenBench), and what a test wants to know of it."""
 
     def __init__(self, clock: FakeClock | None = None, fall_s: float = 0.25) -> None:
         self.clock = clock or FakeClock()
@@ -294,7 +297,9 @@ class FakeBench:
 
     def read(self, target: str) -> float:
         first, _, quantity = target.partition(".")
-        return self.supply_.read(target) if first in OUTPUTS.bias_limits else float(self.instruments[first].read(quantity))
+        return (
+            self.supply_.read(target) if first in OUTPUTS.bias_limits else float(self.instruments[first].read(quantity))
+        )
 
 
 @dataclass(frozen=True)
@@ -308,7 +313,7 @@ class FakePlanned:
 
 @dataclass
 class FakeSchedule:
-    """A schedule from a list of actions; a reading every `slot_s`, the first after one. Conditions are empty unless given by the reading's number."""
+    """A schedule from a list of actions; a reading every `slot_s`, the first after one."""
 
     actions: list[Action]
     slot_s: float = 1.0
@@ -364,12 +369,24 @@ class MemoryWriter:
 def capture(hz: float | Sequence[float] = 2.3e9, tones: Sequence[str] = ("probe", "pump"), **more: Any) -> Capture:
     """Return a capture of both waves at the probe and 7 MHz below it."""
     grid = (hz,) if isinstance(hz, float) else tuple(hz)
-    return Capture(("incident", "reflected"), tuple(tones), tuple(-7e6 * k for k in range(len(tones))), grid, 1e3, **more)
+    return Capture(
+        ("incident", "reflected"), tuple(tones), tuple(-7e6 * k for k in range(len(tones))), grid, 1e3, **more
+    )
 
 
 def meta(planned: int = 3) -> Meta:
     """Return a plausible account of a run."""
-    return Meta("run-1", "A run", "a.recipe.yaml", "a.bench.yaml", {"a.recipe.yaml": "benchrun: 1\n"}, "0" * 64, planned, "simulated:1", 1)
+    return Meta(
+        "run-1",
+        "A run",
+        "a.recipe.yaml",
+        "a.bench.yaml",
+        {"a.recipe.yaml": "benchrun: 1\n"},
+        "0" * 64,
+        planned,
+        "simulated:1",
+        1,
+    )
 
 
 def no_answer(session: FakeSession, what: str) -> BaseException:

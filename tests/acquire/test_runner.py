@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+from pydantic import BaseModel
 
 from benchrun.acquire import (
     Outcome,
@@ -32,7 +33,6 @@ from benchrun.errors import (
     StoppedError,
     UnsafeError,
 )
-from pydantic import BaseModel
 from tests.acquire.fake_bench import (
     BENCH,
     FakeBench,
@@ -80,11 +80,17 @@ class Recorder(Silent):
         self.indices: list[int] = []
         self.lefts: list[tuple[float, float]] = []
         self.paused = 0
+        self.messages: list[str] = []
+
+    def message(self, text: str) -> None:
+        self.messages.append(text)
 
     def phase(self, name: str, text: str) -> None:
         self.phases.append((name, text))
 
-    def reading(self, index: int, total: int, conditions: Any, elapsed_s: float, left_s: float, bench_left_s: float, flags: Any) -> None:
+    def reading(
+        self, index: int, total: int, conditions: Any, elapsed_s: float, left_s: float, bench_left_s: float, flags: Any
+    ) -> None:
         self.indices.append(index)
         self.lefts.append((left_s, bench_left_s))
 
@@ -129,7 +135,9 @@ def asks(answers: dict[str, str] | None = None, then: Any = None) -> Any:
 
     class Asked:
         available = True
-        prompts: list[Prompt] = []
+
+        def __init__(self) -> None:
+            self.prompts: list[Prompt] = []
 
         def ask(self, prompt: Prompt) -> str:
             self.prompts.append(prompt)
@@ -137,7 +145,6 @@ def asks(answers: dict[str, str] | None = None, then: Any = None) -> Any:
                 then()
             return (answers or {}).get(prompt.text, "proceed")
 
-    Asked.prompts = []
     return Asked()
 
 
@@ -145,15 +152,28 @@ def test_every_reading_is_committed_with_exactly_its_signals_on() -> None:
     alone = ReadAction("alone", capture(2.4e9, tones=("probe",)), ("probe",))
     stage = Stage([*point(2.2e9), *point(2.3e9), at(2.4e9), alone])
     outcome = stage.run()
-    assert (outcome.state, outcome.readings, outcome.planned, outcome.flagged, outcome.cause) == ("complete", 3, 3, 0, "")
-    assert [(r.index, r.name, r.attempt) for r in stage.writer.committed] == [(0, "hot", 0), (1, "hot", 0), (2, "alone", 0)]
+    assert (outcome.state, outcome.readings, outcome.planned, outcome.flagged, outcome.cause) == (
+        "complete",
+        3,
+        3,
+        0,
+        "",
+    )
+    assert [(r.index, r.name, r.attempt) for r in stage.writer.committed] == [
+        (0, "hot", 0),
+        (1, "hot", 0),
+        (2, "alone", 0),
+    ]
     assert stage.bench.swept[:3] == [frozenset(BOTH), frozenset(BOTH), frozenset({"probe"})]
     assert stage.bench.dark
     assert not stage.bench.harm
 
 
 def test_what_is_committed_is_what_was_read() -> None:
-    stage = Stage(point(2.3e9, scalars=("drain.current", "ambient.temperature", "meter.power")), conditions={0: {"frequency_hz": 2.3e9}})
+    stage = Stage(
+        point(2.3e9, scalars=("drain.current", "ambient.temperature", "meter.power")),
+        conditions={0: {"frequency_hz": 2.3e9}},
+    )
     stage.bench.scalars["meter.power"] = 27.5
     stage.run()
     (reading,) = stage.writer.committed
@@ -170,12 +190,21 @@ def test_what_is_committed_is_what_was_read() -> None:
 
 
 def test_scalars_alone_are_a_reading_too() -> None:
-    stage = Stage([ReadAction("levelling", None, ("pump",), ("meter.power",)), ReadAction("ambient", None, (), ("ambient.temperature",))])
+    stage = Stage(
+        [
+            ReadAction("levelling", None, ("pump",), ("meter.power",)),
+            ReadAction("ambient", None, (), ("ambient.temperature",)),
+        ]
+    )
     stage.run()
     first, second = stage.writer.committed
     assert first.data.shape == second.data.shape == (0, 0, 0)
     assert first.scalars == {"meter.power_dbm": 23.0}
-    order = [line for line in stage.bench.story if line in ("pump rf on", "meter power?", "pump rf off", "ambient temperature?")]
+    order = [
+        line
+        for line in stage.bench.story
+        if line in ("pump rf on", "meter power?", "pump rf off", "ambient temperature?")
+    ]
     rf_on = order.index("pump rf on")
     assert order[rf_on : rf_on + 4] == ["pump rf on", "meter power?", "pump rf off", "ambient temperature?"]
 
@@ -186,7 +215,9 @@ def test_a_hop_is_blanked_and_frequencies_come_before_levels() -> None:
     assert not stage.bench.harm
     second = stage.after("analyser sweep")
     assert second[: second.index("pump rf on")] == [
-        "analyser rf off", "pump rf off", "analyser frequency 2.3e+09", "pump frequency 2.293e+09", "pump level -2", "analyser rf on",
+        "analyser rf off", "pump rf off",
+        "analyser frequency 2.3e+09", "pump frequency 2.293e+09", "pump level -2",
+        "analyser rf on",
     ]  # fmt: skip
 
 
@@ -336,7 +367,9 @@ def test_a_procedure_works_in_the_dark_and_is_written_down() -> None:
 def test_the_way_down_is_drain_before_gate_with_the_drain_read_back() -> None:
     stage = Stage([UP, *point(2.2e9)])
     outcome = stage.run()
-    down = [line for line in stage.bench.story if line.startswith(("supply", "pump rf", "analyser rf", "analyser sweep"))]
+    down = [
+        line for line in stage.bench.story if line.startswith(("supply", "pump rf", "analyser rf", "analyser sweep"))
+    ]
     down = down[len(down) - down[::-1].index("analyser sweep") - 1 :]
     assert down[0] == "analyser sweep"  # the receiver sees that RF is off
     assert down[1] == "supply drain off"
@@ -386,8 +419,8 @@ def test_the_gate_stays_on_while_the_operator_is_asked() -> None:
 
 def test_what_is_skipped_is_not_made_up() -> None:
     actions = [
-        AskAction("Connect OPEN."), UP, *point(2.2e9), *point(2.3e9), SetAction((("drain.voltage", 20.0),)), AskAction("Connect DEVICE."),
-        ReadAction("hot", capture(2.3e9), BOTH),
+        AskAction("Connect OPEN."), UP, *point(2.2e9), *point(2.3e9), SetAction((("drain.voltage", 20.0),)),
+        AskAction("Connect DEVICE."), ReadAction("hot", capture(2.3e9), BOTH),
     ]  # fmt: skip
     stage = Stage(actions)
     stage.prompter = asks({"Connect OPEN.": "skip"})
@@ -453,6 +486,24 @@ def test_the_operator_is_not_asked_while_a_receiver_sees_rf() -> None:
 # Ways out
 
 
+def test_a_run_that_came_to_its_end_and_is_not_safe_is_not_done() -> None:
+    stage = Stage([UP, *point(2.2e9)])
+    stage.bench.fall_s = 60.0
+    error, outcome = stage.fails(UnsafeError)
+    assert (outcome.state, outcome.readings, outcome.unconfirmed) == ("unsafe", 1, ("drain",))
+    assert "off, and still at 2" in str(error)
+    assert "gate not touched (still at -5.0 V)" in str(error)
+
+
+def test_a_reference_that_is_not_locked_is_told_at_once() -> None:
+    stage = Stage(point(2.2e9))
+    stage.bench.unlocked = {"pump"}
+    stage.run()
+    (event,) = stage.writer.told("reference")
+    assert (event.text, event.detail) == ("pump NOT locked, probe locked", {"pump": False, "probe": True})
+    assert "pump NOT locked" in stage.progress.messages[0]
+
+
 def test_a_stop_is_taken_after_the_reading_is_committed() -> None:
     stage = Stage([*point(2.2e9), *point(2.3e9), *point(2.4e9)])
     stage.writer = MemoryWriter(on_commit=lambda: stage.stop.request("Ctrl-C") if stage.writer.readings == 1 else None)
@@ -465,8 +516,10 @@ def test_a_stop_is_taken_after_the_reading_is_committed() -> None:
 
 def test_a_stop_ends_a_procedure_between_two_exchanges() -> None:
     stage = Stage([UP, *point(2.2e9)])
-    stage.bench.clock.on_sleep = lambda _s: stage.stop.request("SIGTERM") if "supply gate on" in stage.bench.story and not stage.stop.requested else None
-    error, outcome = stage.fails(StoppedError)
+    stage.bench.clock.on_sleep = lambda _s: (
+        stage.stop.request("SIGTERM") if "supply gate on" in stage.bench.story and not stage.stop.requested else None
+    )
+    _, outcome = stage.fails(StoppedError)
     assert outcome.cause == "stopped by SIGTERM"
     assert "supply drain on" not in stage.bench.story
 
@@ -495,7 +548,7 @@ def test_the_last_exchanges_of_what_failed_go_into_the_archive() -> None:
     assert said.detail["instrument"] == "pump"
     assert "did not answer 'frequency 2.293e+09'" in str(error)
     assert said.detail["exchanges"][-1]["error"]
-    assert [event.kind for event in stage.writer.events] == ["exchanges", "failure", "safe-state"]
+    assert [event.kind for event in stage.writer.events] == ["reference", "exchanges", "failure", "safe-state"]
 
 
 def test_an_instrument_that_is_gone_is_shouted_and_the_gate_is_left_alone() -> None:
@@ -541,8 +594,10 @@ def test_a_full_disk_ends_the_run_in_order() -> None:
 def test_a_disk_that_fails_only_at_the_end_is_told_too() -> None:
     stage = Stage(point(2.2e9))
 
-    def full(_event: Any) -> int:
-        raise DiskError("archive.sqlite: the disk is full")
+    def full(event: Any) -> int:
+        if event.kind == "safe-state":
+            raise DiskError("archive.sqlite: the disk is full")
+        return 1
 
     stage.writer.log = full  # type: ignore[method-assign]
     _, outcome = stage.fails(DiskError)
@@ -552,7 +607,7 @@ def test_a_disk_that_fails_only_at_the_end_is_told_too() -> None:
 def test_our_own_defect_makes_safe_and_stays_what_it_is() -> None:
     stage = Stage([*point(2.2e9), ProcedureAction("bring-up", {})])
     stage.schedule.actions.append(object())  # type: ignore[arg-type]
-    error, outcome = stage.fails(KeyError)
+    _, outcome = stage.fails(KeyError)
     assert outcome.state == "failed"
 
 
@@ -560,5 +615,7 @@ def test_time_left_shrinks_to_nothing() -> None:
     stage = Stage([action for hz in np.linspace(2.2e9, 2.4e9, 10).tolist() for action in point(hz)], slot_s=3.0)
     stage.run()
     assert stage.progress.indices == list(range(10))
-    assert [bench_left_s for _, bench_left_s in stage.progress.lefts] == pytest.approx([30.0 - 3.0 * k for k in range(10)])
+    assert [bench_left_s for _, bench_left_s in stage.progress.lefts] == pytest.approx(
+        [30.0 - 3.0 * k for k in range(10)]
+    )
     assert all(left_s >= 0.0 for left_s, _ in stage.progress.lefts)
