@@ -9,7 +9,7 @@ from benchrun.bench import load_bench, load_kit
 from benchrun.drivers.dialects import load_dialect
 from benchrun.drivers.registry import load_registry
 from benchrun.errors import FileProblemsError, Problem
-from benchrun.flow.inputs import load_inputs, roles
+from benchrun.flow.inputs import absent_recipes, load_inputs, roles
 from benchrun.flow.planning import plan
 
 KINDS = (".recipe.yaml", ".bench.yaml", ".kit.yaml", ".dialect.yaml")
@@ -40,7 +40,12 @@ def _check(path: Path) -> Sequence[Problem]:
 
 def _check_recipe(path: Path) -> Sequence[Problem]:
     try:
-        plan(load_inputs(path), {})
+        inputs = load_inputs(path)
     except FileProblemsError as error:
         return error.problems
-    return ()
+    problems = absent_recipes(inputs)
+    try:
+        plan(inputs, {})
+    except FileProblemsError as error:
+        problems += error.problems
+    return problems

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import difflib
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -11,6 +12,8 @@ from benchrun.drivers.dialects import dialect_for
 from benchrun.drivers.registry import Registry, load_registry
 from benchrun.errors import FileProblemsError, Problem
 from benchrun.recipe import Recipe, load_recipe, recipe_source
+from benchrun.visa.address import address_fault
+from benchrun.yaml_source import Path_, Source, read_source
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,21 +52,46 @@ def load_inputs(recipe_path: Path, bench_path: Path | None = None, kit_path: Pat
 
     Raises FileProblemsError with the mistakes of all files.
     """
-    registry = load_registry()
-    outer, _, problems = recipe_source(recipe_path)
+    registry, folder = load_registry(), recipe_path.parent
+    outer, source, problems = recipe_source(recipe_path)
     bench: Bench | None = None
     kit: Kit | None = None
     if outer is not None:
-        bench, bench_problems = load_bench(bench_path or recipe_path.parent / outer.bench, roles(registry))
-        problems += bench_problems + _dialect_problems(bench, registry)
-        if outer.kit is not None:
-            kit, kit_problems = load_kit(kit_path or recipe_path.parent / outer.kit)
-            problems += kit_problems
+        absent = [] if bench_path else absent_file(source, ("bench",), folder / outer.bench)
+        if not absent:
+            bench, absent = load_bench(bench_path or folder / outer.bench, roles(registry))
+        problems += absent + _dialect_problems(bench, registry) + _address_problems(bench)
+    if outer is not None and outer.kit is not None:
+        absent = [] if kit_path else absent_file(source, ("kit",), folder / outer.kit)
+        if not absent:
+            kit, absent = load_kit(kit_path or folder / outer.kit)
+        problems += absent
     recipe, recipe_problems = load_recipe(recipe_path, bench, registry.steps)
     problems += recipe_problems
     if problems or recipe is None or bench is None:
         raise FileProblemsError(problems)
     return Inputs(recipe, bench, kit, registry, recipe_path)
+
+
+def absent_file(source: Source, where: Path_, path: Path) -> list[Problem]:
+    """Return a problem at the place in a file that names another one, where that is not there; [] where it is."""
+    if path.exists():
+        return []
+    kind = "".join(path.suffixes[-2:])
+    near = difflib.get_close_matches(path.name, [other.name for other in path.parent.glob(f"*{kind}")], n=1)
+    meant = f"Did you mean '{near[0]}'?" if near else "Names are taken from the folder of this file."
+    return [source.problem(where, f"there is no file '{path.name}'. {meant}")]
+
+
+def absent_recipes(inputs: Inputs, chosen: Collection[str] = ()) -> list[Problem]:
+    """Return a problem for each calibration whose recipe is not there, but the `chosen` ones."""
+    _, source, _ = recipe_source(inputs.path)
+    return [
+        problem
+        for name, file in inputs.recipe.calibrations.items()
+        if name not in chosen
+        for problem in absent_file(source, ("calibrations", name), inputs.folder / file)
+    ]
 
 
 def roles(registry: Registry) -> Mapping[str, str]:
@@ -82,3 +110,15 @@ def _dialect_problems(bench: Bench | None, registry: Registry) -> list[Problem]:
             except FileProblemsError as error:
                 problems += error.problems
     return problems
+
+
+def _address_problems(bench: Bench | None) -> list[Problem]:
+    """Return a problem for each address that is none; aliases, which other backends may know, are not judged."""
+    if bench is None or bench.visa.backend != "py":
+        return []
+    source = read_source(bench.path)
+    return [
+        source.problem(("instruments", name, "address"), message)
+        for name, instrument in bench.instruments.items()
+        if (message := address_fault(instrument.address))
+    ]

@@ -8,11 +8,12 @@ from pathlib import Path
 from typing import Any
 
 from benchrun.archive import open_archive
+from benchrun.archive.meta import utc_now
 from benchrun.bench import Bench
 from benchrun.derive.calibration import Calibration
 from benchrun.derive.levelling import Levelling
 from benchrun.errors import BenchrunError, CalibrationError, FolderError
-from benchrun.flow.folders import run_folders
+from benchrun.flow.folders import require_run, run_folders
 
 KINDS = ("calibration", "levelling")
 
@@ -47,13 +48,11 @@ def _understood(kind: str, document: Mapping[str, Any]) -> Calibration | Levelli
     return Calibration.from_document(document) if kind == "calibration" else Levelling.from_document(document)
 
 
-def pick(name: str, runs: Path, bench: Bench, origin: str, chosen: Path | None, recipe: str) -> Made:
-    """Return the calibration `name`: of the run `chosen`, or the newest below `runs` of this bench's parts and origin.
+def newest(name: str, runs: Path, bench: Bench, origin: str, recipe: str) -> Made:
+    """Return the newest calibration `name` below `runs` that fits this bench's parts, this origin and today.
 
     Raises CalibrationError that says what there is instead and which recipe makes one.
     """
-    if chosen is not None:
-        return _of_run(name, chosen)
     candidates = [made for made in _all(runs) if made.name == name]
     fitting = [made for made in candidates if not misfit(made, bench, origin)]
     if fitting:
@@ -65,12 +64,20 @@ def pick(name: str, runs: Path, bench: Bench, origin: str, chosen: Path | None, 
     )
 
 
+def given(name: str, run: Path, bench: Bench, origin: str) -> Made:
+    """Return the calibration `name` of a run that the user chose. Raises FolderError, CalibrationError."""
+    made = _of_run(name, require_run(run))
+    if reason := misfit(made, bench, origin):
+        raise CalibrationError(f"{run}: {reason} Nothing was switched on.")
+    return made
+
+
 def misfit(made: Made, bench: Bench, origin: str) -> str:
     """Return why something made does not fit a bench and an origin, "" where it does."""
     circumstances, plane = made.known.circumstances, made.known.plane
     try:
         circumstances.require(
-            made.name, bench.part_hash(plane), circumstances.made_utc, origin, bench.part_summaries(plane)
+            f"{made.kind} '{made.name}'", bench.part_hash(plane), utc_now(), origin, bench.part_summaries(plane)
         )
     except CalibrationError as error:
         return str(error)

@@ -16,9 +16,10 @@ from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
 from benchrun.errors import BenchrunError, CalibrationError, DiskError
+from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
-from benchrun.flow.known import Made, known_of, pick
+from benchrun.flow.known import Made, given, known_of, newest
 from benchrun.flow.planning import plan
 from benchrun.flow.produce import produce
 from benchrun.flow.result import RunResult
@@ -49,19 +50,25 @@ class Setting:
     start_ns: int = 0
 
 
-def find_calibrations(inputs: Inputs, runs: Path, origin: str, chosen: Mapping[str, Path]) -> list[Made]:
-    """Return what the recipe's calibrations stand for. Raises CalibrationError for one that is missing."""
+def given_calibrations(inputs: Inputs, origin: str, chosen: Mapping[str, Path]) -> dict[str, Made]:
+    """Return the calibrations of the runs that the user chose. Raises CalibrationError, FolderError."""
     for name in chosen:
         if name not in inputs.recipe.calibrations:
             known = ", ".join(inputs.recipe.calibrations) or "none"
             raise CalibrationError(f"--calibration {name}: the recipe uses no calibration of this name, but {known}.")
+    return {name: given(name, run, inputs.bench, origin) for name, run in chosen.items()}
+
+
+def find_calibrations(inputs: Inputs, runs: Path, origin: str, chosen: Mapping[str, Path]) -> list[Made]:
+    """Return what the recipe's calibrations stand for. Raises CalibrationError for one that is missing."""
+    found = given_calibrations(inputs, origin, chosen)
     return [
-        pick(name, runs, inputs.bench, origin, chosen.get(name), str(inputs.folder / file))
+        found.get(name) or newest(name, runs, inputs.bench, origin, str(inputs.folder / file))
         for name, file in inputs.recipe.calibrations.items()
     ]
 
 
-def prepare(inputs: Inputs, made: list[Made]) -> Schedule:
+def prepare(inputs: Inputs, made: list[Made], origin: str) -> Schedule:
     """Return the schedule once every level in it has passed and the calibrations cover it. Nothing is touched before.
 
     Raises FileProblemsError, CalibrationError, LevelError.
@@ -70,6 +77,7 @@ def prepare(inputs: Inputs, made: list[Made]) -> Schedule:
 
     known = known_of(made)
     schedule = plan(inputs, known)
+    require_fit(inputs, schedule, known, origin)
     check_levels(schedule, inputs.bench).require()
     return schedule
 

@@ -13,10 +13,11 @@ from benchrun.acquire.prompts import RehearsalPrompter
 from benchrun.archive import open_archive
 from benchrun.contract.clock import Clock
 from benchrun.contract.rehearsal import ENTRY_POINT_GROUP, Rehearsal, RehearsalPlugin
-from benchrun.errors import CalibrationError, FileProblemsError, LinkError, PluginError
-from benchrun.flow.inputs import Inputs, load_inputs
-from benchrun.flow.known import Made, pick
-from benchrun.flow.measure import Setting, find_calibrations, measure, prepare
+from benchrun.errors import CalibrationError, FileProblemsError, LinkError, PluginError, Problem
+from benchrun.flow.inputs import Inputs, absent_recipes, load_inputs
+from benchrun.flow.known import Made, newest
+from benchrun.flow.measure import Setting, find_calibrations, given_calibrations, measure, prepare
+from benchrun.flow.planning import plan
 from benchrun.flow.result import RunResult
 
 #: A recipe that uses calibrations begins this long after the last of them ended, in bench time.
@@ -54,15 +55,21 @@ def rehearse(
     real_time: bool = False,
     calibrations: Mapping[str, Path] | None = None,
     listener: Progress,
+    wanted_by: tuple[Path, ...] = (),
 ) -> RunResult:
     """Rehearse a recipe, and first what makes the calibrations that it uses where they are absent.
 
-    Raises BenchrunError.
+    `wanted_by` are the recipes whose calibration this one makes. Raises BenchrunError.
     """
+    _require_no_circle(recipe, wanted_by)
     inputs = load_inputs(recipe, bench)
-    _make_absent(inputs, to, bench, seed, real_time, calibrations or {}, listener)
+    if problems := absent_recipes(inputs, calibrations or {}):
+        raise FileProblemsError(problems)
+    plan(inputs, {})  # mistakes that show when values meet the bench come before any calibration is rehearsed for them
+    given_calibrations(inputs, origin_of(seed), calibrations or {})
+    _make_absent(inputs, to, bench, seed, real_time, calibrations or {}, listener, wanted_by)
     made = find_calibrations(inputs, to, origin_of(seed), calibrations or {})
-    schedule = prepare(inputs, made)
+    schedule = prepare(inputs, made, origin_of(seed))
     with rehearsal_of(inputs, seed, real_time) as world:
         start_ns = _start_ns(made)
         world.clock.align(start_ns)
@@ -81,6 +88,14 @@ def rehearse(
         return measure(inputs, schedule, made, setting)
 
 
+def _require_no_circle(recipe: Path, wanted_by: tuple[Path, ...]) -> None:
+    """Raise FileProblemsError where a recipe wants a calibration that, in the end, it would have to make itself."""
+    if recipe.resolve() in {path.resolve() for path in wanted_by}:
+        way = " wants ".join(path.name for path in (*wanted_by, recipe))
+        message = f"this recipe wants a calibration that only it would make: {way}. Name the recipe that calibrates."
+        raise FileProblemsError([Problem(str(recipe), 0, 0, message)])
+
+
 def _make_absent(
     inputs: Inputs,
     to: Path,
@@ -89,17 +104,19 @@ def _make_absent(
     real_time: bool,
     chosen: Mapping[str, Path],
     listener: Progress,
+    wanted_by: tuple[Path, ...],
 ) -> None:
     """Rehearse the recipe of each calibration that no run in the folder holds."""
     for name, file in inputs.recipe.calibrations.items():
         if name in chosen:
             continue
         try:
-            pick(name, to, inputs.bench, origin_of(seed), None, file)
+            newest(name, to, inputs.bench, origin_of(seed), file)
         except CalibrationError:
             path = inputs.folder / file
             listener.message(f"Calibration '{name}' is absent: {path} is rehearsed first.")
-            result = rehearse(path, to, bench=bench, seed=seed, real_time=real_time, listener=listener)
+            chain = (*wanted_by, inputs.path)
+            result = rehearse(path, to, bench=bench, seed=seed, real_time=real_time, listener=listener, wanted_by=chain)
             listener.message(str(result.folder))
 
 

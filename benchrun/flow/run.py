@@ -36,7 +36,7 @@ def run(
             "Nothing was switched on."
         )
     made = find_calibrations(inputs, to, REAL, calibrations or {})
-    schedule = prepare(inputs, made)
+    schedule = prepare(inputs, made, REAL)
     setting = Setting(
         runs=to,
         clock=RealClock(),
