@@ -3,17 +3,15 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 
+from benchrun.bench.connections import connection_problems, instrument_problems, listed
 from benchrun.bench.instruments import OF_ONE_ROLE
 from benchrun.bench.model import Bench, Bias
 from benchrun.bench.names import DRIVE
-from benchrun.bench.parts import Coupler
 from benchrun.errors import Problem
 from benchrun.quantities import show
 from benchrun.yaml_source import Source
-
-SOURCES = ("signal-source", "wave-receiver")
 
 
 def bench_problems(bench: Bench, source: Source, roles: Mapping[str, str] | None = None) -> list[Problem]:
@@ -21,27 +19,12 @@ def bench_problems(bench: Bench, source: Source, roles: Mapping[str, str] | None
     checks = (
         _drivers(bench, source, roles),
         _instruments(bench, source),
-        _paths(bench, source),
-        _signals(bench, source),
-        _receivers(bench, source),
+        connection_problems(bench, source),
         _bias(bench, source),
         _full_names(bench, source),
         _simulated(bench, source),
     )
     return [problem for check in checks for problem in check]
-
-
-def listed(names: Iterable[str]) -> str:
-    """Return names for a message: 'a, b, c', or 'nothing'."""
-    return ", ".join(names) or "nothing"
-
-
-def not_there(what: str, name: str, there: Iterable[str]) -> str:
-    """Return the message for a name that nothing has, with the nearest that something has."""
-    known = list(there)
-    near = difflib.get_close_matches(name, known, n=1)
-    hint = f"Did you mean '{near[0]}'?" if near else f"It has {listed(known)}."
-    return f"the bench has no {what} called '{name}'. {hint}"
 
 
 def _drivers(bench: Bench, source: Source, roles: Mapping[str, str] | None) -> Iterator[Problem]:
@@ -73,117 +56,10 @@ def _instruments(bench: Bench, source: Source) -> Iterator[Problem]:
             yield source.problem(("instruments", name, "dialect"), message)
 
 
-def _paths(bench: Bench, source: Source) -> Iterator[Problem]:
-    """Every part on a way exists, and stands in one place only."""
-    standing: dict[str, str] = {}
-    for room, ways in (("signals", bench.signals), ("receivers", bench.receivers)):
-        for name, way in ways.items():
-            for index, part in enumerate(way.path):
-                where = (room, name, "path", index)
-                if part not in bench.parts:
-                    yield source.problem(where, not_there("part", part, bench.parts))
-                elif part in standing:
-                    yield source.problem(
-                        where, f"'{part}' stands on the way of '{standing[part]}' already; one part is in one place."
-                    )
-                else:
-                    standing[part] = name
-
-
-def _signals(bench: Bench, source: Source) -> Iterator[Problem]:
-    planes: dict[str, str] = {}
-    sources: dict[str, str] = {}
-    for name, signal in bench.signals.items():
-        yield from _instrument_of(bench, source, "signals", name, signal.instrument, SOURCES)
-        if signal.plane in planes:
-            message = f"'{planes[signal.plane]}' goes to the {signal.plane} plane already; one signal to one plane."
-            yield source.problem(("signals", name, "plane"), message)
-        if signal.instrument in sources:
-            message = (
-                f"'{signal.instrument}' gives '{sources[signal.instrument]}' already; one signal from one instrument."
-            )
-            yield source.problem(("signals", name, "instrument"), message)
-        planes.setdefault(signal.plane, name)
-        sources.setdefault(signal.instrument, name)
-    for instrument in sources:
-        yield from _of_a_source(bench, source, instrument)
-
-
-def _of_a_source(bench: Bench, source: Source, name: str) -> Iterator[Problem]:
-    """A source has a ceiling; an analyser's source has a port."""
-    instrument = bench.instruments.get(name)
-    if instrument is None:
-        return
-    if instrument.ceiling is None:
-        message = f"'{name}' needs 'ceiling': the highest level that is ever sent to it. Without one no level is sent."
-        yield source.problem(("instruments", name), message, at_key=True)
-    if bench.role(name) == "wave-receiver" and instrument.source_port is None:
-        message = (
-            f"'{name}' gives a signal and needs 'source-port': its number, what it bears, and its level at power-up."
-        )
-        yield source.problem(("instruments", name), message, at_key=True)
-
-
-def _receivers(bench: Bench, source: Source) -> Iterator[Problem]:
-    taken: dict[tuple[str, str], str] = {}
-    arms: dict[tuple[str, str], str] = {}
-    passed = {part for signal in bench.signals.values() for part in signal.path}
-    for name, receiver in bench.receivers.items():
-        yield from _instrument_of(bench, source, "receivers", name, receiver.instrument, ("wave-receiver",))
-        yield from _coupler_of(bench, source, name, passed)
-        where = ("receivers", name)
-        for key, value, seen in (
-            (
-                "receiver",
-                f"{receiver.instrument} {receiver.receiver}",
-                taken.setdefault((receiver.instrument, receiver.receiver), name),
-            ),
-            (
-                "arm",
-                f"the {receiver.arm} arm of {receiver.coupler}",
-                arms.setdefault((receiver.coupler, receiver.arm), name),
-            ),
-        ):
-            if seen != name:
-                yield source.problem((*where, key), f"{value} is '{seen}' already.")
-    for instrument in {receiver.instrument for receiver in bench.receivers.values()} & set(bench.instruments):
-        if bench.instruments[instrument].receiver is None:
-            message = (
-                f"'{instrument}' needs 'receiver': what its receiver inputs bear and up to what level they are linear."
-            )
-            yield source.problem(("instruments", instrument), message, at_key=True)
-
-
-def _coupler_of(bench: Bench, source: Source, name: str, passed: set[str]) -> Iterator[Problem]:
-    coupler, where = bench.receivers[name].coupler, ("receivers", name, "coupler")
-    part = bench.parts.get(coupler)
-    couplers = [part_name for part_name, one in bench.parts.items() if isinstance(one, Coupler)]
-    if part is None:
-        yield source.problem(where, not_there("coupler", coupler, couplers))
-    elif not isinstance(part, Coupler):
-        yield source.problem(where, f"'{coupler}' is a {part.kind}, not a coupler. The bench has {listed(couplers)}.")
-    elif coupler not in passed:
-        yield source.problem(
-            where, f"no signal passes '{coupler}': put it on the path of the signal that it stands in."
-        )
-
-
-def _instrument_of(
-    bench: Bench, source: Source, room: str, name: str, instrument: str, roles: tuple[str, ...]
-) -> Iterator[Problem]:
-    """The instrument exists and has one of the roles (where its role is known)."""
-    where = (room, name, "instrument")
-    if instrument not in bench.instruments:
-        yield source.problem(where, not_there("instrument", instrument, bench.instruments))
-    elif bench.role(instrument) not in ("", *roles):
-        message = f"'{instrument}' is a {bench.role(instrument)}; {room} come from a {' or a '.join(roles)}."
-        yield source.problem(where, message)
-
-
 def _bias(bench: Bench, source: Source) -> Iterator[Problem]:
     channels: dict[tuple[str, int], str] = {}
     for name, bias in bench.bias.items():
-        yield from _instrument_of(bench, source, "bias", name, bias.instrument, ("dc-supply",))
+        yield from instrument_problems(bench, source, "bias", name, bias.instrument, ("dc-supply",))
         seen = channels.setdefault((bias.instrument, bias.channel), name)
         if seen != name:
             yield source.problem(

@@ -16,7 +16,7 @@ from benchrun.bench.parts import Coupler, Part
 from benchrun.bench.ranges import Fraction, PositiveCurrent, PositiveVoltage, VoltageRange
 from benchrun.contract.kinds import Readable, Settable
 from benchrun.contract.roles import ROLES
-from benchrun.fields import Count, Form, Level, Name, Ratio, Text, Voltage
+from benchrun.fields import Count, FilePath, Form, Level, Name, Ratio, Text, Voltage
 from benchrun.yaml_source import Strict
 
 Plane = Literal["input", "output"]
@@ -85,9 +85,7 @@ class Rehearsal(Strict):
     """How a rehearsal assumes the world to be: its name, and imperfections that are switched off."""
 
     world: Name = "R1"
-    kit: str | None = Field(
-        None, description="kit file that the simulated operator has at hand", examples=["my-kit.kit.yaml"]
-    )
+    kit: FilePath | None = Field(None, description="kit file that the simulated operator has at hand")
     thermal_memory: bool = True
     noise: bool = True
     drift: bool = True

@@ -188,7 +188,7 @@ def test_any_text_of_yaml_signs_is_data_or_told(text: str) -> None:
 
 
 KEYS = st.text("abcdefgh-", min_size=1, max_size=8).filter(lambda key: not key.startswith("-"))
-# Without ":" and "?": the writer leaves those that begin a text without quotes, which its own reader then takes for signs.
+# Without ":" and "?": the writer leaves those unquoted that begin a text, and its own reader takes them for signs.
 WORDS = st.sampled_from("abcXYZ \u00e4\u00b5.0123456789eE+-'\"#,_/{}[]&*!|>%@`~")
 DATA = st.recursive(
     st.none() | st.booleans() | st.integers(-(10**9), 10**9) | st.text(WORDS, max_size=20),
