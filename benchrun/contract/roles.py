@@ -17,7 +17,8 @@ from benchrun.contract.capture import Capture, FloatArray, WaveData
 from benchrun.contract.clock import Clock
 from benchrun.contract.kinds import Readable, Settable
 
-#: A value for a placeholder of a dialect entry: what its kind says, or several of that kind where the entry takes a list.
+#: A value for a placeholder of a dialect entry: what its kind says, or several of that kind where the entry takes a
+#: list.
 Value = float | str | bool | Sequence[float] | Sequence[str]
 #: One use of a dialect entry: its name and the values for its placeholders.
 Call = tuple[str, Mapping[str, Value]]
@@ -42,8 +43,8 @@ class Link(Protocol):
     `send` writes an entry's set form, waits for completion (*OPC?) and drains SYSTem:ERRor?; `ask` sends an entry's
     query form and returns the reply by its declared kind (float, str, or bool for a switch); `block` reads a
     definite-length REAL,64 block of exactly `count` float64. All raise the errors of benchrun.errors.BenchError.
-    A value of kind "level" above the bench's ceiling is refused (InstrumentError before anything is sent), and a level that
-    rises is raised in steps of the bench's ramp.
+    A value of kind "level" above the bench's ceiling is refused (InstrumentError before anything is sent), and a level
+    that rises is raised in steps of the bench's ramp.
     """
 
     @property
@@ -72,8 +73,10 @@ class Link(Protocol):
     def block(self, entry: str, count: int, *, deadline_s: float | None = None, **values: Value) -> FloatArray:
         """Return exactly `count` float64 from the entry's definite-length block."""
 
-    def exchange(self, sets: Sequence[Call], asks: Sequence[Call] = (), *, deadline_s: float | None = None) -> tuple[Any, ...]:
-        """Send several set forms in order, see them completed, and return the replies to several queries, in one message.
+    def exchange(
+        self, sets: Sequence[Call], asks: Sequence[Call] = (), *, deadline_s: float | None = None
+    ) -> tuple[Any, ...]:
+        """Send set forms in order, see them completed, and return the replies to several queries, in one message.
 
         What send, ask and confirm do one by one; one message costs one wait for the answer.
         """

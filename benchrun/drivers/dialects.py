@@ -30,7 +30,9 @@ def dialect_for(spec: DriverSpec, path: Path | None) -> Dialect:
     over = _or_raise(_checked(source)) if path else None
     problems = _strangers(source, generic, over) if over else []
     dialect, wrong = compile_dialect(merged(generic, over))
-    problems += [source.problem(_at(source, name), f"entry '{name}': {text}", at_key=True) for name, text in wrong.items()]
+    problems += [
+        source.problem(_at(source, name), f"entry '{name}': {text}", at_key=True) for name, text in wrong.items()
+    ]
     absent = missing(dialect, set(spec.needs) - set(wrong))
     if absent:
         advice = "give their headers in this file" if path else "name a dialect file of its make under `dialect:`"
@@ -72,6 +74,8 @@ def _strangers(source: Source, generic: DialectText, over: DialectText) -> list[
         filled = generic.entries[name].carries
         for placeholder in entry.carries:
             if placeholder not in filled:
-                text = f"the driver never fills {{{placeholder}}} of '{name}'. It fills {', '.join(filled) or 'nothing'}."
+                text = (
+                    f"the driver never fills {{{placeholder}}} of '{name}'. It fills {', '.join(filled) or 'nothing'}."
+                )
                 problems.append(source.problem(("entries", name, "carries", placeholder), text, at_key=True))
     return problems

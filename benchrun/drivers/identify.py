@@ -1,4 +1,7 @@
-"""Who answers at an address, which of the installed drivers fits, and what is not answered. Queries only: nothing is set."""
+"""Who answers at an address, which of the installed drivers fits, and what is not answered.
+
+Queries only: nothing is set.
+"""
 
 from __future__ import annotations
 
@@ -18,7 +21,7 @@ GIVEN_UP = 2
 
 @dataclass(frozen=True, slots=True)
 class Fit:
-    """How one driver fits: entries it needs that were not understood, optional ones, and those left to a dialect file."""
+    """How one driver fits: needed and optional entries that were not understood, and those left to a dialect file."""
 
     driver: str
     unanswered: tuple[str, ...]

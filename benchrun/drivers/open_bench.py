@@ -36,7 +36,11 @@ class OpenBench:
     """Drivers of a bench by name, and its quantities by full name ("pump.level", "drain.voltage", "meter.power")."""
 
     def __init__(
-        self, bench: Bench, drivers: Mapping[str, Instrument], sessions: Mapping[str, Session], identities: Mapping[str, Identity]
+        self,
+        bench: Bench,
+        drivers: Mapping[str, Instrument],
+        sessions: Mapping[str, Session],
+        identities: Mapping[str, Identity],
     ) -> None:
         self._bench = bench
         self._identities = identities
@@ -69,7 +73,10 @@ class OpenBench:
         return {name: cast("DcSupply", self._driver(name)) for name in self._bench.instruments if name in names}
 
     def settable(self, target: str) -> Settable:
-        """Return what can be set under a full name, with the range that the bench file allows. Raises InstrumentError."""
+        """Return what can be set under a full name, with the range that the bench file allows.
+
+        Raises InstrumentError.
+        """
         try:
             return self._settables[target]
         except KeyError:
@@ -77,7 +84,10 @@ class OpenBench:
             raise InstrumentError(f"nothing on the bench is set by the name '{target}'; it has {known}") from None
 
     def set(self, target: str, value: float) -> float:
-        """Set a quantity (SI, dBm) by full name and return what stands. Raises BenchError; out of the bench's range nothing is sent."""
+        """Set a quantity (SI, dBm) by full name and return what stands.
+
+        Raises BenchError; out of the bench's range nothing is sent.
+        """
         self._in_range(self.settable(target), value)
         place = self._place(target)
         return self._driver(place.instrument).set(place.quantity, value)
@@ -99,7 +109,7 @@ class OpenBench:
             self.instruments[name].prepare()
 
     def restarted(self) -> tuple[str, ...]:
-        """Names of instruments that were switched off and on while the bench was open: prepare() comes before any setting."""
+        """Names of instruments that were switched off and on since: prepare() comes before any setting."""
         return tuple(name for name, session in self.sessions.items() if session.restarted)
 
     def close(self) -> None:
@@ -114,7 +124,9 @@ class OpenBench:
         try:
             return self._bench.signals[name].instrument
         except KeyError:
-            raise InstrumentError(f"the bench has no signal '{name}'; it has {', '.join(self._bench.signals)}") from None
+            raise InstrumentError(
+                f"the bench has no signal '{name}'; it has {', '.join(self._bench.signals)}"
+            ) from None
 
     def _driver(self, name: str) -> Instrument:
         return self.instruments[name]
@@ -137,7 +149,9 @@ class OpenBench:
         low = settable.low if settable.low is not None else value
         high = settable.high if settable.high is not None else value
         if not low <= value <= high:
-            limits = [show(limit, settable.kind) if limit is not None else "any" for limit in (settable.low, settable.high)]
+            limits = [
+                show(limit, settable.kind) if limit is not None else "any" for limit in (settable.low, settable.high)
+            ]
             raise InstrumentError(
                 f"{settable.name} = {show(value, settable.kind)} is outside what the bench file allows "
                 f"({limits[0]} to {limits[1]}). Nothing was sent"
@@ -188,7 +202,9 @@ def _dialects(bench: Bench, registry: Registry) -> dict[str, Dialect]:
     for name, instrument in bench.instruments.items():
         spec = registry.drivers.get(instrument.driver)
         if spec is None:
-            text = f"{name}: no driver '{instrument.driver}' is installed. There is {', '.join(sorted(registry.drivers))}."
+            text = (
+                f"{name}: no driver '{instrument.driver}' is installed. There is {', '.join(sorted(registry.drivers))}."
+            )
             problems.append(Problem(str(bench.path), 0, 0, text))
             continue
         try:
@@ -213,7 +229,7 @@ def _open(bench: Bench, name: str, dialect: Dialect, bus: Bus, clock: Clock, add
 
 
 def _identified(bench: Bench, registry: Registry, name: str, session: Session) -> Identity:
-    """Ask who answers; raise IdentityError where it is not the one that the bench file names, or not of the driver's kind."""
+    """Ask who answers; raise IdentityError where it is not whom the bench file names, or not of the driver's kind."""
     identity = session.identify()
     expected = bench.instruments[name].identity
     for field in ("maker", "model", "serial") if expected else ():
@@ -221,7 +237,8 @@ def _identified(bench: Bench, registry: Registry, name: str, session: Session) -
         if wanted is not None and wanted != found:
             raise IdentityError(
                 f"{name}: the bench file expects {field} '{wanted}'; {found!r} answers "
-                f"({identity.maker} {identity.model}, serial {identity.serial}). Check the address, or correct the bench file"
+                f"({identity.maker} {identity.model}, serial {identity.serial}). "
+                "Check the address, or correct the bench file"
             )
     spec = registry.drivers[bench.instruments[name].driver]
     strange = [] if session.understands_all(spec.needs) else session.not_understood(spec.needs, enough=1)
@@ -231,4 +248,3 @@ def _identified(bench: Bench, registry: Registry, name: str, session: Session) -
             f"{spec.name} needs. Check the address, the driver and the dialect in the bench file"
         )
     return identity
-

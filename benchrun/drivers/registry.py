@@ -136,7 +136,9 @@ def _see_marked(module: Any, where: str) -> None:
     for name in dir(module):
         one = getattr(module, name)
         if name.startswith("benchrun_") and callable(one) and not hasattr(one, f"{PROJECT}_impl"):
-            raise PluginError(f"{where}: {name} is named like a hook and not marked with @hookimpl of benchrun.contract.hooks")
+            raise PluginError(
+                f"{where}: {name} is named like a hook and not marked with @hookimpl of benchrun.contract.hooks"
+            )
 
 
 def check_driver(spec: DriverSpec) -> None:

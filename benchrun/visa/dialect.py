@@ -1,9 +1,10 @@
 """Dialects: the headers of one make of instrument, as data, and how typed values become text.
 
-An entry has a `set` form, an `ask` form or both. Placeholders stand for values: "SOURce{channel}:VOLTage {voltage}". `carries` gives
-the kind of each, so a value is always written by us (with its unit), and never as text that somebody passed in: it cannot carry a second
-command. A file of a make extends the generic dialect of a driver entry by entry, field by field; an entry of the generic dialect
-that has neither form says what the driver needs where the standard is silent.
+An entry has a `set` form, an `ask` form or both. Placeholders stand for values: "SOURce{channel}:VOLTage {voltage}".
+`carries` gives the kind of each, so a value is always written by us (with its unit), and never as text that somebody
+passed in: it cannot carry a second command. A file of a make extends the generic dialect of a driver entry by entry,
+field by field; an entry of the generic dialect that has neither form says what the driver needs where the standard is
+silent.
 """
 
 from __future__ import annotations
@@ -23,8 +24,8 @@ from benchrun.quantities import parse
 from benchrun.visa import scpi
 from benchrun.yaml_source import Strict
 
-#: Suffixes that numbers are sent with, and what one of them is in the kind's own unit (IEEE 488.2 7.7.3, SCPI-1999 volume 1, 7.2).
-#: The first of each kind is the one used where an entry names none.
+#: Suffixes that numbers are sent with, and what one of them is in the kind's own unit (IEEE 488.2 7.7.3, SCPI-1999
+#: volume 1, 7.2). The first of each kind is the one used where an entry names none.
 SUFFIXES: dict[str, dict[str, float]] = {
     "frequency": {"HZ": 1.0, "KHZ": 1e3, "MHZ": 1e6, "GHZ": 1e9},
     "level": {"DBM": 1.0},
@@ -79,7 +80,7 @@ AskForm = Annotated[str | None, AfterValidator(_ask_form), Field(json_schema_ext
 
 
 class Carried(Strict):
-    """What a placeholder or a reply carries: its kind, the suffix it travels in, and for text the words that are allowed."""
+    """What a placeholder or a reply carries: its kind, the suffix it travels in, and for text the words allowed."""
 
     kind: ReplyKind
     unit: str | None = Field(default=None, description="suffix as sent, such as MHZ; empty for none")
@@ -141,7 +142,10 @@ class Carried(Strict):
         raise QuantityError(f"{value!r} is not one of {', '.join(self.words)}")
 
     def read(self, text: str) -> Any:
-        """Return the typed value of a reply. Raises ReplyError where it is not of this kind, or says it is not known."""
+        """Return the typed value of a reply.
+
+        Raises ReplyError where it is not of this kind, or says it is not known.
+        """
         if self.list:
             return tuple(self._read_one(part) for part in scpi.split(text, ","))
         return self._read_one(text)
@@ -175,7 +179,9 @@ class EntryText(Strict):
     set: SetForm = Field(default=None, description="the set form; its capitals give the short form")
     ask: AskForm = Field(default=None, description="the query form")
     carries: dict[str, CarriedField] = Field(default={}, description="kind of each placeholder")
-    reply: CarriedField | None = Field(default=None, description="kind of the reply, where the set form does not say it")
+    reply: CarriedField | None = Field(
+        default=None, description="kind of the reply, where the set form does not say it"
+    )
     tolerance: str | None = Field(default=None, description="how far the value read back may be from the value sent")
     deadline: Duration | None = Field(default=None, description="longest time the exchange may take")
 
@@ -195,7 +201,7 @@ class DialectText(Strict):
     title: Text = ""
     options: bool | None = Field(default=None, description="whether *OPT? is answered")
     timing: Timing | None = None
-    entries: dict[str, EntryText] = {}
+    entries: dict[str, EntryText] = Field(default={}, description="entries by the name that the driver uses")
 
 
 @dataclass(frozen=True, slots=True)
@@ -259,13 +265,19 @@ class Entry:
     level: str = field(default="")
 
     def set_text(self, values: Mapping[str, Value]) -> str:
-        """Return the set form with these values. Raises InstrumentError where there is none, QuantityError for a bad value."""
+        """Return the set form with these values.
+
+        Raises InstrumentError where there is none, QuantityError for a bad value.
+        """
         if self.set is None:
             raise InstrumentError(f"the dialect has no set form of {self.name!r}")
         return self.set.fill(self.carries, values)
 
     def ask_text(self, values: Mapping[str, Value]) -> str:
-        """Return the query form with these values. Raises InstrumentError where there is none, QuantityError for a bad value."""
+        """Return the query form with these values.
+
+        Raises InstrumentError where there is none, QuantityError for a bad value.
+        """
         if self.ask is None:
             raise InstrumentError(f"the dialect has no query form of {self.name!r}")
         return self.ask.fill(self.carries, values)
@@ -311,7 +323,10 @@ def _tolerance(text: EntryText, reply: Carried | None) -> float:
 
 
 def compile_entry(name: str, text: EntryText) -> Entry:
-    """Make an entry ready for use. Raises QuantityError (a tolerance or deadline) or ValueError (forms that do not fit)."""
+    """Make an entry ready for use.
+
+    Raises QuantityError (a tolerance or deadline) or ValueError (forms that do not fit).
+    """
     set_form = Template.of(text.set) if text.set else None
     ask_form = Template.of(text.ask) if text.ask else None
     for form in filter(None, (set_form, ask_form)):

@@ -1,8 +1,9 @@
-"""One exchange: several settings and queries made into one message, and its answer taken apart again. Pure text, no I/O.
+"""One exchange: settings and queries made into one message, and its answer taken apart again. Pure text, no I/O.
 
-Compound messages (IEEE 488.2 7.3, SCPI-1999 volume 1 section 6.2.4, from memory): units are separated by semicolons; a header that
-follows one is looked up in the path of the one before unless it begins with a colon or is a common command (*OPC?), which
-leaves the path alone. So every later header here begins with a colon. Each query answers one unit, separated by semicolons.
+Compound messages (IEEE 488.2 7.3, SCPI-1999 volume 1 section 6.2.4, from memory): units are separated by semicolons; a
+header that follows one is looked up in the path of the one before unless it begins with a colon or is a common command
+(*OPC?), which leaves the path alone. So every later header here begins with a colon. Each query answers one unit,
+separated by semicolons.
 """
 
 from __future__ import annotations
@@ -21,7 +22,7 @@ ERROR_QUERY = "SYST:ERR?"
 
 
 class Exchange(NamedTuple):
-    """What was said, for the archive: bench time (ns), text sent, text received, and what was wrong ("" for nothing)."""
+    """What was said, for the archive: bench time (ns), text sent and received, and what was wrong ("": nothing)."""
 
     time_ns: int
     sent: str

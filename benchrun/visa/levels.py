@@ -22,7 +22,7 @@ def levels_of(value: Value) -> tuple[float, ...]:
 
 
 def check_ceiling(levels_dbm: Sequence[float], ceiling_dbm: float | None) -> None:
-    """Raise InstrumentError for a level above the ceiling, for any level where there is none, and for what is not a number."""
+    """Raise InstrumentError for a level above the ceiling, any level where there is none, and what is no number."""
     if ceiling_dbm is None:
         raise InstrumentError(
             "the bench file gives no ceiling for this instrument, so no level is sent; add `ceiling:`"
@@ -45,7 +45,7 @@ def check_rises(levels_dbm: Sequence[float], ramp_db: float | None) -> None:
 
 
 def rise(now_dbm: float, target_dbm: float, ramp_db: float | None) -> Iterator[float]:
-    """Yield the levels between now and the target, none more than the ramp above the one before; not the target itself."""
+    """Yield the levels between now and the target, none more than the ramp above the last; not the target."""
     if ramp_db is None:
         return
     while target_dbm - now_dbm > ramp_db + ROUNDING_DB:

@@ -1,12 +1,13 @@
-"""A session with one instrument: dialect entries and typed values in, typed replies out. The only Link that drivers get.
+"""A session with one instrument: dialect entries and typed values in, typed replies out. The only Link there is.
 
 What it keeps:
 - one exchange at a time, each with a deadline, the last ones remembered;
 - what is set is seen completed (*OPC?), read back where asked for, and the error queue is emptied, in one message;
-- a level above the ceiling is refused before anything is sent; a level rises by the ramp at most, from what was last read back;
+- a level above the ceiling is refused before anything is sent; a level rises by the ramp at most, from what was last
+  read back;
 - after a failed exchange the link is suspect: it is opened anew and cleared before the next use;
-- an instrument that was switched off and on meanwhile has lost its settings: it is read and switched off, and nothing else, until
-  it has been prepared again.
+- an instrument that was switched off and on meanwhile has lost its settings: it is read and switched off, and nothing
+  else, until it has been prepared again.
 """
 
 from __future__ import annotations
@@ -42,7 +43,8 @@ EVENTS_QUERY = "*ESR?"
 POWER_ON = 1 << 7
 #: How long the error queue may take to say why an exchange was not answered.
 EXPLAIN_S = 0.5
-#: How long a query may take that only asks whether it is understood, and how long the error queue may then be waited for.
+#: How long a query may take that only asks whether it is understood, and how long the error queue may then be waited
+#: for.
 PROBE_S = 0.25
 LONG_PROBE_S = 3.0
 #: Length of the shortest text behind a block, ;0,"" and a line feed; what this instrument says is learned.
@@ -140,7 +142,10 @@ class Session:
         return self._run([], uses(self._dialect, [(entry, values)]), deadline_s)[0]
 
     def send(self, entry: str, *, deadline_s: float | None = None, **values: Value) -> None:
-        """Send the set form, see it completed and the error queue empty; a level is read back too. Raises BenchError."""
+        """Send the set form, see it completed and the error queue empty; a level is read back too.
+
+        Raises BenchError.
+        """
         if self._dialect[entry].level and self._dialect[entry].ask:
             self.confirm_all([(entry, values)], deadline_s=deadline_s)
         else:
@@ -168,7 +173,10 @@ class Session:
             return self._run(wanted, uses(self._dialect, asks), deadline_s)
 
     def confirm_all(self, calls: Sequence[Call], *, deadline_s: float | None = None) -> tuple[Any, ...]:
-        """Do confirm() for several entries in one message; returns what stands, in the same order. Raises BenchError."""
+        """Do confirm() for several entries in one message; returns what stands, in the same order.
+
+        Raises BenchError.
+        """
         if not calls:
             return ()
         wanted = uses(self._dialect, calls)
@@ -181,7 +189,10 @@ class Session:
             return self._set_and_read_back(wanted, deadline_s)
 
     def block(self, entry: str, count: int, *, deadline_s: float | None = None, **values: Value) -> FloatArray:
-        """Return exactly `count` float64 from a definite-length block, and see the error queue empty. Raises BenchError."""
+        """Return exactly `count` float64 from a definite-length block, and see the error queue empty.
+
+        Raises BenchError.
+        """
         found = self._dialect[entry]
         message = self._unsent(lambda: join([found.ask_text(values), ERROR_QUERY]))
         with self._lock:
@@ -193,7 +204,7 @@ class Session:
             return self._understood(message, lambda: scpi.parse_floats(payload, count))
 
     def identify(self) -> Identity:
-        """Ask *IDN? (and *OPT? where the dialect says it is answered), and put aside what others left in the error queue."""
+        """Ask *IDN? (and *OPT? where the dialect says so), and put aside what others left in the error queue."""
         with self._lock:
             text = self._say("*IDN?", DEADLINE_S)
             maker, model, serial, firmware = self._understood("*IDN?", lambda: _four_fields(text))
@@ -206,9 +217,9 @@ class Session:
     def not_understood(self, entries: Sequence[str], *, enough: int | None = None) -> list[str]:
         """Return those entries whose query the instrument does not take for one, at most `enough`; nothing is set.
 
-        Entries without a query form and those that answer in blocks are passed over. Only a command error (-199 to -100,
-        SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may still have nothing to tell.
-        Raises LinkError where the link breaks.
+        Entries without a query form and those that answer in blocks are passed over. Only a command error (-199 to
+        -100, SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may still have nothing to
+        tell. Raises LinkError where the link breaks.
         """
         found: list[str] = []
         for name in entries:
@@ -252,7 +263,10 @@ class Session:
             return not any(-200 < one.number <= -100 for one in entries)
 
     def reopen(self) -> None:
-        """Open the link anew, clear it, and forget what was believed of the instrument. Raises LinkError, ReplyError."""
+        """Open the link anew, clear it, and forget what was believed of the instrument.
+
+        Raises LinkError, ReplyError.
+        """
         with self._lock:
             self.suspect = True
             self._stands_dbm.clear()
@@ -278,7 +292,10 @@ class Session:
     # Levels
 
     def _checked_levels(self, use: Use) -> tuple[float, ...]:
-        """Return the levels that a use would set, () where it carries none. Raises InstrumentError before anything is sent."""
+        """Return the levels that a use would set, () where it carries none.
+
+        Raises InstrumentError before anything is sent.
+        """
         if not use.entry.level or use.entry.level not in use.values:
             return ()
         try:
@@ -304,7 +321,7 @@ class Session:
     # Exchanges
 
     def _now_ns(self) -> int:
-        """Return the bench time; the last known one where the clock is out of reach (that of a served rehearsal is remote)."""
+        """Return the bench time; the last known where the clock is out of reach (a served rehearsal's is remote)."""
         with suppress(OSError):
             self._seen_ns = self._clock.now_ns()
         return self._seen_ns
@@ -373,7 +390,7 @@ class Session:
         self.exchanges.append(Exchange(started_ns, message, "", str(error) or type(error).__name__))
 
     def _explained(self, error: BenchError, message: str) -> BenchError:
-        """Return why there was no whole answer, where the error queue says so: a command error ends a message there and then.
+        """Return why there was no whole answer, where the error queue says so: a command error ends a message.
 
         Query errors (-499 to -400) tell only of the answer that did not come, or of this question about it.
         """
@@ -397,7 +414,7 @@ class Session:
     # Errors
 
     def _answer(self, message: str, text: str) -> Answer:
-        """Take an answer apart; raise InstrumentError for what the error queue holds, ReplyError where it makes no sense."""
+        """Take an answer apart. Raises InstrumentError for what the error queue holds, ReplyError for nonsense."""
         try:
             answer = take_apart(text)
         except ReplyError as error:
@@ -447,7 +464,7 @@ class Session:
         return entries
 
     def _see_restart(self, text: str) -> None:
-        """Note whether the instrument was switched on since this was last asked (power-on event, IEEE 488.2 11.5.1.1.2).
+        """Note whether the instrument was switched on since this was last asked (PON, IEEE 488.2 11.5.1.1.2).
 
         The first answer tells of the time before this session, and only starts the watch.
         """
@@ -456,7 +473,7 @@ class Session:
         self._watching = True
 
     def _fit_to_set(self, wanted: Sequence[Use]) -> None:
-        """Open a suspect link anew; raise InstrumentError where settings are lost, unless all of these only switch off."""
+        """Open a suspect link anew; raise InstrumentError where settings are lost, unless these only switch off."""
         if self.suspect:
             self.reopen()
         if self.restarted and not all(use.entry.switches_off(use.values) for use in wanted):
@@ -466,7 +483,7 @@ class Session:
             )
 
     def _synchronised(self) -> bool:
-        """Read the error queue of a fresh link until it is empty; False where an answer comes that is none to that question.
+        """Read the error queue of a fresh link until it is empty; False where something else answers.
 
         What was in the queue belongs to the exchange that failed, and goes to the transcript only.
         """

@@ -1,7 +1,7 @@
 """SCPI text and IEEE 488.2 blocks: written and read here, without any I/O.
 
-Sources: IEEE Std 488.2-1992 (program data section 7.7, response data section 8.7) and SCPI-1999 (volume 1: headers section 6.2.1,
-numbers section 7.2; volume 2: SYSTem:ERRor chapter 21), both cited from memory.
+Sources: IEEE Std 488.2-1992 (program data section 7.7, response data section 8.7) and SCPI-1999 (volume 1: headers
+section 6.2.1, numbers section 7.2; volume 2: SYSTem:ERRor chapter 21), both cited from memory.
 """
 
 from __future__ import annotations
@@ -60,7 +60,10 @@ def whole_number(value: float) -> str:
 
 
 def word(text: str) -> str:
-    """Return `text` if it is one SCPI word (a letter, then letters and digits). Raises QuantityError for anything else."""
+    """Return `text` if it is one SCPI word (a letter, then letters and digits).
+
+    Raises QuantityError for anything else.
+    """
     if not (_WORD.fullmatch(text) and text.isascii()):
         raise QuantityError(f"{text!r} is not one SCPI word (a letter, then letters and digits)")
     return text
@@ -93,7 +96,10 @@ def quoted(text: str) -> str:
 
 
 def parse_text(text: str) -> str:
-    """Read a string ("..." or '...', inner quotes doubled) or plain character data. Raises ReplyError for a loose quote."""
+    """Read a string ("..." or '...', inner quotes doubled) or plain character data.
+
+    Raises ReplyError for a loose quote.
+    """
     text = text.strip()
     if text[:1] not in ('"', "'"):
         return text
@@ -105,7 +111,10 @@ def parse_text(text: str) -> str:
 
 
 def split(text: str, separator: str) -> list[str]:
-    """Split at `separator` outside of quotes; "" gives one empty part. Raises ReplyError for a quote that never closes."""
+    """Split at `separator` outside of quotes; "" gives one empty part.
+
+    Raises ReplyError for a quote that never closes.
+    """
     if '"' not in text and "'" not in text:
         return text.split(separator)
     parts, start, quote = [], 0, ""
@@ -152,7 +161,10 @@ def parse_error(text: str) -> ErrorEntry:
 
 
 def block_digits(head: bytes) -> int:
-    """Read the first two bytes of a block, "#n": how many digits of length follow (0: length not given). Raises ReplyError."""
+    """Read the first two bytes of a block, "#n": how many digits of length follow (0: length not given).
+
+    Raises ReplyError.
+    """
     if len(head) < 2 or head[:1] != b"#" or not head[1:2].isdigit():
         raise ReplyError(f"a block begins with # and a digit; this begins with {head[:2]!r}")
     return int(head[1:2])
@@ -196,7 +208,7 @@ def parse_floats(payload: bytes | memoryview, count: int) -> FloatArray:
     if len(payload) != 8 * count:
         raise ReplyError(f"{count} numbers of 8 bytes were expected ({8 * count} bytes), {len(payload)} bytes arrived")
     values = np.frombuffer(payload, dtype=">f8").astype(np.float64)
-    if count and not (-INFINITY < values.min() and values.max() < INFINITY):
+    if count and not (values.min() > -INFINITY and values.max() < INFINITY):
         where = int(np.flatnonzero(~(np.abs(values) < INFINITY))[0])
         raise ReplyError(f"number {where + 1} of {count} is {values[where]}: the instrument has no value there")
     return values

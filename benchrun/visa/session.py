@@ -1,10 +1,12 @@
 """The seam to VISA: the only module that imports pyvisa. It moves bytes, keeps deadlines, and maps every error to ours.
 
 Known of the libraries, and met here:
-- pyvisa-py's raw socket opens a refused port without complaint, and holds small writes back (Nagle) until TCP_NODELAY is set;
-- the terminator is off while a block is read by its count: a line feed among the data ends nothing, and nothing is searched for;
-- libraries are shared by class and path, and closing a manager ends all of its sessions: so sessions close first, the manager last,
-  and only by the last bus that uses it;
+- pyvisa-py's raw socket opens a refused port without complaint, and holds small writes back (Nagle) until TCP_NODELAY
+  is set;
+- the terminator is off while a block is read by its count: a line feed among the data ends nothing, and nothing is
+  searched for;
+- libraries are shared by class and path, and closing a manager ends all of its sessions: so sessions close first, the
+  manager last, and only by the last bus that uses it;
 - after a time-out a link is opened anew and cleared before it is used again.
 """
 
@@ -42,7 +44,10 @@ QUIET = (StatusCode.success_max_count_read, StatusCode.success_device_not_presen
 
 
 class Wire:
-    """Bytes to and from one resource, over pyvisa. Every failure is a LinkError, NoAnswerError or ReplyError that says where."""
+    """Bytes to and from one resource, over pyvisa.
+
+    Every failure is a LinkError, NoAnswerError or ReplyError that says where.
+    """
 
     def __init__(self, manager: pyvisa.ResourceManager, name: str, address: str) -> None:
         self.name = name
@@ -75,11 +80,11 @@ class Wire:
             raise self._cannot_open(error) from error
 
     def _ends_at_line_feeds(self) -> bool:
-        """Whether a link tells the end of a message by its line feed: sockets and serial lines do, all others have an END."""
+        """Whether a message ends at its line feed: on sockets and serial lines; all other links have an END."""
         return isinstance(self._resource, SerialInstrument | TCPIPSocket)
 
     def _tune_socket(self) -> None:
-        """Send small writes at once, and see a refused connection now: only pyvisa-py's raw sockets have one to tune."""
+        """Send small writes at once, and see a refused connection now: for pyvisa-py's raw sockets alone."""
         line = self._socket()
         if line is None:
             return
@@ -139,16 +144,18 @@ class Wire:
     ) -> tuple[memoryview | None, str]:
         """Write a message and return the block that answers it, and the text behind it.
 
-        `tail_bytes` is how long that text is at least; it comes with the payload in one read. (None, text) where the answer
-        is no block: the instrument had an error to tell of. Raises ReplyError for a block that is shorter than its header
-        says or of another length, and as query() does.
+        `tail_bytes` is how long that text is at least; it comes with the payload in one read. (None, text) where the
+        answer is no block: the instrument had an error to tell of. Raises ReplyError for a block that is shorter than
+        its header says or of another length, and as query() does.
         """
         ends = time.monotonic() + deadline_s
         try:
             self._write(message, deadline_s)
             self._terminate(False)
             head = self._read_exactly(2 + len(str(payload_bytes)), ends)
-            payload, tail = self._read_block(head, payload_bytes, tail_bytes, ends) if head[:1] == b"#" else (None, head)
+            payload, tail = (
+                self._read_block(head, payload_bytes, tail_bytes, ends) if head[:1] == b"#" else (None, head)
+            )
             self._terminate(True)
             if tail[-1:] != b"\n":
                 tail += self._read_line(ends)

@@ -1,7 +1,7 @@
 """Generic dc supply with named outputs: voltages, current limits, trips, and what flows.
 
-CAUTION: a depletion device dies when its gate is released under drain. The order of outputs is kept by the safe state; this driver
-switches one output at a time, and as a whole only the last-named bias first.
+CAUTION: a depletion device dies when its gate is released under drain. The order of outputs is kept by the safe state;
+this driver switches one output at a time, and as a whole only the last-named bias first.
 """
 
 from __future__ import annotations
@@ -57,7 +57,7 @@ class GenericDcSupply(OverLink):
         return self._readables
 
     def prepare(self) -> None:
-        """Lock the front panel and see that every output answers; outputs are switched one by one, in the bench's order."""
+        """Lock the front panel and see that every output answers; none is switched: their order is the bench's."""
         self.link.confirm_all(self._available(("panel-lock", {"on": True})))
         for bias in self.bench.channels:
             self.link.ask("output", channel=self._channel(bias))
@@ -93,7 +93,10 @@ class GenericDcSupply(OverLink):
         return any(self.link.exchange([], [("voltage-tripped", values), ("current-tripped", values)]))
 
     def make_safe(self) -> None:
-        """Outputs off, the last-named bias first, each seen released before the next. Raises BenchError where one is not."""
+        """Outputs off, the last-named bias first, each seen released before the next.
+
+        Raises BenchError where one is not.
+        """
         for bias in reversed(list(self.bench.channels)):
             self.output(bias, on=False)
             self._see_released(bias)
@@ -120,7 +123,7 @@ class GenericDcSupply(OverLink):
 SPEC = DriverSpec(
     name="dc-supply",
     role="dc-supply",
-    help="DC supply by SCPI-1999: voltages, current limits, over-voltage and over-current trips, measured voltage and current.",
+    help="DC supply by SCPI-1999: voltages, current limits, trips, measured voltage and current.",
     dialect=generic_dialect("dc_supply"),
     needs=(
         "voltage", "current-limit", "over-voltage", "over-current", "voltage-tripped", "current-tripped", "output",

@@ -57,18 +57,22 @@ class OverLink:
         return float(self.link.ask(quantity))
 
     def _see_untouched(self, found: Mapping[str, object]) -> None:
-        """Raise InstrumentError where a setting is not what was read back when it was set: somebody changed it by hand."""
+        """Raise InstrumentError where a setting is not what was read back when it was set: a hand was on it."""
         for entry, value in found.items():
             known = self._stands.get(entry, value)
             if known != value:
                 self._stands.clear()
                 raise InstrumentError(
-                    f"{self.link.name}: its {entry} is now {value!r}; it was set to {known!r} and read back. Somebody changed it "
-                    "at the front panel or over another link, or it was switched off and on. Set the bench up again"
+                    f"{self.link.name}: its {entry} is now {value!r}; it was set to {known!r} and read back. "
+                    "Somebody changed it at the front panel or over another link, or it was switched off and on. "
+                    "Set the bench up again"
                 )
 
     def _switch(self, on: bool, **values: float) -> None:
-        """Switch an output, read back. Off is tried twice: an entry left in the error queue is no reason to leave it on."""
+        """Switch an output, read back.
+
+        Off is tried twice: an entry left in the error queue is no reason to leave it on.
+        """
         try:
             self.link.confirm("output", on=on, **values)
         except InstrumentError:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from typing import ClassVar
+
 from benchrun.contract.hooks import DriverSpec
 from benchrun.contract.kinds import Readable, Settable
 
@@ -11,8 +14,10 @@ from .over_link import OverLink, generic_dialect
 class GenericPowerMeter(OverLink):
     """A power meter that speaks SCPI-1999."""
 
-    SETTABLES = {"frequency": Settable("frequency", "frequency", "frequency that the calibration factor is taken for")}
-    READABLES = {"power": Readable("power", "level", "power incident on the sensor")}
+    SETTABLES: ClassVar[Mapping[str, Settable]] = {
+        "frequency": Settable("frequency", "frequency", "frequency that the calibration factor is taken for")
+    }
+    READABLES: ClassVar[Mapping[str, Readable]] = {"power": Readable("power", "level", "power incident on the sensor")}
 
     def prepare(self) -> None:
         """Readings in dBm, one at a time, front panel locked. Raises BenchError."""

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
+from typing import ClassVar
 
 from benchrun.contract.hooks import DriverSpec
 from benchrun.contract.kinds import Settable
@@ -16,7 +17,7 @@ LIST_ENTRIES = ("list-frequencies", "list-levels", "frequency-mode", "trigger", 
 class GenericSignalSource(OverLink):
     """A generator that speaks SCPI-1999."""
 
-    SETTABLES = {
+    SETTABLES: ClassVar[Mapping[str, Settable]] = {
         "frequency": Settable("frequency", "frequency", "carrier frequency"),
         "level": Settable("level", "level", "level at the output connector"),
     }

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from typing import ClassVar
+
 from benchrun.contract.hooks import DriverSpec
 from benchrun.contract.kinds import Readable
 
@@ -11,7 +14,9 @@ from .over_link import OverLink, generic_dialect
 class GenericThermometer(OverLink):
     """A thermometer that speaks SCPI-1999."""
 
-    READABLES = {"temperature": Readable("temperature", "temperature", "temperature at the probe")}
+    READABLES: ClassVar[Mapping[str, Readable]] = {
+        "temperature": Readable("temperature", "temperature", "temperature at the probe")
+    }
 
     def prepare(self) -> None:
         """Readings in degrees Celsius, front panel locked. Raises BenchError."""

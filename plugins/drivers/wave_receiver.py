@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import ClassVar
 
 import numpy as np
 
@@ -26,7 +27,7 @@ SAME_HZ = 1e-3
 class GenericWaveReceiver(OverLink):
     """An analyser with receiver access and a source of its own, the probe."""
 
-    SETTABLES = {
+    SETTABLES: ClassVar[Mapping[str, Settable]] = {
         "frequency": Settable("frequency", "frequency", "the probe's frequency, and the grid's one point"),
         "level": Settable("level", "level", "the probe's level at the port"),
     }
@@ -67,7 +68,8 @@ class GenericWaveReceiver(OverLink):
         if found != self.bench.coherent:
             said, does = ("coherent", "retuned") if self.bench.coherent else ("retuned", "coherent")
             raise IdentityError(
-                f"{self.link.name}: the bench file says `tones: {said}`, the instrument says {does}. Correct the bench file"
+                f"{self.link.name}: the bench file says `tones: {said}`, the instrument says {does}. "
+                "Correct the bench file"
             )
 
     def set(self, quantity: str, value: float) -> float:
@@ -105,7 +107,8 @@ class GenericWaveReceiver(OverLink):
         missing = [wave for wave in capture.waves if wave not in self.bench.receivers]
         if missing:
             raise InstrumentError(
-                f"{self.link.name} has no receiver for {', '.join(missing)}; the bench file names {list(self.bench.receivers)}"
+                f"{self.link.name} has no receiver for {', '.join(missing)}; "
+                f"the bench file names {', '.join(self.bench.receivers) or 'none'}"
             )
         waves: list[Call] = []
         if capture.waves:
@@ -134,7 +137,10 @@ class GenericWaveReceiver(OverLink):
         return [("grid-mode", {"mode": "LIST"}), ("grid-list", {"frequencies": grid})]
 
     def acquire(self) -> WaveData:
-        """Make one sweep as configured and return the raw waves, root-watt, shape (tones, waves, points). Raises BenchError."""
+        """Make one sweep as configured and return the raw waves, root-watt, shape (tones, waves, points).
+
+        Raises BenchError.
+        """
         capture = self._capture
         if capture is None:
             raise InstrumentError(f"{self.link.name} was not configured before it was to acquire")
@@ -177,11 +183,12 @@ class GenericWaveReceiver(OverLink):
 SPEC = DriverSpec(
     name="wave-receiver",
     role="wave-receiver",
-    help="Analyser with receiver access: raw waves at a grid and at offsets from it; wants a dialect file for its receivers.",
+    help="Analyser with receiver access: raw waves at a grid and at offsets from it; wants a dialect file.",
     dialect=generic_dialect("wave_receiver"),
     needs=(
-        "frequency", "level", "output", "condition", "grid-mode", "grid-start", "grid-stop", "grid-points", "grid-list", "if-bandwidth",
-        "averages", "sweep", "abort", "data-format", "source-port", "waves", "offsets", "capture", "data", "limits",
+        "frequency", "level", "output", "condition", "grid-mode", "grid-start", "grid-stop", "grid-points", "grid-list",
+        "if-bandwidth", "averages", "sweep", "abort", "data-format", "source-port", "waves", "offsets", "capture",
+        "data", "limits",
     ),
     optional=("free-run", "byte-order", "averaging", "point-pulse", "reference", "panel-lock"),
     build=GenericWaveReceiver,

@@ -1,7 +1,8 @@
 """The project's figures: python tests/benchmarks/run.py [NAME ...] [--json].
 
-Every module of this folder that has figures() is a topic, called by the module's name; without names all run. A figure is a ratio or a
-count measured in one run, so that a slow or busy machine changes nothing. Exits 1 where one does not hold.
+Every module of this folder that has figures() is a topic, called by the module's name; without names all run. A figure
+is a ratio or a count measured in one run, so that a slow or busy machine changes nothing. Exits 1 where one does not
+hold.
 """
 
 from __future__ import annotations

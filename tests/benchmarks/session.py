@@ -1,7 +1,7 @@
 """What the session costs beside the plain thing: blocks of waves and single queries, over a socket and in this process.
 
-Everything is measured turn by turn in one run, and compared by medians. The socket's other end is a process of its own with
-canned replies; in this process the simulated instruments answer.
+Everything is measured turn by turn in one run, and compared by medians. The socket's other end is a process of its own
+with canned replies; in this process the simulated instruments answer.
 """
 
 from __future__ import annotations
@@ -15,10 +15,10 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from typing import Any, TypedDict
 
+import benchrun_sim
 import numpy as np
 import pyvisa
 
-import benchrun_sim
 from benchrun.contract.capture import FloatArray
 from benchrun.visa.dialect import Dialect, DialectText, compile_dialect
 from benchrun.visa.session import Bus, Session
@@ -37,7 +37,9 @@ import socket
 import numpy as np
 payload = np.random.default_rng(1).normal(size={COUNT}).astype(">f8").tobytes()
 block = b"#6%06d" % len(payload) + payload
-replies = {{b"D?": block + b"\\n", b"D?;:SYST:ERR?": block + {ERROR!r}, b"F?": b"2200000000\\n", b"F?;:SYST:ERR?": b"2200000000" + {ERROR!r}}}
+number = b"2200000000"
+replies = {{b"D?": block + b"\\n", b"F?": number + b"\\n"}}
+replies |= {{b"D?;:SYST:ERR?": block + {ERROR!r}, b"F?;:SYST:ERR?": number + {ERROR!r}}}
 with socket.create_server(("127.0.0.1", 0)) as listener:
     print(listener.getsockname()[1], flush=True)
     import threading
@@ -86,7 +88,13 @@ def _medians_s(rounds: int, calls: int, **ways: Callable[[], object]) -> dict[st
 def _dialect(data: str, frequency: str) -> Dialect:
     dialect, wrong = compile_dialect(
         DialectText.model_validate(
-            {"benchrun": 1, "entries": {"data": {"ask": data, "reply": "block"}, "frequency": {"ask": frequency, "reply": "frequency"}}}
+            {
+                "benchrun": 1,
+                "entries": {
+                    "data": {"ask": data, "reply": "block"},
+                    "frequency": {"ask": frequency, "reply": "frequency"},
+                },
+            }
         )
     )
     assert not wrong
@@ -104,7 +112,7 @@ def _server() -> Iterator[int]:
 
 
 def _over_socket(port: int, rounds: int) -> list[Figure]:
-    """Measure ours and the floor over one connection: the other end's thread may sit on another core for another one."""
+    """Measure ours and the floor over one connection: another one's other end may sit on another core."""
     with Bus("py") as bus:
         address = f"TCPIP0::127.0.0.1::{port}::SOCKET"
         session = bus.open("other-end", address, _dialect("D?", "F?"), clock=StepClock())
@@ -176,7 +184,9 @@ def _in_process(rounds: int) -> list[Figure]:
             ours=lambda: session.query("frequency"),
             drained=lambda: session.ask("frequency"),
         )
-    return _block_figures("in-process", "library's write and read of the same message", blocks) + _query_figures("in-process", MOST_IN_PROCESS, queries)
+    return _block_figures("in-process", "library's write and read of the same message", blocks) + _query_figures(
+        "in-process", MOST_IN_PROCESS, queries
+    )
 
 
 def _sweep(analyser: Any) -> None:
@@ -197,7 +207,11 @@ def _plain_read(library: Any, handle: Any) -> FloatArray:
 def _block_figures(where: str, floor: str, medians_s: dict[str, float]) -> list[Figure]:
     plain_s = medians_s["plain"]
     return [
-        _figure(f"block of 4 x 1601 complex waves, {where}, times the {floor}", medians_s["ours"] / plain_s, MOST_TIMES_FLOOR),
+        _figure(
+            f"block of 4 x 1601 complex waves, {where}, times the {floor}",
+            medians_s["ours"] / plain_s,
+            MOST_TIMES_FLOOR,
+        ),
         _figure(f"  the same by pyvisa's default, {where} (for comparison)", medians_s["default"] / plain_s, None),
     ]
 

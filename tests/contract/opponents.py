@@ -13,6 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import benchrun_sim
+
 from benchrun.contract.hooks import DriverSpec
 from benchrun.contract.roles import InstrumentSettings
 from benchrun.drivers.dialects import dialect_for
@@ -60,7 +61,9 @@ class Opponent:
             yield bout
 
 
-def simulated(instrument: str, settings: InstrumentSettings, *, dialect: str | None = None, coherent: bool = True) -> Any:
+def simulated(
+    instrument: str, settings: InstrumentSettings, *, dialect: str | None = None, coherent: bool = True
+) -> Any:
     """Return what opens a bout against an instrument of the simulated bench."""
 
     @contextmanager
@@ -93,24 +96,24 @@ def _settings(name: str, **given: Any) -> InstrumentSettings:
 
 
 _WAVES = {"incident": "R3", "reflected": "R4"}
-_DIALECT = "simulated-wave-receiver.dialect.yaml"
+DIALECT = "simulated-wave-receiver.dialect.yaml"
 
 OPPONENTS: list[Opponent] = [
     Opponent("simulated source", "signal-source", simulated("pump", _settings("pump"))),
     Opponent(
         "simulated receiver, coherent",
         "wave-receiver",
-        simulated("analyser", _settings("analyser", receivers=_WAVES, source_port=2, coherent=True), dialect=_DIALECT),
+        simulated("analyser", _settings("analyser", receivers=_WAVES, source_port=2, coherent=True), dialect=DIALECT),
     ),
     Opponent(
         "simulated receiver, retuned",
         "wave-receiver",
-        simulated(
-            "analyser", _settings("analyser", receivers=_WAVES, source_port=2), dialect=_DIALECT, coherent=False
-        ),
+        simulated("analyser", _settings("analyser", receivers=_WAVES, source_port=2), dialect=DIALECT, coherent=False),
     ),
     Opponent("simulated meter", "power-meter", simulated("meter", _settings("meter"))),
-    Opponent("simulated supply", "dc-supply", simulated("supply", _settings("supply", channels={"gate": 1, "drain": 2}))),
+    Opponent(
+        "simulated supply", "dc-supply", simulated("supply", _settings("supply", channels={"gate": 1, "drain": 2}))
+    ),
     Opponent("simulated thermometer", "thermometer", simulated("ambient", _settings("ambient"))),
 ]
 

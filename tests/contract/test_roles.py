@@ -7,7 +7,7 @@ import pytest
 
 from benchrun.contract.capture import Capture
 from benchrun.errors import BenchError, IdentityError, InstrumentError
-from tests.contract.opponents import Bout, simulated
+from tests.contract.opponents import DIALECT, Bout, simulated
 from tests.contract.test_any_driver import switch
 
 WAVES = ("incident", "reflected")
@@ -15,7 +15,16 @@ WAVES = ("incident", "reflected")
 
 def capture(*frequencies_hz: float, tones: int = 1, **given: object) -> Capture:
     names, offsets = ("probe", "pump", "image")[:tones], (0.0, -7e6, -14e6)[:tones]
-    return Capture(**{"waves": WAVES, "tones": names, "offsets_hz": offsets, "frequencies_hz": frequencies_hz, "if_bandwidth_hz": 1e3, **given})  # type: ignore[arg-type]
+    return Capture(
+        **{
+            "waves": WAVES,
+            "tones": names,
+            "offsets_hz": offsets,
+            "frequencies_hz": frequencies_hz,
+            "if_bandwidth_hz": 1e3,
+            **given,
+        }
+    )  # type: ignore[arg-type]
 
 
 def ratio(bout: Bout) -> np.ndarray:
@@ -69,7 +78,9 @@ class TestSignalSource:
         assert source.follow(1) is None
         assert bout.driver.set("frequency", 2.21e9) == 2.21e9
 
-    @pytest.mark.parametrize(("frequencies", "levels"), [([], []), ([2e9], [-20.0, -20.0]), ([2e9, 2.1e9], [-20.0, 0.0]), ([2e9], [9.0])])
+    @pytest.mark.parametrize(
+        ("frequencies", "levels"), [([], []), ([2e9], [-20.0, -20.0]), ([2e9, 2.1e9], [-20.0, 0.0]), ([2e9], [9.0])]
+    )
     def test_a_list_that_may_not_be(self, bout: Bout, frequencies: list[float], levels: list[float]) -> None:
         bout.driver.prepare()
         with pytest.raises(InstrumentError):
@@ -191,9 +202,9 @@ class TestWaveReceiver:
     def test_the_bench_file_says_otherwise_than_the_instrument(self, bout: Bout) -> None:
         settings = bout.driver.bench
         wrong = type(settings)(settings.name, settings.receivers, {}, settings.source_port, not settings.coherent)
-        with simulated("analyser", wrong, dialect="simulated-wave-receiver.dialect.yaml", coherent=settings.coherent)(bout.spec) as other:
-            with pytest.raises(IdentityError, match="tones"):
-                other.driver.prepare()
+        enter = simulated("analyser", wrong, dialect=DIALECT, coherent=settings.coherent)
+        with enter(bout.spec) as other, pytest.raises(IdentityError, match="tones"):
+            other.driver.prepare()
 
 
 class TestDcSupply:

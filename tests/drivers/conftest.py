@@ -7,9 +7,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import benchrun_sim
 import pytest
 
-import benchrun_sim
 from benchrun.bench.load import load_bench
 from benchrun.bench.model import Bench
 from benchrun.drivers.open_bench import OpenBench, open_bench

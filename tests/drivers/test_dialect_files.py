@@ -21,7 +21,9 @@ def test_every_example_is_sound() -> None:
 
 
 def test_what_the_standard_leaves_open(registry: Registry) -> None:
-    with pytest.raises(FileProblemsError, match="capture, data, limits, offsets, source-port, waves.*name a dialect file"):
+    with pytest.raises(
+        FileProblemsError, match=r"capture, data, limits, offsets, source-port, waves.*name a dialect file"
+    ):
         dialect_for(registry.drivers["wave-receiver"], None)
     path = RECIPES / "simulated-wave-receiver.dialect.yaml"
     dialect = dialect_for(registry.drivers["wave-receiver"], path)

@@ -8,7 +8,13 @@ from benchrun.drivers.identify import identify
 from benchrun.errors import LinkError
 from tests.drivers.conftest import Rehearsed
 
-ROLES = {"pump": "signal-source", "analyser": "wave-receiver", "meter": "power-meter", "supply": "dc-supply", "ambient": "thermometer"}
+ROLES = {
+    "pump": "signal-source",
+    "analyser": "wave-receiver",
+    "meter": "power-meter",
+    "supply": "dc-supply",
+    "ambient": "thermometer",
+}
 
 
 @pytest.mark.parametrize("name", ROLES)
@@ -25,7 +31,9 @@ def test_the_driver_that_fits(rehearsed: Rehearsed, name: str) -> None:
 
 
 def test_what_is_left_to_a_dialect_file(rehearsed: Rehearsed) -> None:
-    finding = identify(rehearsed.rehearsal.addresses["analyser"], rehearsed.registry, rehearsed.bus, rehearsed.rehearsal.clock)
+    finding = identify(
+        rehearsed.rehearsal.addresses["analyser"], rehearsed.registry, rehearsed.bus, rehearsed.rehearsal.clock
+    )
     assert finding.best is not None
     assert finding.best.left_open == ("source-port", "waves", "offsets", "capture", "data", "limits")
 
@@ -36,7 +44,9 @@ def test_what_is_not_answered(rehearsed: Rehearsed) -> None:
     table = type(rack.instruments["pump"])
     lacking = type("Lacking", (table,), {"COMMANDS": tuple(c for c in table.COMMANDS if "ROSC" not in c.header)})
     rack.instruments["pump"].__class__ = lacking
-    finding = identify(rehearsed.rehearsal.addresses["pump"], rehearsed.registry, rehearsed.bus, rehearsed.rehearsal.clock)
+    finding = identify(
+        rehearsed.rehearsal.addresses["pump"], rehearsed.registry, rehearsed.bus, rehearsed.rehearsal.clock
+    )
     assert finding.best is not None
     assert finding.best.driver == "signal-source"
     assert finding.best.optional_unanswered == ("reference",)

@@ -45,7 +45,13 @@ def test_preparing_switches_rf_off_before_all_else(rehearsed: Rehearsed) -> None
 def test_full_names(rehearsed: Rehearsed) -> None:
     opened = rehearsed.open()
     opened.prepare()
-    sent = {"pump.frequency": 2.3e9, "probe.level": -20.0, "gate.voltage": -4.0, "drain.current-limit": 2.0, "meter.frequency": 2.3e9}
+    sent = {
+        "pump.frequency": 2.3e9,
+        "probe.level": -20.0,
+        "gate.voltage": -4.0,
+        "drain.current-limit": 2.0,
+        "meter.frequency": 2.3e9,
+    }
     for name, value in sent.items():
         assert opened.set(name, value) == pytest.approx(value)
     instruments = rehearsed.rehearsal.rack.instruments
@@ -60,7 +66,7 @@ def test_full_names(rehearsed: Rehearsed) -> None:
 @pytest.mark.parametrize("name", ["pmup.level", "pump", "pump.volume", "drain.frequency", "", "meter.power"])
 def test_names_that_cannot_be_set(rehearsed: Rehearsed, name: str) -> None:
     opened = rehearsed.open()
-    with pytest.raises(InstrumentError, match="it has pump.frequency"):
+    with pytest.raises(InstrumentError, match=r"it has pump.frequency"):
         opened.set(name, 1.0)
 
 
@@ -72,33 +78,44 @@ def test_names_that_cannot_be_read(rehearsed: Rehearsed, name: str) -> None:
 
 @pytest.mark.parametrize(
     ("name", "value"),
-    [("pump.frequency", 7e9), ("pump.level", 5.5), ("gate.voltage", 0.1), ("drain.voltage", 30.1), ("drain.current-limit", 3.1), ("pump.level", float("nan"))],
+    [
+        ("pump.frequency", 7e9),
+        ("pump.level", 5.5),
+        ("gate.voltage", 0.1),
+        ("drain.voltage", 30.1),
+        ("drain.current-limit", 3.1),
+        ("pump.level", float("nan")),
+    ],
 )
 def test_out_of_the_bench_files_range_nothing_is_sent(rehearsed: Rehearsed, name: str, value: float) -> None:
     opened = rehearsed.open()
     opened.prepare()
     before = {one: len(session.exchanges) for one, session in opened.sessions.items()}
-    with pytest.raises(InstrumentError, match="Nothing was sent"):
+    with pytest.raises(InstrumentError, match=r"Nothing was sent"):
         opened.set(name, value)
     assert {one: len(session.exchanges) for one, session in opened.sessions.items()} == before
 
 
 def test_names_of_nothing(rehearsed: Rehearsed) -> None:
     opened = rehearsed.open()
-    with pytest.raises(InstrumentError, match="no signal 'pmup'; it has pump, probe"):
+    with pytest.raises(InstrumentError, match=r"no signal 'pmup'; it has pump, probe"):
         opened.signal("pmup")
-    with pytest.raises(InstrumentError, match="no bias 'base'; it has gate, drain"):
+    with pytest.raises(InstrumentError, match=r"no bias 'base'; it has gate, drain"):
         opened.supply("base")
 
 
 class TestAnotherInstrument:
     def test_another_kind(self, rehearsed: Rehearsed) -> None:
         addresses = rehearsed.rehearsal.addresses
-        with pytest.raises(IdentityError, match="pump: Ostrelby Beck-1 answers, and does not know 'frequency'|'level'"):
+        with pytest.raises(
+            IdentityError, match=r"pump: Ostrelby Beck-1 answers, and does not know 'frequency'|'level'"
+        ):
             rehearsed.open(pump=addresses["meter"])
-        with pytest.raises(IdentityError, match="meter: Quillfen Works Fell-6 answers"):
+        with pytest.raises(IdentityError, match=r"meter: Quillfen Works Fell-6 answers"):
             rehearsed.open(meter=addresses["pump"])
-        with pytest.raises(IdentityError, match="pump: Larkmoor Instruments Tarn-4 answers, and does not know 'frequency'"):
+        with pytest.raises(
+            IdentityError, match=r"pump: Larkmoor Instruments Tarn-4 answers, and does not know 'frequency'"
+        ):
             rehearsed.open(pump=addresses["analyser"])
 
     def test_another_one_of_the_same_kind(self, rehearsed: Rehearsed) -> None:
@@ -125,7 +142,7 @@ def test_a_driver_that_is_not_installed(rehearsed: Rehearsed) -> None:
     pump = bench.instruments["pump"].model_copy(update={"driver": "sygnal-source"})
     rehearsed.bench = bench.model_copy(update={"instruments": {**bench.instruments, "pump": pump}})
     rehearsed.bench._path = bench.path
-    with pytest.raises(FileProblemsError, match="no driver 'sygnal-source' is installed. There is dc-supply"):
+    with pytest.raises(FileProblemsError, match=r"no driver 'sygnal-source' is installed. There is dc-supply"):
         rehearsed.open()
 
 
@@ -133,12 +150,14 @@ def test_a_restart_is_noticed_and_stops_everything_but_off(rehearsed: Rehearsed)
     opened = rehearsed.open()
     opened.prepare()
     opened.set("pump.level", -20.0)
-    rehearsed.rehearsal.faults.add("power-cycle", at=1 + rehearsed.rehearsal.faults.by_instrument["pump"], instrument="pump")
+    rehearsed.rehearsal.faults.add(
+        "power-cycle", at=1 + rehearsed.rehearsal.faults.by_instrument["pump"], instrument="pump"
+    )
     with pytest.raises(LinkError):
         opened.signal("pump").output(on=True)
-    with pytest.raises(InstrumentError, match="or it was switched off and on"):
+    with pytest.raises(InstrumentError, match=r"or it was switched off and on"):
         opened.signal("pump").output(on=True)
-    with pytest.raises(InstrumentError, match="its settings are gone"):
+    with pytest.raises(InstrumentError, match=r"its settings are gone"):
         opened.signal("pump").output(on=True)
     opened.instruments["pump"].make_safe()
     assert opened.restarted() == ("pump",)

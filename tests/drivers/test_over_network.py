@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
+import benchrun_sim
 import numpy as np
 import pytest
 
-import benchrun_sim
 from benchrun.bench.model import Bench
 from benchrun.contract.capture import Capture
 from benchrun.drivers.identify import identify

@@ -103,14 +103,16 @@ def test_built_in_comes_first(plugins: Plugins) -> None:
 )
 def test_a_bad_driver_names_its_argument(plugins: Plugins, argument: str, value: Any, expected: str) -> None:
     plugins.add("field", drivers=[GOOD, replace(GOOD, **{argument: value})])
-    with pytest.raises(PluginError, match=rf"plugin 'field'.*hook benchrun_drivers: item 2: argument {argument} is .*{expected}"):
+    with pytest.raises(
+        PluginError, match=rf"plugin 'field'.*hook benchrun_drivers: item 2: argument {argument} is .*{expected}"
+    ):
         plugins.load()
 
 
 @pytest.mark.parametrize("dialect", ["", "entries: [", "benchrun: 2\n", "benchrun: 1\nentries: {a: {sett: A}}\n"])
 def test_a_bad_dialect_is_the_drivers_fault(plugins: Plugins, dialect: str) -> None:
     plugins.add("field", drivers=[replace(GOOD, dialect=dialect)])
-    with pytest.raises(PluginError, match="hook benchrun_drivers: item 1: dialect of driver whisker-gauge"):
+    with pytest.raises(PluginError, match=r"hook benchrun_drivers: item 1: dialect of driver whisker-gauge"):
         plugins.load()
 
 
@@ -127,55 +129,59 @@ def test_a_bad_dialect_is_the_drivers_fault(plugins: Plugins, dialect: str) -> N
 )
 def test_a_bad_step_names_its_argument(plugins: Plugins, argument: str, value: Any, expected: str) -> None:
     plugins.add("field", steps=[replace(STEP, **{argument: value})])
-    with pytest.raises(PluginError, match=rf"plugin 'field'.*hook benchrun_steps: item 1: argument {argument} .*{expected}"):
+    with pytest.raises(
+        PluginError, match=rf"plugin 'field'.*hook benchrun_steps: item 1: argument {argument} .*{expected}"
+    ):
         plugins.load()
 
 
 def test_things_that_are_no_specs(plugins: Plugins) -> None:
     plugins.add("field", drivers=["whisker-gauge"])
-    with pytest.raises(PluginError, match="item 1 is 'whisker-gauge'; it must be a DriverSpec"):
+    with pytest.raises(PluginError, match=r"item 1 is 'whisker-gauge'; it must be a DriverSpec"):
         plugins.load()
 
 
 def test_a_hook_that_fails(plugins: Plugins) -> None:
     plugins.add("field", steps=lambda: 1 / 0)
-    with pytest.raises(PluginError, match="hook benchrun_steps: failed: ZeroDivisionError") as caught:
+    with pytest.raises(PluginError, match=r"hook benchrun_steps: failed: ZeroDivisionError") as caught:
         plugins.load()
     assert isinstance(caught.value.__cause__, ZeroDivisionError)
 
 
 def test_a_hook_that_returns_nothing(plugins: Plugins) -> None:
     plugins.add("field", steps=lambda: None)
-    with pytest.raises(PluginError, match="hook benchrun_steps: failed: TypeError"):
+    with pytest.raises(PluginError, match=r"hook benchrun_steps: failed: TypeError"):
         plugins.load()
 
 
 def test_a_plugin_that_cannot_be_loaded(plugins: Plugins) -> None:
     plugins.entry_points.append(EntryPoint("broken", "module_that_is_not_there", "benchrun.plugins"))
-    with pytest.raises(PluginError, match=r"plugin 'broken' .*module_that_is_not_there.* cannot be loaded: ModuleNotFoundError"):
+    with pytest.raises(
+        PluginError, match=r"plugin 'broken' .*module_that_is_not_there.* cannot be loaded: ModuleNotFoundError"
+    ):
         plugins.load()
 
 
 def test_a_hook_of_another_name(plugins: Plugins) -> None:
     plugins.add("field", benchrun_dirvers=hookimpl(lambda: []))
-    with pytest.raises(PluginError, match="benchrun_dirvers"):
+    with pytest.raises(PluginError, match=r"benchrun_dirvers"):
         plugins.load()
 
 
 def test_a_hook_that_was_not_marked(plugins: Plugins) -> None:
     plugins.add("field", benchrun_drivers=lambda: [GOOD])
-    with pytest.raises(PluginError, match="benchrun_drivers is named like a hook and not marked"):
+    with pytest.raises(PluginError, match=r"benchrun_drivers is named like a hook and not marked"):
         plugins.load()
 
 
 def test_one_name_twice(plugins: Plugins) -> None:
     plugins.add("field", drivers=[GOOD])
     plugins.add("stream", drivers=[GOOD])
-    with pytest.raises(PluginError, match="plugin 'stream'.*'whisker-gauge' is taken by plugin 'field'"):
+    with pytest.raises(PluginError, match=r"plugin 'stream'.*'whisker-gauge' is taken by plugin 'field'"):
         plugins.load()
 
 
 def test_one_name_twice_in_one_plugin(plugins: Plugins) -> None:
     plugins.add("field", steps=[STEP, STEP])
-    with pytest.raises(PluginError, match="'whistle' is taken by this plugin itself"):
+    with pytest.raises(PluginError, match=r"'whistle' is taken by this plugin itself"):
         plugins.load()

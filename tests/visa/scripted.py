@@ -23,7 +23,8 @@ Fault = Callable[["Line", bytes], bytes | None]
 class ScriptedInstrument:
     """Keeps settings by header and answers their queries; `answers` hold what is fixed, `limits` clip numbers.
 
-    As IEEE 488.2 and SCPI-1999 want it: an unknown header ends the message with -113, and responses are joined by semicolons.
+    As IEEE 488.2 and SCPI-1999 want it: an unknown header ends the message with -113, and responses are joined by
+    semicolons.
     """
 
     settings: dict[str, str] = field(default_factory=dict)

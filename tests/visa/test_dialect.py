@@ -194,7 +194,8 @@ class TestFiles:
 
     def test_a_bad_tolerance_names_the_entry(self) -> None:
         text = DialectText.model_validate({
-            "benchrun": 1, "entries": {"far": {"set": "A {v}", "ask": "A?", "carries": {"v": "level"}, "tolerance": "1 parsec"}},
+            "benchrun": 1,
+            "entries": {"far": {"set": "A {v}", "ask": "A?", "carries": {"v": "level"}, "tolerance": "1 parsec"}},
         })  # fmt: skip
         dialect, wrong = compile_dialect(text)
         assert not dialect.has("far")
@@ -215,7 +216,10 @@ class TestFiles:
         over = DialectText.model_validate({
             "benchrun": 1, "options": True, "timing": {"point": "3 ms"},
             "entries": {
-                "voltage": {"set": "INSTrument{channel}:VOLTage {volts}", "carries": {"volts": {"kind": "voltage", "unit": "MV"}}},
+                "voltage": {
+                    "set": "INSTrument{channel}:VOLTage {volts}",
+                    "carries": {"volts": {"kind": "voltage", "unit": "MV"}},
+                },
                 "waves": {"set": "SENSe:RECeiver:LIST {receivers}", "ask": "SENSe:RECeiver:LIST?"},
                 "lock": {"set": None},
             },

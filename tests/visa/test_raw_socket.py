@@ -59,7 +59,7 @@ def test_a_large_block(server: SocketServer, device: ScriptedInstrument, bus: Bu
 def test_a_short_block_ends_at_the_deadline(server: SocketServer, device: ScriptedInstrument, bus: Bus) -> None:
     device.answers["SENS:DATA?"] = b"#3800" + bytes(96)
     session = bus.open("pump", server.address, dialect(), clock=StepClock())
-    with pytest.raises(ReplyError, match="says 800 bytes, and fewer arrived before the deadline"):
+    with pytest.raises(ReplyError, match=r"says 800 bytes, and fewer arrived before the deadline"):
         session.block("data", 100, deadline_s=0.2)
     assert session.suspect
     assert session.ask("output") is False
@@ -69,12 +69,12 @@ def test_a_short_block_ends_at_the_deadline(server: SocketServer, device: Script
 def test_nothing_listens(bus: Bus, caplog: pytest.LogCaptureFixture) -> None:
     with socket.create_server(("127.0.0.1", 0)) as once:
         port = once.getsockname()[1]
-    with pytest.raises(LinkError, match="cannot be opened, nothing answers there.*refused"):
+    with pytest.raises(LinkError, match=r"cannot be opened, nothing answers there.*refused"):
         bus.open("pump", f"TCPIP0::127.0.0.1::{port}::SOCKET", dialect(), clock=StepClock())
     caplog.set_level(logging.CRITICAL, logger="pyvisa")  # its log would keep that socket
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", ResourceWarning)  # pyvisa-py leaves the refused socket to the garbage collector
-        with pytest.raises(LinkError, match="cannot be opened"):
+        with pytest.raises(LinkError, match=r"cannot be opened"):
             bus.open("pump", f"TCPIP0::127.0.0.1::hislip0,{port}::INSTR", dialect(), clock=StepClock())
         gc.collect()
 
@@ -82,7 +82,7 @@ def test_nothing_listens(bus: Bus, caplog: pytest.LogCaptureFixture) -> None:
 def test_the_other_end_hangs_up(server: SocketServer, bus: Bus) -> None:
     session = bus.open("pump", server.address, dialect(), clock=StepClock())
     server.hang_up_after = 0
-    with pytest.raises(LinkError, match="the link broke") as caught:
+    with pytest.raises(LinkError, match=r"the link broke") as caught:
         session.ask("output", deadline_s=0.2)
     assert not isinstance(caught.value, NoAnswerError)
     assert session.ask("output") is False

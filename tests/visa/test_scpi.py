@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import math
 import struct
 
@@ -20,7 +21,7 @@ class TestStandards:
     """Values from outside the project; the source stands beside each."""
 
     def test_definite_block_of_float64(self) -> None:
-        """IEEE 488.2 section 8.7.9, from memory: # , digits of the length, the length, then the bytes, big-endian by default."""
+        """IEEE 488.2 section 8.7.9, from memory: #, digits of the length, the length, then the bytes."""
         block = scpi.make_floats(np.array([1.0, -2.5]))
         assert block == b"#216" + bytes.fromhex("3ff0000000000000c004000000000000")
         assert list(scpi.parse_floats(scpi.parse_block(block), 2)) == [1.0, -2.5]
@@ -42,14 +43,14 @@ class TestStandards:
         [("FREQuency", "FREQ"), ("POWer", "POW"), ("OUTPut", "OUTP"), ("SWEep", "SWE"), ("BANDwidth", "BAND")],
     )
     def test_short_forms(self, header: str, short: str) -> None:
-        """SCPI-1999 volume 1 section 6.2.1, from memory: four letters, three where the fourth is a vowel, all of four or fewer."""
+        """SCPI-1999 volume 1 section 6.2.1, from memory: four letters, three where the fourth is a vowel."""
         assert scpi.short_form(header) == short
         assert scpi.is_form_of(short.lower(), header)
         assert scpi.is_form_of(header.upper(), header)
         assert not scpi.is_form_of(header[:-1], header)
 
     def test_special_numbers(self) -> None:
-        """SCPI-1999 volume 1 section 7.2.1, from memory: 9.9E37 infinity, -9.9E37 its negative, 9.91E37 not a number."""
+        """SCPI-1999 volume 1 section 7.2.1, from memory: 9.9E37 infinity, -9.9E37 its negative, 9.91E37 no number."""
         assert scpi.parse_number("9.9E37") == math.inf
         assert scpi.parse_number("-9.9E37") == -math.inf
         assert math.isnan(scpi.parse_number("9.91E37"))
@@ -151,20 +152,16 @@ def test_any_text_is_read_or_refused(text: str) -> None:
         scpi.parse_list,
         lambda t: scpi.split(t, ";"),
     ):
-        try:
+        with contextlib.suppress(ReplyError):
             read(text)  # type: ignore[operator]
-        except ReplyError as error:
-            assert str(error)
 
 
 @given(st.binary(max_size=40))
 def test_any_bytes_are_a_block_or_refused(message: bytes) -> None:
-    try:
+    payload = b""
+    with contextlib.suppress(ReplyError):
         payload = scpi.parse_block(message)
-    except ReplyError as error:
-        assert str(error)
-    else:
-        assert payload in message
+    assert payload in message
 
 
 @given(st.text())

@@ -31,8 +31,17 @@ def dialect() -> Dialect:
                     "carries": {"frequency": "frequency"},
                     "tolerance": "1 Hz",
                 },
-                "level": {"set": "SOURce:POWer {level}", "ask": "SOURce:POWer?", "carries": {"level": "level"}, "tolerance": "0.01 dB"},
-                "levels": {"set": "SOURce:LIST:POWer {levels}", "ask": "SOURce:LIST:POWer?", "carries": {"levels": {"kind": "level", "list": True}}},
+                "level": {
+                    "set": "SOURce:POWer {level}",
+                    "ask": "SOURce:POWer?",
+                    "carries": {"level": "level"},
+                    "tolerance": "0.01 dB",
+                },
+                "levels": {
+                    "set": "SOURce:LIST:POWer {levels}",
+                    "ask": "SOURce:LIST:POWer?",
+                    "carries": {"levels": {"kind": "level", "list": True}},
+                },
                 "output": {"set": "OUTPut:STATe {on}", "ask": "OUTPut:STATe?", "carries": {"on": "switch"}},
                 "sweep": {"set": "INITiate:IMMediate", "deadline": "7 s"},
                 "data": {"ask": "SENSe:DATA?", "reply": "block"},
@@ -128,7 +137,7 @@ class TestExchanges:
 
     def test_a_badly_formed_identity(self, bench: Bench) -> None:
         bench.instrument.answers["*IDN?"] = b"who knows"
-        with pytest.raises(ReplyError, match="maker,model,serial,firmware"):
+        with pytest.raises(ReplyError, match=r"maker,model,serial,firmware"):
             bench.session.identify()
 
     def test_the_last_exchanges_are_kept(self, bench: Bench) -> None:
@@ -141,7 +150,7 @@ class TestExchanges:
 
     def test_an_entry_that_is_not_there(self, bench: Bench) -> None:
         assert not bench.session.has("phase")
-        with pytest.raises(InstrumentError, match="no entry 'phase'"):
+        with pytest.raises(InstrumentError, match=r"no entry 'phase'"):
             bench.session.ask("phase")
 
     def test_a_value_that_is_none(self, bench: Bench) -> None:
@@ -162,17 +171,17 @@ class TestLevels:
 
     @pytest.mark.parametrize("level", [float("nan"), float("inf"), "5", "5 DBM;OUTP 1"])
     def test_no_level(self, bench: Bench, level: Any) -> None:
-        with pytest.raises(InstrumentError, match="Nothing was sent"):
+        with pytest.raises(InstrumentError, match=r"Nothing was sent"):
             bench.session.confirm("level", level=level)
         assert bench.heard() == []
 
     def test_no_ceiling_no_level(self, bench: Bench) -> None:
         session = bench.open(ceiling_dbm=None)
-        with pytest.raises(InstrumentError, match="no ceiling"):
+        with pytest.raises(InstrumentError, match=r"no ceiling"):
             session.confirm("level", level=-100.0)
 
     def test_a_bad_level_among_others_stops_all(self, bench: Bench) -> None:
-        with pytest.raises(InstrumentError, match="ceiling"):
+        with pytest.raises(InstrumentError, match=r"ceiling"):
             bench.session.confirm_all([("output", {"on": True}), ("level", {"level": 6.0})])
         assert bench.heard() == []
 
@@ -201,7 +210,7 @@ class TestLevels:
         ]
 
     def test_exchange_takes_no_level(self, bench: Bench) -> None:
-        with pytest.raises(InstrumentError, match="confirmed, not only sent"):
+        with pytest.raises(InstrumentError, match=r"confirmed, not only sent"):
             bench.session.exchange([("level", {"level": -20.0})])
         assert bench.heard() == []
 
@@ -217,11 +226,11 @@ class TestLevels:
         ]  # fmt: skip
 
     def test_a_list_may_not_jump(self, bench: Bench) -> None:
-        with pytest.raises(InstrumentError, match="rises from -20 dBm to -10 dBm"):
+        with pytest.raises(InstrumentError, match=r"rises from -20 dBm to -10 dBm"):
             bench.session.confirm("levels", levels=[-20.0, -10.0])
-        with pytest.raises(InstrumentError, match="rises"):
+        with pytest.raises(InstrumentError, match=r"rises"):
             bench.session.confirm("levels", levels=[-10.0, -15.0, -20.0])
-        with pytest.raises(InstrumentError, match="ceiling"):
+        with pytest.raises(InstrumentError, match=r"ceiling"):
             bench.session.confirm("levels", levels=[4.0, 6.0])
         assert bench.heard() == []
         assert bench.session.confirm("levels", levels=[-20.0, -15.0]) == (-20.0, -15.0)
@@ -248,7 +257,7 @@ class TestComplaints:
         bench.session.confirm("frequency", frequency=2.2e9)
 
     def test_a_header_that_is_not_understood_is_explained(self, bench: Bench) -> None:
-        with pytest.raises(InstrumentError, match="-113.*SENS:NOTH"):
+        with pytest.raises(InstrumentError, match=r"-113.*SENS:NOTH"):
             bench.session.ask("unheard")
         assert bench.session.ask("output") is False
 
@@ -263,15 +272,15 @@ class TestComplaints:
         bench.instrument.answers["SENS:DATA?"] = b""
         bench.instrument.errors.append('-230,"Data corrupt or stale"')
         bench.instrument.receive = _only_error(bench.instrument)  # type: ignore[method-assign]
-        with pytest.raises(InstrumentError, match="-230"):
+        with pytest.raises(InstrumentError, match=r"-230"):
             bench.session.block("data", 4)
 
     def test_a_queue_that_is_never_empty(self, bench: Bench) -> None:
         bench.instrument.answers["SYST:ERR?"] = b'-350,"Queue overflow"'
         bench.instrument.receive = lambda message: b'-350,"Queue overflow"\n'  # type: ignore[method-assign]
-        with pytest.raises(InstrumentError, match="-350"):
+        with pytest.raises(InstrumentError, match=r"-350"):
             bench.session.send("sweep")
-        with pytest.raises(LinkError, match="never empty"):
+        with pytest.raises(LinkError, match=r"never empty"):
             bench.session.reopen()
 
 
@@ -368,38 +377,38 @@ class TestFailures:
     def test_an_instrument_that_always_answers_out_of_turn(self, bench: Bench) -> None:
         receive = bench.instrument.receive
         bench.instrument.receive = lambda message: b"7;" + receive(message)  # type: ignore[method-assign]
-        with pytest.raises(ReplyError, match="1 replies were expected, 2 came"):
+        with pytest.raises(ReplyError, match=r"1 replies were expected, 2 came"):
             bench.session.ask("output")
-        with pytest.raises(ReplyError, match="answers out of turn"):
+        with pytest.raises(ReplyError, match=r"answers out of turn"):
             bench.session.ask("output")
 
     @pytest.mark.parametrize("fault", [scripted.reset, scripted.lost])
     def test_a_broken_link(self, bench: Bench, fault: scripted.Fault) -> None:
         bench.fail(fault)
-        with pytest.raises(LinkError, match="the link broke at 'OUTP:STAT\\?") as caught:
+        with pytest.raises(LinkError, match=r"the link broke at 'OUTP:STAT\?") as caught:
             bench.session.ask("output")
         assert not isinstance(caught.value, NoAnswerError)
         assert caught.value.__cause__ is not None
 
     def test_garbage(self, bench: Bench) -> None:
         bench.fail(scripted.garbage)
-        with pytest.raises(ReplyError, match="garbled"):
+        with pytest.raises(ReplyError, match=r"garbled"):
             bench.session.ask("output")
         assert bench.session.suspect
 
     def test_the_wrong_number_of_replies(self, bench: Bench) -> None:
         bench.fail(lambda line, data: b'1;2;3;0,"No error"\n')
-        with pytest.raises(ReplyError, match="1 replies were expected, 3 came"):
+        with pytest.raises(ReplyError, match=r"1 replies were expected, 3 came"):
             bench.session.ask("output")
 
     def test_a_reply_of_another_kind(self, bench: Bench) -> None:
         bench.instrument.settings["OUTP:STAT"] = "MAYBE"
-        with pytest.raises(ReplyError, match="'MAYBE' is not a boolean"):
+        with pytest.raises(ReplyError, match=r"'MAYBE' is not a boolean"):
             bench.session.ask("output")
 
     def test_a_number_that_means_no_number(self, bench: Bench) -> None:
         bench.instrument.settings["SOUR:POW"] = "9.91E37"
-        with pytest.raises(ReplyError, match="no valid number"):
+        with pytest.raises(ReplyError, match=r"no valid number"):
             bench.session.ask("level")
 
     def test_control_c_leaves_the_link_suspect(self, bench: Bench) -> None:
@@ -415,7 +424,7 @@ class TestFailures:
             bench.session.ask("output")
         bench.library.instruments.clear()
         for _ in range(2):
-            with pytest.raises(LinkError, match="cannot be opened"):
+            with pytest.raises(LinkError, match=r"cannot be opened"):
                 bench.session.ask("output")
 
     def test_a_restarted_instrument_is_read_and_switched_off_and_nothing_else(self, bench: Bench) -> None:
@@ -432,7 +441,7 @@ class TestFailures:
             lambda: bench.session.confirm("level", level=-60.0),
             lambda: bench.session.block("data", 4),
         ):
-            with pytest.raises(InstrumentError, match="its settings are gone"):
+            with pytest.raises(InstrumentError, match=r"its settings are gone"):
                 attempt()
         assert bench.session.confirm("output", on=False) is False
         assert bench.session.ask("level") == -20.0
@@ -441,7 +450,7 @@ class TestFailures:
 
     @pytest.mark.parametrize("fault", scripted.FAULTS.values(), ids=scripted.FAULTS)
     def test_every_exchange_may_fail(self, bench: Bench, fault: scripted.Fault) -> None:
-        """Exchange n fails, for every n: one of our errors each time, and the next round finds everything as it should be."""
+        """Exchange n fails, for every n: one of our errors each time, and the next round finds all in order."""
         length = self._rounds(bench, None)
         for n in range(length):
             bench.instrument.settings["SOUR:POW"] = "-20"
@@ -473,11 +482,11 @@ class TestBus:
             bench.bus.open("meter", address_of("nowhere"), dialect(), clock=bench.clock)
 
     def test_an_address_that_is_none(self, bench: Bench) -> None:
-        with Bus("py") as bus, pytest.raises(LinkError, match="is not a VISA address"):
+        with Bus("py") as bus, pytest.raises(LinkError, match=r"is not a VISA address"):
             bus.open("meter", "192.0.2.23", dialect(), clock=bench.clock)
 
     def test_a_backend_that_is_none(self) -> None:
-        with pytest.raises(LinkError, match="VISA backend 'carrier-pigeon' cannot be used"):
+        with pytest.raises(LinkError, match=r"VISA backend 'carrier-pigeon' cannot be used"):
             Bus("carrier-pigeon")
 
     def test_sessions_close_before_the_manager(self, bench: Bench) -> None:
@@ -497,7 +506,7 @@ class TestBus:
 
     def test_a_closed_session_is_opened_by_nobody(self, bench: Bench) -> None:
         bench.session.close()
-        with pytest.raises(LinkError, match="closed"):
+        with pytest.raises(LinkError, match=r"closed"):
             bench.session.ask("output")
 
     def test_one_exchange_at_a_time(self, bench: Bench) -> None:
