@@ -12,75 +12,19 @@ What it keeps:
 
 from __future__ import annotations
 
-import threading
 from collections import deque
-from collections.abc import Callable, Sequence
-from contextlib import suppress
-from functools import partial
-from typing import Any, Protocol, TypeVar
+from collections.abc import Callable, Collection, Sequence
+from typing import Any
 
 from benchrun.contract.capture import FloatArray
 from benchrun.contract.clock import Clock
 from benchrun.contract.roles import Call, Identity, Value
-from benchrun.errors import BenchError, InstrumentError, LinkError, NoAnswerError, QuantityError, ReplyError
+from benchrun.errors import InstrumentError, QuantityError, ReplyError
 from benchrun.visa import levels, scpi
+from benchrun.visa.conversation import DEADLINE_S, EVENTS_QUERY, Conversation, Wire
 from benchrun.visa.dialect import Dialect
-from benchrun.visa.exchange import (
-    ERROR_QUERY,
-    Answer,
-    Exchange,
-    Use,
-    compose,
-    join,
-    read_values,
-    take_apart,
-    uses,
-)
-
-DEADLINE_S = 2.0
-#: Asks for the standard events, and the bit that says that the instrument was switched on (IEEE 488.2 11.5.1.1.2).
-EVENTS_QUERY = "*ESR?"
-POWER_ON = 1 << 7
-#: How long the error queue may take to say why an exchange was not answered.
-EXPLAIN_S = 0.5
-#: How long a query may take that only asks whether it is understood, and how long the error queue may then be waited
-#: for.
-PROBE_S = 0.25
-LONG_PROBE_S = 3.0
-#: Length of the shortest text behind a block, ;0,"" and a line feed; what this instrument says is learned.
-SHORTEST_TAIL = 6
-REMEMBERED = 64
-#: How often a link is opened anew before it is given up.
-REOPENINGS = 3
-#: Entries read from an error queue before it counts as never empty.
-LONGEST_QUEUE = 100
-
-
-T = TypeVar("T")
-
-
-class Wire(Protocol):
-    """Bytes to and from one resource."""
-
-    @property
-    def where(self) -> str:
-        """Name and address."""
-
-    name: str
-
-    def query(self, message: str, deadline_s: float) -> str:
-        """Write a message, return the line that answers it."""
-
-    def query_block(
-        self, message: str, payload_bytes: int, tail_bytes: int, deadline_s: float
-    ) -> tuple[memoryview | None, str]:
-        """Write a message, return the block that answers it and the text behind it."""
-
-    def reopen(self) -> None:
-        """Close, open and clear."""
-
-    def close(self) -> None:
-        """Close."""
+from benchrun.visa.exchange import ERROR_QUERY, Exchange, Use, compose, join, read_values, uses
+from benchrun.visa.probe import Probe
 
 
 class Session:
@@ -96,19 +40,12 @@ class Session:
         ramp_db: float | None = None,
         transcript: deque[Exchange] | None = None,
     ) -> None:
-        self.exchanges: deque[Exchange] = deque(maxlen=REMEMBERED) if transcript is None else transcript
-        self.suspect = False
-        self.restarted = False
-        self._watching = False
-        self._seen_ns = 0
-        self._tail_bytes = SHORTEST_TAIL
+        self._talk = Conversation(wire, clock, transcript)
         self._wire = wire
         self._dialect = dialect
-        self._clock = clock
         self._ceiling_dbm = ceiling_dbm
         self._ramp_db = ramp_db
-        self._lock = threading.RLock()
-        self._stands_dbm: dict[str, float] = {}
+        self._stands_dbm: dict[tuple[int, str], float] = {}
 
     @property
     def name(self) -> str:
@@ -118,7 +55,22 @@ class Session:
     @property
     def clock(self) -> Clock:
         """Clock to wait on."""
-        return self._clock
+        return self._talk.clock
+
+    @property
+    def exchanges(self) -> Collection[Exchange]:
+        """The last exchanges, oldest first."""
+        return self._talk.exchanges
+
+    @property
+    def suspect(self) -> bool:
+        """Whether the last exchange failed, so that the link is opened anew before the next."""
+        return self._talk.suspect
+
+    @property
+    def restarted(self) -> bool:
+        """Whether the instrument was switched off and on, so that nothing is set before it has been prepared."""
+        return self._talk.restarted
 
     def has(self, entry: str) -> bool:
         """Whether the dialect knows this entry."""
@@ -133,9 +85,9 @@ class Session:
         """Return the typed reply to a query and nothing else: the error queue is left as it is. Raises BenchError."""
         found = self._dialect[entry]
         message = self._unsent(lambda: found.ask_text(values))
-        with self._lock:
-            text = self._say(message, deadline_s or found.deadline_s or DEADLINE_S)
-            return self._understood(message, lambda: found.read(text))
+        with self._talk.lock:
+            text = self._talk.say(message, deadline_s or found.deadline_s or DEADLINE_S)
+            return self._talk.understood(message, lambda: found.read(text))
 
     def ask(self, entry: str, *, deadline_s: float | None = None, **values: Value) -> Any:
         """Return the typed reply to a query, and see that the error queue is empty. Raises BenchError."""
@@ -163,7 +115,7 @@ class Session:
         A single level is not taken here: confirm() raises it by the ramp and reads it back.
         """
         wanted = uses(self._dialect, sets)
-        with self._lock:
+        with self._talk.lock:
             self._fit_to_set(wanted)
             for use in wanted:
                 if self._checked_levels(use) and use.entry.ask:
@@ -180,7 +132,7 @@ class Session:
         if not calls:
             return ()
         wanted = uses(self._dialect, calls)
-        with self._lock:
+        with self._talk.lock:
             rising = [(use, self._checked_levels(use)) for use in wanted]
             self._fit_to_set(wanted)
             for use, several in rising:
@@ -195,98 +147,44 @@ class Session:
         """
         found = self._dialect[entry]
         message = self._unsent(lambda: join([found.ask_text(values), ERROR_QUERY]))
-        with self._lock:
+        with self._talk.lock:
             self._fit_to_set([Use(found, values)])
-            payload, text = self._say_block(message, 8 * count, deadline_s or found.deadline_s or DEADLINE_S)
-            self._answer(message, text)
+            payload, text = self._talk.say_block(message, 8 * count, deadline_s or found.deadline_s or DEADLINE_S)
+            self._talk.answer(message, text)
             if payload is None:
-                raise self._garbled(message, ReplyError(f"a block was expected, {text[:40]!r} came"))
-            return self._understood(message, lambda: scpi.parse_floats(payload, count))
+                raise self._talk.garbled(message, ReplyError(f"a block was expected, {text[:40]!r} came"))
+            return self._talk.understood(message, lambda: scpi.parse_floats(payload, count))
 
     def identify(self) -> Identity:
         """Ask *IDN? (and *OPT? where the dialect says so), and put aside what others left in the error queue."""
-        with self._lock:
-            text = self._say("*IDN?", DEADLINE_S)
-            maker, model, serial, firmware = self._understood("*IDN?", lambda: _four_fields(text))
-            options = self._say("*OPT?", DEADLINE_S) if self._dialect.options else ""
-            self._drain()
-            self._see_restart(self._say(EVENTS_QUERY, DEADLINE_S))
-            self.restarted = False
+        with self._talk.lock:
+            text = self._talk.say("*IDN?", DEADLINE_S)
+            maker, model, serial, firmware = self._talk.understood("*IDN?", lambda: _four_fields(text))
+            options = self._talk.say("*OPT?", DEADLINE_S) if self._dialect.options else ""
+            self._talk.drain()
+            self._talk.see_restart(self._talk.say(EVENTS_QUERY, DEADLINE_S))
+            self._talk.restarted = False
             return Identity(maker, model, serial, firmware, options.strip())
 
     def not_understood(self, entries: Sequence[str], *, enough: int | None = None) -> list[str]:
-        """Return those entries whose query the instrument does not take for one, at most `enough`; nothing is set.
-
-        Entries without a query form and those that answer in blocks are passed over. Only a command error (-199 to
-        -100, SCPI-1999 volume 2 chapter 21) or silence means no: a query that was understood may still have nothing to
-        tell. Raises LinkError where the link breaks.
-        """
-        found: list[str] = []
-        for name in entries:
-            if self._askable(name) and not self._understands([self._probe(name)], PROBE_S):
-                found.append(name)
-            if enough is not None and len(found) >= enough:
-                break
-        return found
+        """Return those entries whose query the instrument does not take for one; nothing is set (see probe.py)."""
+        return Probe(self._talk, self._dialect).not_understood(entries, enough)
 
     def understands_all(self, entries: Sequence[str]) -> bool:
-        """Whether not_understood() would find nothing, asked in one message. Raises LinkError."""
-        asks = [self._probe(name) for name in entries if self._askable(name)]
-        deadline_s = sum(use.entry.deadline_s or PROBE_S for use in asks)
-        return not asks or self._understands(asks, min(deadline_s, LONG_PROBE_S))
-
-    def _askable(self, name: str) -> bool:
-        entry = self._dialect.entries.get(name)
-        return entry is not None and entry.ask is not None and entry.reply is not None and entry.reply.kind != "block"
-
-    def _probe(self, name: str) -> Use:
-        """Return an entry with 1 for each of its channels."""
-        entry = self._dialect[name]
-        return Use(entry, dict.fromkeys(entry.ask.names if entry.ask else (), 1))
-
-    def _understands(self, asks: Sequence[Use], deadline_s: float) -> bool:
-        """Whether queries are answered, or at least bring no command error in the time a slow one may need."""
-        message = self._unsent(lambda: compose([], asks))
-        with self._lock:
-            try:
-                entries = [take_apart(self._say(message, deadline_s, explain=False)).error]
-            except (NoAnswerError, ReplyError):
-                entries = []
-            if not entries or entries[0].number:
-                self.suspect = True
-                try:
-                    entries += self._queue(LONG_PROBE_S)
-                except NoAnswerError:
-                    return False
-                except ReplyError:
-                    return True  # the answer itself came, too late
-            return not any(-200 < one.number <= -100 for one in entries)
+        """Whether not_understood() would find nothing, asked in one message."""
+        return Probe(self._talk, self._dialect).understands_all(entries)
 
     def reopen(self) -> None:
-        """Open the link anew, clear it, and forget what was believed of the instrument.
-
-        Raises LinkError, ReplyError.
-        """
-        with self._lock:
-            self.suspect = True
-            self._stands_dbm.clear()
-            for _ in range(REOPENINGS):
-                self._wire.reopen()
-                if self._synchronised():
-                    self._see_restart(self._wire.query(EVENTS_QUERY, DEADLINE_S))
-                    self.suspect = False
-                    return
-            raise ReplyError(
-                f"{self._wire.where}: answers out of turn, even on a fresh link. Check that nobody else talks to it"
-            )
+        """Open the link anew, clear it, and forget what was known of the instrument. Raises BenchError."""
+        self._talk.reopen()
 
     def accept_restart(self) -> None:
         """Take settings again: whoever calls this prepares the instrument next."""
-        self.restarted = False
+        self._talk.restarted = False
 
     def close(self) -> None:
         """Close the link; twice does no harm."""
-        with self._lock:
+        with self._talk.lock:
             self._wire.close()
 
     # Levels
@@ -314,17 +212,11 @@ class Session:
         for level in levels.rise(self._stands_dbm[key], target_dbm, self._ramp_db):
             self._set_and_read_back([Use(use.entry, {**use.values, use.entry.level: level})], deadline_s)
 
-    @staticmethod
-    def _level_key(use: Use) -> str:
-        return use.entry.ask_text(use.values)
+    def _level_key(self, use: Use) -> tuple[int, str]:
+        """Key under which a level that was read back is known; each opening of the link begins with nothing known."""
+        return self._talk.openings, use.entry.ask_text(use.values)
 
     # Exchanges
-
-    def _now_ns(self) -> int:
-        """Return the bench time; the last known where the clock is out of reach (a served rehearsal's is remote)."""
-        with suppress(OSError):
-            self._seen_ns = self._clock.now_ns()
-        return self._seen_ns
 
     def _set_and_read_back(self, wanted: Sequence[Use], deadline_s: float | None) -> tuple[Any, ...]:
         stands = self._run(wanted, wanted, deadline_s)
@@ -343,10 +235,10 @@ class Session:
         """Do one exchange and return the typed replies; the error queue is empty afterwards."""
         message = self._unsent(lambda: compose(sets, asks))
         deadline_s = deadline_s or max(use.entry.deadline_s or DEADLINE_S for use in (*sets, *asks))
-        with self._lock:
-            text = self._say(message, deadline_s)
-            answer = self._answer(message, text)
-            return self._understood(message, lambda: read_values(answer, bool(sets), asks))
+        with self._talk.lock:
+            text = self._talk.say(message, deadline_s)
+            answer = self._talk.answer(message, text)
+            return self._talk.understood(message, lambda: read_values(answer, bool(sets), asks))
 
     def _unsent(self, compose_message: Callable[[], str]) -> str:
         """Return a message composed from values; a bad value is refused here."""
@@ -355,150 +247,15 @@ class Session:
         except (QuantityError, InstrumentError) as error:
             raise InstrumentError(f"{self._wire.where}: {error}. Nothing was sent") from None
 
-    def _say(self, message: str, deadline_s: float, *, explain: bool = True) -> str:
-        """Send a message and return its answer; the link is suspect if that fails."""
-        if self.suspect:
-            self.reopen()
-        started_ns = self._now_ns()
-        try:
-            text = self._wire.query(message, deadline_s)
-        except BaseException as error:
-            self._failed(started_ns, message, error)
-            if explain and isinstance(error, NoAnswerError):
-                raise self._explained(error, message) from error
-            raise
-        self.exchanges.append(Exchange(started_ns, message, text, ""))
-        return text
-
-    def _say_block(self, message: str, payload_bytes: int, deadline_s: float) -> tuple[memoryview | None, str]:
-        if self.suspect:
-            self.reopen()
-        started_ns = self._now_ns()
-        try:
-            payload, text = self._wire.query_block(message, payload_bytes, self._tail_bytes, deadline_s)
-        except BaseException as error:
-            self._failed(started_ns, message, error)
-            if isinstance(error, NoAnswerError):
-                raise self._explained(error, message) from error
-            raise
-        received = text if payload is None else f"(block of {len(payload)} bytes){text}"
-        self.exchanges.append(Exchange(started_ns, message, received, ""))
-        return payload, text.removeprefix(";")
-
-    def _failed(self, started_ns: int, message: str, error: BaseException) -> None:
-        self.suspect = True
-        self.exchanges.append(Exchange(started_ns, message, "", str(error) or type(error).__name__))
-
-    def _explained(self, error: BenchError, message: str) -> BenchError:
-        """Return why there was no whole answer, where the error queue says so: a command error ends a message.
-
-        Query errors (-499 to -400) tell only of the answer that did not come, or of this question about it.
-        """
-        try:
-            entries = self._queue()
-        except BenchError:
-            return error
-        telling = [entry for entry in entries if not -500 < entry.number <= -400]
-        return self._complaint(telling, message) if telling else error
-
-    def _queue(self, deadline_s: float = EXPLAIN_S) -> list[scpi.ErrorEntry]:
-        """Read the error queue of a link as it is, until it is empty."""
-        entries: list[scpi.ErrorEntry] = []
-        while len(entries) < LONGEST_QUEUE:
-            entry = scpi.parse_error(self._wire.query(ERROR_QUERY, deadline_s))
-            if entry.number == 0:
-                break
-            entries.append(entry)
-        return entries
-
-    # Errors
-
-    def _answer(self, message: str, text: str) -> Answer:
-        """Take an answer apart. Raises InstrumentError for what the error queue holds, ReplyError for nonsense."""
-        try:
-            answer = take_apart(text)
-        except ReplyError as error:
-            raise self._explained(self._garbled(message, error), message) from error
-        if answer.error.number:
-            raise self._complaint(self._rest_of_queue(answer.error), message)
-        self._tail_bytes = len(text) - text.rfind(";") + 1
-        return answer
-
-    def _understood(self, message: str, read: Callable[[], T]) -> T:
-        """Return what `read` makes of an answer; an answer that makes no sense leaves the link suspect."""
-        try:
-            return read()
-        except ReplyError as error:
-            raise self._garbled(message, error) from error
-
-    def _garbled(self, message: str, error: ReplyError) -> ReplyError:
-        full = ReplyError(f"{self._wire.where}: answer to '{message}': {error}")
-        self._failed(self._now_ns(), message, full)
-        return full
-
-    def _complaint(self, entries: Sequence[scpi.ErrorEntry], message: str) -> InstrumentError:
-        """Return the entries of the error queue as one error."""
-        listed = "; ".join(map(str, entries))
-        error = InstrumentError(
-            f"{self._wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual"
-        )
-        self.exchanges.append(Exchange(self._now_ns(), message, listed, str(error)))
-        return error
-
-    def _rest_of_queue(self, first: scpi.ErrorEntry) -> list[scpi.ErrorEntry]:
-        """Empty the error queue and return all of it, or what could be read of it."""
-        try:
-            return [first, *self._drain()]
-        except BenchError:
-            return [first]
-
-    def _drain(self) -> list[scpi.ErrorEntry]:
-        """Read the error queue until it is empty and return what was in it."""
-        entries: list[scpi.ErrorEntry] = []
-        while len(entries) < LONGEST_QUEUE:
-            text = self._say(ERROR_QUERY, DEADLINE_S)
-            entry = self._understood(ERROR_QUERY, partial(scpi.parse_error, text))
-            if entry.number == 0:
-                break
-            entries.append(entry)
-        return entries
-
-    def _see_restart(self, text: str) -> None:
-        """Note whether the instrument was switched on since this was last asked (PON, IEEE 488.2 11.5.1.1.2).
-
-        The first answer tells of the time before this session, and only starts the watch.
-        """
-        events = self._understood(EVENTS_QUERY, partial(scpi.parse_number, text))
-        self.restarted = self.restarted or (self._watching and bool(int(events) & POWER_ON))
-        self._watching = True
-
     def _fit_to_set(self, wanted: Sequence[Use]) -> None:
         """Open a suspect link anew; raise InstrumentError where settings are lost, unless these only switch off."""
-        if self.suspect:
+        if self._talk.suspect:
             self.reopen()
-        if self.restarted and not all(use.entry.switches_off(use.values) for use in wanted):
+        if self._talk.restarted and not all(use.entry.switches_off(use.values) for use in wanted):
             raise InstrumentError(
                 f"{self._wire.where}: was switched off and on, or restarted by itself, so its settings are gone. "
                 "Nothing more is set until the bench has been prepared again"
             )
-
-    def _synchronised(self) -> bool:
-        """Read the error queue of a fresh link until it is empty; False where something else answers.
-
-        What was in the queue belongs to the exchange that failed, and goes to the transcript only.
-        """
-        for _ in range(LONGEST_QUEUE):
-            started_ns = self._now_ns()
-            text = self._wire.query(ERROR_QUERY, DEADLINE_S)
-            self.exchanges.append(Exchange(started_ns, ERROR_QUERY, text, "after opening the link anew"))
-            try:
-                if scpi.parse_error(text).number == 0:
-                    return True
-            except ReplyError:
-                return False
-        raise LinkError(
-            f"{self._wire.where}: its error queue is never empty. Switch it off and on, with RF and drain off"
-        )
 
 
 def _four_fields(text: str) -> tuple[str, str, str, str]:

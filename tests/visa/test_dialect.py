@@ -11,9 +11,8 @@ from hypothesis import strategies as st
 from pydantic import ValidationError
 
 from benchrun.errors import InstrumentError, QuantityError, ReplyError
+from benchrun.visa.carried import SUFFIXES, Carried
 from benchrun.visa.dialect import (
-    SUFFIXES,
-    Carried,
     DialectText,
     Entry,
     EntryText,
