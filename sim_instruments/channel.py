@@ -1,8 +1,8 @@
 """The rehearsal channel: owns a served bench's virtual time and carries the operator's connections.
 
 It never tells the truth about the world. One JSON object on each line, over TCP on loopback. Requests:
-{"do": "hello", "real_time": false} starts the world anew at time 0; "now"; "sleep" with duration_ns; "align" with
-start_ns; "connect" with plane and what. Each is answered by {"now_ns": ...} or {"error": "..."}.
+{"do": "hello", "real_time": false} starts the world anew at time 0 and says its seed; "now"; "sleep" with duration_ns;
+"align" with start_ns; "connect" with plane and what. Each is answered by {"now_ns": ...} or {"error": "..."}.
 """
 
 from __future__ import annotations
@@ -45,15 +45,16 @@ class ChannelServer:
 
     def _answer(self, line: bytes) -> dict[str, Any]:
         try:
-            self._do(json.loads(line))
+            said = self._do(json.loads(line))
         except (ValueError, KeyError, TypeError, AttributeError, RecursionError) as error:
             return {"error": f"{type(error).__name__}: {error}"[:500]}
-        return {"now_ns": self._clock.now_ns()}
+        return {"now_ns": self._clock.now_ns(), **said}
 
-    def _do(self, request: Mapping[str, Any]) -> None:
+    def _do(self, request: Mapping[str, Any]) -> Mapping[str, int]:
         match request.get("do"):
             case "hello":
                 self._restart(real_time=bool(request.get("real_time", False)))
+                return {"seed": self._rack.seed}
             case "now":
                 pass
             case "sleep":
@@ -64,6 +65,7 @@ class ChannelServer:
                 self._rack.connect(str(request["plane"]), str(request["what"]))
             case other:
                 raise ValueError(f"there is no request {other!r:.40}")
+        return {}
 
     def _restart(self, *, real_time: bool) -> None:
         with self._rack.lock:
@@ -93,7 +95,7 @@ class ChannelRehearsal:
         self._lines: BinaryIO = self._connection.makefile("rb")
         self._real_time = real_time
         self.clock = ChannelClock(self)
-        self.request({"do": "hello", "real_time": real_time})
+        self.seed = int(self._said({"do": "hello", "real_time": real_time})["seed"])
 
     @property
     def addresses(self) -> Mapping[str, str]:
@@ -111,16 +113,19 @@ class ChannelRehearsal:
 
     def request(self, request: Mapping[str, Any], *, waits_s: float = 0.0) -> int:
         """Return the virtual time after a request. Raises ValueError if it is refused, OSError if the channel broke."""
+        return int(self._said(request, waits_s)["now_ns"])
+
+    def _said(self, request: Mapping[str, Any], waits_s: float = 0.0) -> Mapping[str, Any]:
         with self._lock:
             self._connection.settimeout(_ANSWER_S + (waits_s if self._real_time else 0.0))
             self._connection.sendall(json.dumps(dict(request)).encode() + b"\n")
             line = self._lines.readline(LONGEST_LINE)
         if not line.endswith(b"\n"):
             raise ConnectionError("the rehearsal channel was closed by the simulated bench")
-        answer = json.loads(line)
+        answer: Mapping[str, Any] = json.loads(line)
         if "error" in answer:
             raise ValueError(f"the simulated bench refused {request.get('do')}: {answer['error']}")
-        return int(answer["now_ns"])
+        return answer
 
 
 class ChannelClock:

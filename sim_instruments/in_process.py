@@ -17,6 +17,7 @@ class InProcessRehearsal:
 
     def __init__(self, wiring: Mapping[str, Any], *, seed: int, real_time: bool = False) -> None:
         self.rack = Rack(wiring, seed=seed, real_time=real_time)
+        self.seed = seed
         self.faults = self.rack.faults
         self.clock = VirtualClock(self.rack)
         self.visa_library: SimulatedVisaLibrary = library(self.rack)

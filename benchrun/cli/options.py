@@ -18,14 +18,18 @@ recipe_argument = click.argument("recipe", type=FILE)
 run_argument = click.argument("run", type=RUN)
 bench_option = click.option("--bench", type=FILE, help="Use this bench file in place of the recipe's.")
 json_option = click.option("--json", "as_json", is_flag=True, help="Print JSON, for scripts.")
-seed_option = click.option(
-    "--seed",
-    type=click.IntRange(min=0),
-    default=1,
-    show_default=True,
-    metavar="N",
-    help="The same seed gives the same readings.",
-)
+
+
+def seed_option(default: int | None, shown: str) -> Callable[[Function], Function]:
+    """Return the option --seed N; `shown` is the default as its help says it."""
+    return click.option(
+        "--seed",
+        type=click.IntRange(min=0),
+        default=default,
+        show_default=shown,
+        metavar="N",
+        help="The same seed gives the same readings.",
+    )
 
 
 def to_option(help_text: str) -> Callable[[Function], Function]:

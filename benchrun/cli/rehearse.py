@@ -13,11 +13,11 @@ from benchrun.cli.options import bench_option, calibration_option, recipe_argume
 @recipe_argument
 @to_option("Make the run folder in this folder.")
 @bench_option
-@seed_option
+@seed_option(None, "that of a served bench, else 1")
 @click.option("--real-time", is_flag=True, help="Let bench time run at the speed of the clock on the wall.")
 @calibration_option
 def command(
-    recipe: Path, to: Path, bench: Path | None, seed: int, real_time: bool, calibrations: dict[str, Path]
+    recipe: Path, to: Path, bench: Path | None, seed: int | None, real_time: bool, calibrations: dict[str, Path]
 ) -> int:
     """Rehearse a recipe on simulated instruments.
 

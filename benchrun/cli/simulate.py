@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
 @click.command()
 @click.argument("bench", type=FILE)
-@seed_option
+@seed_option(1, "1")
 @click.option("--write-bench", type=FILE, help="Write a bench file that points at the simulated instruments.")
 def command(bench: Path, seed: int, write_bench: Path | None) -> int:
     """Serve simulated instruments for BENCH until stopped.

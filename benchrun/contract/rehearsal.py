@@ -18,6 +18,10 @@ class Rehearsal(Protocol):
         """The world's virtual time."""
 
     @property
+    def seed(self) -> int:
+        """Seed of the world."""
+
+    @property
     def visa_library(self) -> Any:
         """A pyvisa VisaLibraryBase for ResourceManager, or None where the bench is reached over the network."""
 

@@ -13,7 +13,7 @@ from benchrun.acquire.prompts import RehearsalPrompter
 from benchrun.archive import open_archive
 from benchrun.contract.clock import Clock
 from benchrun.contract.rehearsal import ENTRY_POINT_GROUP, Rehearsal, RehearsalPlugin
-from benchrun.errors import CalibrationError, FileProblemsError, LinkError, PluginError, Problem
+from benchrun.errors import CalibrationError, FileProblemsError, InputError, LinkError, PluginError, Problem
 from benchrun.flow.inputs import Inputs, absent_recipes, load_inputs
 from benchrun.flow.known import Made, newest
 from benchrun.flow.measure import Setting, find_calibrations, given_calibrations, measure, prepare
@@ -22,6 +22,7 @@ from benchrun.flow.result import RunResult
 
 #: A recipe that uses calibrations begins this long after the last of them ended, in bench time.
 PAUSE_NS = 600_000_000_000
+DEFAULT_SEED = 1
 NOTE = "Simulated instruments, virtual time. Nothing real is touched."
 
 
@@ -51,7 +52,7 @@ def rehearse(
     to: Path,
     *,
     bench: Path | None = None,
-    seed: int = 1,
+    seed: int | None = None,
     real_time: bool = False,
     calibrations: Mapping[str, Path] | None = None,
     listener: Progress,
@@ -59,13 +60,15 @@ def rehearse(
 ) -> RunResult:
     """Rehearse a recipe, and first what makes the calibrations that it uses where they are absent.
 
-    `wanted_by` are the recipes whose calibration this one makes. Raises BenchrunError.
+    Without a seed it is that of a served bench, else 1; `wanted_by` are the recipes whose calibration this one makes.
+    Raises BenchrunError.
     """
     _require_no_circle(recipe, wanted_by)
     inputs = load_inputs(recipe, bench)
     if problems := absent_recipes(inputs, calibrations or {}):
         raise FileProblemsError(problems)
     plan(inputs, {})  # mistakes that show when values meet the bench come before any calibration is rehearsed for them
+    seed = _seed(inputs, seed)
     given_calibrations(inputs, origin_of(seed), calibrations or {})
     _make_absent(inputs, to, bench, seed, real_time, calibrations or {}, listener, wanted_by)
     made = find_calibrations(inputs, to, origin_of(seed), calibrations or {})
@@ -86,6 +89,21 @@ def rehearse(
             start_ns=start_ns,
         )
         return measure(inputs, schedule, made, setting)
+
+
+def _seed(inputs: Inputs, asked: int | None) -> int:
+    """Return the seed to rehearse with. Raises InputError where a served bench has another one than was asked for."""
+    channel = inputs.bench.rehearsal_channel
+    if channel is None:
+        return DEFAULT_SEED if asked is None else asked
+    with rehearsal_of(inputs, asked, real_time=False) as world:
+        served = world.seed
+    if asked not in (None, served):
+        raise InputError(
+            f"--seed {asked}: the bench that {inputs.bench.path} points at is simulated with seed {served}. "
+            f"Leave --seed out, or serve it again: `benchrun simulate --seed {asked}`."
+        )
+    return served
 
 
 def _require_no_circle(recipe: Path, wanted_by: tuple[Path, ...]) -> None:
@@ -121,7 +139,7 @@ def _make_absent(
 
 
 @contextmanager
-def rehearsal_of(inputs: Inputs, seed: int, real_time: bool) -> Iterator[Rehearsal]:
+def rehearsal_of(inputs: Inputs, seed: int | None, real_time: bool) -> Iterator[Rehearsal]:
     """Open the simulated bench: in this process, or the served one that the bench file points at."""
     channel = inputs.bench.rehearsal_channel
     try:
@@ -141,10 +159,11 @@ def rehearsal_of(inputs: Inputs, seed: int, real_time: bool) -> Iterator[Rehears
         world.close()
 
 
-def _open(plugin: RehearsalPlugin, inputs: Inputs, channel: str | None, seed: int, real_time: bool) -> Rehearsal:
+def _open(plugin: RehearsalPlugin, inputs: Inputs, channel: str | None, seed: int | None, real_time: bool) -> Rehearsal:
     if channel is not None:
         return plugin.open_channel(channel, real_time=real_time)
-    return plugin.open_in_process(inputs.bench.wiring(inputs.kit), seed=seed, real_time=real_time)
+    wiring = inputs.bench.wiring(inputs.kit)
+    return plugin.open_in_process(wiring, seed=DEFAULT_SEED if seed is None else seed, real_time=real_time)
 
 
 def _start_ns(made: list[Made]) -> int:

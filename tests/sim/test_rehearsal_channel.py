@@ -15,6 +15,8 @@ from benchrun_sim.servers import ServedBench
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+from tests.sim.simulated_bench import balloon_wiring
+
 MS = 1_000_000
 
 
@@ -43,6 +45,15 @@ def test_time(channel: ChannelRehearsal) -> None:
 def test_it_offers_no_library_and_no_addresses(channel: ChannelRehearsal) -> None:
     assert channel.visa_library is None
     assert channel.addresses == {}
+
+
+def test_it_says_its_seed(channel: ChannelRehearsal) -> None:
+    assert channel.seed == 1
+    served = benchrun_sim.serve(balloon_wiring(), seed=4)
+    other = benchrun_sim.open_channel(served.channel)
+    assert other.seed == benchrun_sim.open_in_process(balloon_wiring(), seed=4).seed == 4
+    other.close()
+    served.close()
 
 
 def test_joining_starts_anew(served: ServedBench, channel: ChannelRehearsal) -> None:
@@ -95,8 +106,6 @@ def test_nobody_there() -> None:
 
 
 def test_a_bench_that_goes_away() -> None:
-    from tests.sim.simulated_bench import balloon_wiring
-
     served = benchrun_sim.serve(balloon_wiring(), seed=1)
     channel = benchrun_sim.open_channel(served.channel)
     served.close()
@@ -133,5 +142,5 @@ def test_a_line_without_end_is_cut_off(served: ServedBench, channel: ChannelRehe
     st.dictionaries(st.sampled_from(["do", "plane", "what", "duration_ns", "start_ns", "truth"]), st.text(max_size=8))
 )
 @settings(max_examples=50, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
-def test_no_request_tells_more_than_the_time(served: ServedBench, request_: dict[str, str]) -> None:
-    assert set(ask(served, json.dumps(request_).encode())) <= {"now_ns", "error"}
+def test_no_request_tells_more_than_time_and_seed(served: ServedBench, request_: dict[str, str]) -> None:
+    assert set(ask(served, json.dumps(request_).encode())) <= {"now_ns", "error", "seed"}
