@@ -69,7 +69,7 @@ def _comma(text: str, _kind: Kind) -> str:
 
 def _bare_point(text: str, _kind: Kind) -> str:
     found = _BARE_POINT.fullmatch(text)
-    if not found or not found["whole"] + found["decimals"]:
+    if not found or bool(found["whole"]) == bool(found["decimals"]):
         return ""
     decimals = f".{found['decimals']}" if found["decimals"] else ""
     meant = f"{found['sign']}{found['whole'] or '0'}{decimals}{_spaced(found['unit'])}"

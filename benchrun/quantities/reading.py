@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+from collections.abc import Mapping
 from decimal import Context, Decimal, localcontext
 
 from benchrun.contract.kinds import Kind
@@ -27,8 +28,7 @@ def parse(text: str | float, kind: Kind) -> float:
     """
     if kind == "switch":
         return _switch(text)
-    if isinstance(text, bool) or not isinstance(text, str | int | float):
-        raise QuantityError(f"{_shown(text)} is not {a(kind)}; write it like {example(kind)}")
+    _is_text_or_number(text, kind)
     if kind in BARE:
         return _bare(text, kind)
     if not isinstance(text, str):
@@ -36,8 +36,16 @@ def parse(text: str | float, kind: Kind) -> float:
     return _with_unit(text.strip(" "), kind)
 
 
-def _shown(value: object) -> str:
-    return "nothing" if value is None else f"'{value}'"
+def _is_text_or_number(given: object, kind: Kind | None) -> None:
+    what, like = (a(kind), example(kind)) if kind else ("a quantity", example("frequency"))
+    if given is None:
+        raise QuantityError(f"{what} is missing here; it is written like {like}")
+    if isinstance(given, Mapping):
+        reference = f'; a reference is written in quotes: "{{{next(iter(given))}}}"' if len(given) == 1 else ""
+        raise QuantityError(f"{what} is expected here, not a mapping{reference}")
+    if isinstance(given, bool) or not isinstance(given, str | int | float):
+        shown = "a list" if isinstance(given, list | tuple) else f"'{given}'"
+        raise QuantityError(f"{what} is expected here, like {like}, not {shown}")
 
 
 def _switch(text: object) -> float:
@@ -45,7 +53,7 @@ def _switch(text: object) -> float:
         return float(text)
     if text in ("on", "off"):
         return float(text == "on")
-    raise QuantityError(f"{_shown(text)} is neither on nor off")
+    raise QuantityError(f"'{text}' is neither on nor off")
 
 
 def _bare(text: str | float, kind: Kind) -> float:
@@ -112,8 +120,7 @@ def kind_of(text: str | float) -> Kind:
 
     Raises QuantityError where it is no quantity, or no kind has that unit.
     """
-    if isinstance(text, bool) or not isinstance(text, str | int | float):
-        raise QuantityError(f"{_shown(text)} is not a quantity; write it like {example('frequency')}")
+    _is_text_or_number(text, None)
     if not isinstance(text, str):
         return "number"
     number, unit = _taken_apart(text.strip(" "), "number")

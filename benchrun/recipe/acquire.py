@@ -25,6 +25,10 @@ class AcquireReader:
 
     def __init__(self, source: Source, bench: Bench | None, steps: Mapping[str, StepSpec]) -> None:
         self.problems: list[Problem] = []
+        #: Names of all readings, those of steps and sweeps with mistakes as well.
+        self.readings: dict[str, None] = {}
+        #: Whether steps were left out, so that what they would have done is not known.
+        self.incomplete = False
         self._source = source
         self._steps = steps
         self._settables: dict[str, Settable] | None = bench.settables() if bench else None
@@ -33,6 +37,7 @@ class AcquireReader:
     def items(self, given: Any, path: Path_, swept: Swept | None = None) -> tuple[Step | Sweep, ...]:
         """Read a list of steps."""
         if not isinstance(given, list):
+            self.incomplete = True
             if given is not None and path != ("acquire",):
                 self._tell(path, "a list of steps is expected here, each beginning with a hyphen.")
             return ()
@@ -42,11 +47,13 @@ class AcquireReader:
     def _item(self, given: Any, path: Path_, swept: Swept) -> Step | Sweep | None:
         if not isinstance(given, Placed) or not given:
             known = ", ".join(self._known())
+            self.incomplete = True
             self._tell(path, f"a step is one key with its values, such as `- settle: 20 ms`; known: {known}.")
             return None
         if SWEEP in given:
             return self._sweep(given, path, swept)
         if len(given) > 1:
+            self.incomplete = True
             message = f"one step has one key; this one has {', '.join(given)}. Begin each with a hyphen of its own."
             self._tell(path, message)
             return None
@@ -59,7 +66,10 @@ class AcquireReader:
         here, spec = (*path, key), self._steps.get(key)
         if spec is None:
             self._tell(here, no_such("step", key, self._known()), at_key=True)
+            self.incomplete = True
             return None
+        if isinstance(given[key], Placed) and isinstance(name := given[key].get("name"), str):
+            self.readings[name] = None
         model, problems = check(self._source, spec.model, here, given[key])
         self.problems += problems
         self._check_references(given[key], here, swept)
@@ -90,7 +100,7 @@ class AcquireReader:
             total = parse_sum(str(value))
             total.evaluate(dict.fromkeys(total.references, 0.0), settable.kind)
         except QuantityError as error:
-            self._tell(path, f"{error}.")
+            self._tell(path, str(error))
             return
         for name in total.references:
             kind = swept.get(name)
@@ -115,9 +125,12 @@ class AcquireReader:
         if not isinstance(over, Placed) or len(over) != 1:
             example = "{drive: {from: 14 dBm, to: 30 dBm, step: 1 dB}}"
             self._tell(here, f"a sweep goes over one name, such as {example}; nest sweeps for more.")
+            self.incomplete = True
             return None
         if not given.get(DO):
             self._tell(here, f"this sweep does nothing: `{DO}` with a list of steps is missing.", at_key=True)
+            self.incomplete = True
+            return None
         name = next(iter(over))
         axis = self._axis(name, over[name], (*here, name), given.get(DO), swept)
         around = {**swept, name: axis.kind if axis else None}
@@ -134,7 +147,7 @@ class AcquireReader:
             return read_axis(name, given, settable.kind if settable else None, settable=settable is not None)
         except AxisProblemsError as error:
             for within, message in error.found:
-                self._tell((*path, *within), f"{message}.".replace("?.", "?"))
+                self._tell((*path, *within), message)
         return None
 
     def _not_sweepable(self, name: str) -> str:
@@ -163,4 +176,9 @@ def _texts(given: Any, path: Path_) -> Iterator[tuple[Path_, str]]:
 
 
 def _refers_to(name: str, given: Any) -> bool:
-    return any(name in references_in(text) for _, text in _texts(given, ()))
+    """Whether a part of a file refers to a name, in quotes as it should or without."""
+    if isinstance(given, Mapping):
+        return dict(given) == {name: None} or any(_refers_to(name, value) for value in given.values())
+    if isinstance(given, list):
+        return any(_refers_to(name, value) for value in given)
+    return isinstance(given, str) and name in references_in(given)

@@ -89,8 +89,11 @@ def read_axis(name: str, given: Any, kind: Kind | None, *, settable: bool) -> Ax
         return Axis(*_range(name, given, kind), settable)
     if not isinstance(given, list) or not given:
         raise AxisProblemsError([((), f"a sweep goes over {_SHAPES}")])
-    if kind is None and all(isinstance(value, str) and _WORD.fullmatch(value) for value in given):
-        return Axis(name, "text", tuple(given), settable)
+    words = [value for value in given if isinstance(value, str) and _WORD.fullmatch(value)]
+    if kind is None and len(words) == len(given):
+        return Axis(name, "text", tuple(words), settable)
+    if kind is None and words:
+        raise AxisProblemsError([((), "a sweep goes over words or over quantities, not over both")])
     found, values = _read_all(dict(enumerate(given)), kind)
     return Axis(name, found, tuple(values.values()), settable)
 
@@ -98,16 +101,23 @@ def read_axis(name: str, given: Any, kind: Kind | None, *, settable: bool) -> Ax
 def _read_all(given: Mapping[Any, Any], kind: Kind | None) -> tuple[Kind, dict[Any, float]]:
     """Read several quantities of one kind, by key; the kind is that of the first one that has one."""
     problems: list[tuple[Path_, str]] = []
-    values: dict[Any, float] = {}
+    kinds: dict[Any, Kind] = {}
     for key, text in given.items():
         try:
-            kind = kind or kind_of(text)
-            values[key] = parse(text, kind)
+            kinds[key] = kind or kind_of(text)
         except QuantityError as error:
             problems.append(((key,), str(error)))
-    if problems or kind is None:
+    # One that lacks its unit is told by the kind of those that have one.
+    found: Kind = next((one for one in kinds.values() if one != "number"), "number")
+    values: dict[Any, float] = {}
+    for key in kinds:
+        try:
+            values[key] = parse(given[key], found)
+        except QuantityError as error:
+            problems.append(((key,), str(error)))
+    if problems:
         raise AxisProblemsError(problems)
-    return kind, values
+    return found, values
 
 
 def _range(name: str, given: Mapping[str, Any], kind: Kind | None) -> tuple[str, Kind, Evenly]:
@@ -159,7 +169,7 @@ def _steps(given: Mapping[str, Any], kind: Kind, ends: Mapping[str, float]) -> i
     if steps >= MOST_VALUES:
         raise AxisProblemsError([(("step",), f"{steps + 1:.0f} points; a sweep has 1 to {MOST_VALUES}")])
     if abs(steps - round(steps)) > STEP_TOLERANCE:
-        last = show(ends["from"] + (step if span > 0 else -step) * int(steps), kind, digits=6)
+        last = show(round(ends["from"] + (step if span > 0 else -step) * int(steps), 9), kind)
         message = f"steps of {given['step']} from {given['from']} reach {last}, not {given['to']}: change one of them"
         raise AxisProblemsError([(("step",), message)])
     return round(steps) + 1

@@ -2,34 +2,33 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Collection, Iterator, Sequence
 
 from benchrun.bench import Bench
 from benchrun.errors import Problem
 from benchrun.recipe.entries import OF_READINGS, Calibrate, Correct, HotMatch, LevelChain, OnePort
 from benchrun.recipe.messages import no_such
-from benchrun.recipe.model import Entry, RecipeFile, Step, Sweep, steps_of
+from benchrun.recipe.model import Entry, RecipeFile
 from benchrun.yaml_source import Source
 
 
 def problems_between(
     source: Source,
     file: RecipeFile,
-    acquire: Sequence[Step | Sweep],
     derive: Sequence[Entry],
+    readings: Collection[str] | None,
     bench: Bench | None,
 ) -> list[Problem]:
-    """Return every mistake between the parts of a recipe."""
+    """Return every mistake between the parts of a recipe; `readings` are the names of all that are taken, if known."""
     return [
-        *_readings(source, acquire, derive),
-        *_corrected(source, derive),
+        *(() if readings is None else _readings(source, readings, derive)),
+        *(_corrected(source, derive) if len(derive) == len(file.derive) else ()),
         *_calibrations(source, file, derive),
         *_made(source, file, derive, bench),
     ]
 
 
-def _readings(source: Source, acquire: Sequence[Step | Sweep], derive: Sequence[Entry]) -> Iterator[Problem]:
-    taken = {name: None for step in steps_of(acquire) if isinstance(name := getattr(step.model, "name", None), str)}
+def _readings(source: Source, taken: Collection[str], derive: Sequence[Entry]) -> Iterator[Problem]:
     for entry in derive:
         for field in OF_READINGS:
             name = getattr(entry.model, field, None)

@@ -42,7 +42,7 @@ def load_recipe(path: Path, bench: Bench | None, steps: Mapping[str, StepSpec]) 
     save, save_problems = _entries(source, data.get("save"), "save", SAVE)
     problems += [*reader.problems, *derive_problems, *save_problems]
     if file is not None:
-        problems += problems_between(source, file, acquire, derive, bench)
+        problems += problems_between(source, file, derive, None if reader.incomplete else reader.readings, bench)
     if file is None or problems:
         return None, sorted(set(problems))
     return Recipe(file, acquire, derive, save, path.name, source.text, str(path)), []

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
@@ -133,12 +133,3 @@ class Recipe:
             "receiver": self.receiver.model_dump(mode="json"),
             "acquire": [item.document() for item in self.acquire],
         }
-
-
-def steps_of(items: Sequence[Step | Sweep]) -> Iterator[Step]:
-    """Yield every step of an acquire part, sweeps entered, in order of the file."""
-    for item in items:
-        if isinstance(item, Sweep):
-            yield from steps_of(item.do)
-        else:
-            yield item

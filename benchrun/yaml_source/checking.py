@@ -85,6 +85,8 @@ def _problems(source: Source, within: Path_, error: ValidationError) -> list[Pro
 
 def _problem(source: Source, within: Path_, detail: Mapping[str, Any]) -> Problem:
     kind, path = detail["type"], (*within, *detail["loc"])
+    # Said of what is written, not of what a validator has made of it.
+    detail = {**detail, "input": source.written(path, detail["input"])}
     if path and path[-1] == "[key]":
         return source.problem(path[:-1], _message(detail), at_key=True)
     if kind == "missing":
@@ -102,8 +104,7 @@ def _missing(name: str | int) -> str:
 
 def _message(detail: Mapping[str, Any]) -> str:
     say = _SAID.get(detail["type"])
-    message = say(detail["input"], detail.get("ctx", {})) if say else _as_it_is(detail)
-    return message if message.endswith((".", "?")) else f"{message}."
+    return say(detail["input"], detail.get("ctx", {})) if say else _as_it_is(detail)
 
 
 def _as_it_is(detail: Mapping[str, Any]) -> str:

@@ -41,8 +41,19 @@ class Source:
     problems: list[Problem] = field(default_factory=list)
 
     def problem(self, where: Path_, message: str, *, at_key: bool = False) -> Problem:
-        """Return a Problem at a path into the data: at the value, or at its key."""
-        return Problem(self.file, *self.mark(where, at_key=at_key), message)
+        """Return a Problem at a path into the data: at the value, or at its key. The message becomes a sentence."""
+        sentence = message if message.endswith((".", "?")) else f"{message}."
+        return Problem(self.file, *self.mark(where, at_key=at_key), sentence)
+
+    def written(self, path: Path_, otherwise: Any) -> Any:
+        """Return what the file holds at `path`; `otherwise` where the path does not lead anywhere."""
+        here = self.data
+        for step in path:
+            try:
+                here = here[step]
+            except (LookupError, TypeError):
+                return otherwise
+        return here
 
     def whole(self, message: str) -> Source:
         """Note a problem of the file as a whole, and return this."""

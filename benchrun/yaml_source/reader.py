@@ -37,8 +37,8 @@ MAX_NODES = 20_000
 
 _NULL = ("", "~", "null", "Null", "NULL")
 _SWITCH = {"true": True, "True": True, "TRUE": True, "false": False, "False": False, "FALSE": False}
-#: Numbers as they are written in a sane way; with leading zeros it is a text, such as a serial number.
-_INTEGER = re.compile(r"[-+]?(?:0|[1-9][0-9]{0,17})")
+#: Whole numbers that are written in the one way that str() writes them too; with leading zeros it is a serial number.
+_INTEGER = re.compile(r"0|-?[1-9][0-9]{0,17}")
 _FLOAT = re.compile(r"[-+]?(?:[0-9]+\.[0-9]*|\.[0-9]+|[0-9]+(?=[eE]))(?:[eE][-+]?[0-9]+)?")
 _BARE_REFERENCE = re.compile(r"(?<!\")\{[A-Za-z][A-Za-z0-9.-]*\}")
 

@@ -118,8 +118,15 @@ def test_reads_its_own_example(kind: str) -> None:
         ),
         ("", "level", "'' is not a quantity; a level is written like -10 dBm"),
         ("GHz", "frequency", "'GHz' is not a quantity; a frequency is written like 2.9 GHz"),
-        (True, "number", "'True' is not a number; write it like 0.6"),
-        (None, "level", "nothing is not a level; write it like -10 dBm"),
+        (True, "number", "a number is expected here, like 0.6, not 'True'"),
+        (None, "level", "a level is missing here; it is written like -10 dBm"),
+        ([1], "level", "a level is expected here, like -10 dBm, not a list"),
+        (
+            {"drive": None},
+            "level",
+            'a level is expected here, not a mapping; a reference is written in quotes: "{drive}"',
+        ),
+        ("2.4 GHz", "number", "'2.4 GHz': a number is written without a unit, like 0.6"),
         ("81 V", "count", "'81 V': a count is written without a unit, like 81"),
         (1.5, "count", "'1.5' is not a count: a whole number, 0 or more, is expected"),
         (-1, "count", "'-1' is not a count: a whole number, 0 or more, is expected"),
@@ -177,7 +184,7 @@ def test_the_kind_is_found_from_any_of_its_units(kind: str) -> None:
         ("3,5 GHz", "'3,5 GHz' is not a quantity: the decimal mark is a point. Did you mean 3.5 GHz?"),
         ("3 GHZ", "'3 GHZ': there is no unit GHZ. Did you mean 3 GHz?"),
         ("3 MOHM", "'3 MOHM': there is no unit MOHM. It could be mohm or Mohm. Write which"),
-        (None, "nothing is not a quantity; write it like 2.9 GHz"),
+        (None, "a quantity is missing here; it is written like 2.9 GHz"),
     ],
 )
 def test_a_kind_that_cannot_be_found_is_told(text: str, message: str) -> None:

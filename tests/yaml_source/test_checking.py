@@ -65,7 +65,7 @@ def test_a_right_file_is_a_model() -> None:
             "f.yaml:2:8: '3,5 dBm' is not a quantity: the decimal mark is a point. Did you mean 3.5 dBm?",
         ),
         ("title: A\nlevel: -3\n", "f.yaml:2:8: '-3' has no unit: a level is written with one, like -10 dBm."),
-        ("title: A\nlevel:\n", "f.yaml:2:1: nothing is not a level; write it like -10 dBm."),
+        ("title: A\nlevel:\n", "f.yaml:2:1: a level is missing here; it is written like -10 dBm."),
         (
             "title: A\nshape: {kind: rund, radius: 1}\n",
             "f.yaml:2:15: 'rund' is not known here; expected: round, square. Did you mean 'round'?",
