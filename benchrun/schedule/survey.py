@@ -40,6 +40,8 @@ class Survey:
         self._connectable = self._what_connects(kit)
         self._state = new_state()
         self._around: list[SweepNode] = []
+        self._doubtful = False
+        """A step or a sweep failed: what it would have set is not missed again behind it."""
 
     def _what_connects(self, kit: Kit | None) -> tuple[str, ...] | None:
         """Return what can be connected to a plane, None where no kit says which standards there are."""
@@ -108,6 +110,7 @@ class Survey:
             self.problems.append(place.problem(str(error)))
         else:
             return False
+        self._doubtful = True
         return True
 
     # Steps
@@ -193,6 +196,8 @@ class Survey:
 
     def _check_on(self, signals: Sequence[str], *, needs_probe_frequency: bool) -> None:
         """Raise InputError for a signal that would be on at a level or a frequency that nobody has set."""
+        if self._doubtful:
+            return
         for name in signals:
             for quantity in ("level", "frequency"):
                 full = f"{name}.{quantity}"
