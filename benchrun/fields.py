@@ -6,7 +6,7 @@ import re
 from collections.abc import Callable
 from typing import Annotated, Any
 
-from pydantic import AfterValidator, GetJsonSchemaHandler
+from pydantic import AfterValidator, BeforeValidator, GetJsonSchemaHandler
 from pydantic.json_schema import JsonSchemaValue
 from pydantic_core import core_schema
 
@@ -99,13 +99,24 @@ def _at_most(length: int) -> AfterValidator:
     return AfterValidator(check)
 
 
+def _whole_number_as_text(given: Any) -> Any:
+    """Take `serial: 42` for the text that it is: the YAML reader takes for whole numbers only what str() writes so."""
+    return str(given) if isinstance(given, int) and not isinstance(given, bool) else given
+
+
 #: A name of something on the bench or in a recipe.
 Name = Annotated[
     str,
+    BeforeValidator(_whole_number_as_text),
     Form(r"[A-Za-z0-9][A-Za-z0-9_-]{0,63}", "a name: letters, digits and hyphens"),
 ]
 #: A plain text on one line, such as a serial number or a title.
-Text = Annotated[str, Form(r"[^\x00-\x08\x0b-\x1f\x7f]*", "a plain text (it holds control characters)"), _at_most(400)]
+Text = Annotated[
+    str,
+    BeforeValidator(_whole_number_as_text),
+    Form(r"[^\x00-\x08\x0b-\x1f\x7f]*", "a plain text (it holds control characters)"),
+    _at_most(400),
+]
 #: A file beside the one that names it: never a way to another folder.
 FileName = Annotated[str, Form(r"[^/\\\x00-\x1f:]{1,200}", "the name of a file beside this one")]
 #: A file by its way from the folder of the one that names it.

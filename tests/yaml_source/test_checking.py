@@ -80,8 +80,8 @@ def test_a_right_file_is_a_model() -> None:
         ("title: A\nway: inn\n", "f.yaml:2:6: 'inn' is not known here; expected: in, out. Did you mean 'in'?"),
         ("title: A\non: perhaps\n", "f.yaml:2:5: true or false is expected here, not 'perhaps'."),
         (
-            "title: 42\n",
-            "f.yaml:1:8: '42' is a number or a switch, and a text is expected here: put it into quotes.",
+            "title: 4.20\n",
+            "f.yaml:1:8: '4.2' is a number or a switch, and a text is expected here: put it into quotes.",
         ),
         ("title: [A]\n", "f.yaml:1:8: a text is expected here, not a list."),
         ("title: A\nfile: ../x\n", "f.yaml:2:7: '../x' is not the name of a file beside this one."),

@@ -52,6 +52,8 @@ def test_the_place_of_something_absent_is_that_of_what_it_is_absent_from() -> No
         ("", None),
         ("'42'", "42"),
         ("0042", "0042"),
+        ("+5", "+5"),
+        ("-0", "-0"),
         ("yes", "yes"),
         ("off", "off"),
         ("0x1F", "0x1F"),
