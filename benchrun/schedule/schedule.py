@@ -110,7 +110,9 @@ class Schedule:
         if not 0 <= start <= len(self):
             raise IndexError(f"there is no reading {start}; the schedule has {len(self)}")
         walk = Walk(self._around.state(), self._around.scope(), self._foresee if self._drives else None)
-        return walk.all_of(self._body) if start == 0 else walk.from_reading(self._body, start)
+        if start == 0:
+            return walk.all_of(self._body)
+        return walk.from_reading(self._body, start) if start < len(self) else walk.after_last(self._body, start - 1)
 
     def reading(self, index: int) -> PlannedReading:
         """Return one reading. Raises IndexError."""

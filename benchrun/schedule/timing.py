@@ -254,7 +254,7 @@ class Timetable:
         return None
 
     def _pass_round(self, node: SweepNode, k: int) -> None:
-        self._begin(node, k)
+        self._pass(self._begin(node, k))
         for inner in node.body:
             if isinstance(inner, SweepNode):
                 self._pass_round(inner, len(inner.axis) - 1)
@@ -262,5 +262,11 @@ class Timetable:
                     self._state.leave(inner.axis.name)
             else:
                 self._scope.begin(inner.following)
-                for action in inner.spec.expand(inner.model, self._scope):
-                    self._state.apply(action)
+                for planned in inner.spec.expand(inner.model, self._scope):
+                    self._pass(self._state.apply(planned))
+
+    def _pass(self, action: Action | None) -> None:
+        """Let an action count for what comes after it, and not for its time."""
+        if action is not None:
+            self._times.before_ns(action)
+            self._times.after_ns(action)

@@ -115,6 +115,14 @@ class Walk:
         self._index = index
         yield from self._from(body, index)
 
+    def after_last(self, body: Sequence[Node], last: int) -> Iterator[PlannedAction]:
+        """Yield every action after the last reading, whose index is `last`."""
+        passed = False
+        for planned in self.from_reading(body, last):
+            if passed:
+                yield planned
+            passed = passed or planned.reading_index == last
+
     def _from(self, body: Sequence[Node], left: int) -> Iterator[PlannedAction]:
         for position, node in enumerate(body):
             if left < node.readings:
