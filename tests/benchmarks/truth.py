@@ -1,0 +1,164 @@
+"""Does the tool find what is true? World R1, seeds 1 to 20, the whole way from recipe to Touchstone files, everything on.
+
+Every reading's measured output reflection and T22 are compared with what the simulated world knows of the device at that
+moment, with this bench at port 1. Each seed is another bench: other standards, another power meter, other connections.
+"""
+
+from __future__ import annotations
+
+import re
+import tempfile
+from collections.abc import Iterator, Mapping, Sequence
+from concurrent.futures import ProcessPoolExecutor
+from contextlib import contextmanager
+from dataclasses import dataclass
+from multiprocessing import get_context
+from pathlib import Path
+from typing import Any, TypedDict
+from unittest.mock import patch
+
+import numpy as np
+import skrf
+from numpy.typing import NDArray
+
+from benchrun.archive import open_archive
+from benchrun.contract.capture import FloatArray
+from benchrun.contract.reading import Reading
+from benchrun.flow import RunResult, rehearse
+from benchrun.flow.rehearse import rehearsal_plugin
+from benchrun_sim.world.reference import reference_sha256
+from tests.flow.stage import HOT, RETUNED, Changes, Silence, recipes_in
+
+SEEDS = range(1, 21)
+PROCESSES = 2
+PERCENTILE = 95
+MOST_REFLECTION, MOST_CONVERSION = 0.0045, 0.002
+_FILE = re.compile(r"_([pm])([0-9.]+)dBm_([ST]22)\.s1p$")
+
+
+class Figure(TypedDict):
+    """One figure, its bound (at most), and whether it holds."""
+
+    name: str
+    figure: float
+    bound: float
+    holds: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Distances:
+    """|measured - true| of every reading of one run, (N,): output reflection, and T22 (of magnitudes where retuned)."""
+
+    reflection: FloatArray
+    conversion: FloatArray
+
+    def percentile(self) -> tuple[float, float]:
+        """Return the 95th percentiles of both."""
+        return float(np.percentile(self.reflection, PERCENTILE)), float(np.percentile(self.conversion, PERCENTILE))
+
+
+class Watched:
+    """The simulated bench's plugin, which keeps the world that it opened last: the product itself never sees it."""
+
+    def __init__(self) -> None:
+        self._plugin = rehearsal_plugin()
+        self.world: Any = None
+
+    def open_in_process(self, wiring: Mapping[str, Any], **how: Any) -> Any:
+        """Build a world in this process, and keep it."""
+        opened = self._plugin.open_in_process(wiring, **how)
+        self.world = opened.rack.world  # type: ignore[attr-defined]
+        return opened
+
+
+@contextmanager
+def watched() -> Iterator[Watched]:
+    """Let rehearsals open their worlds through a plugin that keeps them."""
+    plugin = Watched()
+    with patch("benchrun.flow.rehearse.rehearsal_plugin", lambda: plugin):
+        yield plugin
+
+
+def distances(run: Path, world: Any, *, coherent: bool) -> Distances:
+    """Compare the Touchstone files of a run with the truth about the world that it was read in."""
+    with open_archive(run) as archive:
+        begin_ns = int(archive.log("bench-time")[0].detail["start_ns"])
+        readings = list(archive.readings("hot"))
+    starts_ns = np.array(world.truth.starts_ns)
+    truths = [world.truth.reading(_sweep_ns(starts_ns, begin_ns, reading)) for reading in readings]
+    places = [(float(r.conditions["drive_dbm"]), r.frequencies_hz[0]) for r in readings]
+    reflection, conversion = (_measured(run, quantity) for quantity in ("S22", "T22"))
+    s22 = np.array([reflection[place] for place in places]) - np.array([t.reflection[0] for t in truths])
+    t22, true = np.array([conversion[place] for place in places]), np.array([t.conversion_to_b2[0] for t in truths])
+    return Distances(np.abs(s22), np.abs(t22 - true) if coherent else np.abs(np.abs(t22) - np.abs(true)))
+
+
+def _sweep_ns(starts_ns: NDArray[np.int64], begin_ns: int, reading: Reading) -> int:
+    """Return the world's time at which the sweep of a reading started: once, and within the reading."""
+    found = starts_ns[np.searchsorted(starts_ns, begin_ns + reading.started_ns) :][:1]
+    assert found.size == 1
+    assert found[0] < begin_ns + reading.ended_ns
+    return int(found[0])
+
+
+def _measured(run: Path, quantity: str) -> dict[tuple[float, float], complex]:
+    """Return what the run's files say, by drive and frequency."""
+    found = {}
+    for path in (run / "touchstone").iterdir():
+        name = _FILE.search(path.name)
+        assert name is not None, path
+        if name[3] == quantity:
+            network = skrf.Network(str(path))
+            drive_dbm = float(name[2]) * (1 if name[1] == "p" else -1)
+            found |= {(drive_dbm, hz): s for hz, s in zip(network.f.tolist(), network.s[:, 0, 0].tolist(), strict=True)}
+    return found
+
+
+def of_seed(seed: int, coherent: bool, changes: Changes = ()) -> Distances:
+    """Rehearse the hot recipe, with what it needs, in a folder of its own, and compare it with the truth."""
+    with tempfile.TemporaryDirectory() as place, watched() as plugin:
+        recipes = recipes_in(Path(place) / "recipes", (*changes, *(() if coherent else RETUNED)))
+        result: RunResult = rehearse(recipes / HOT, Path(place) / "runs", seed=seed, listener=Silence())
+        return distances(result.folder, plugin.world, coherent=coherent)
+
+
+def of_seeds(seeds: Sequence[int], *, coherent: bool, changes: Changes = ()) -> dict[int, Distances]:
+    """Return the distances of several seeds, worked out in two processes."""
+    from tests.benchmarks import truth  # by the name under which another process finds it
+
+    with ProcessPoolExecutor(PROCESSES, get_context("spawn")) as pool:
+        count = len(seeds)
+        found = pool.map(truth.of_seed, seeds, [coherent] * count, [tuple(changes)] * count)
+        return dict(zip(seeds, found, strict=True))
+
+
+def figures(seeds: Sequence[int] = SEEDS) -> list[Figure]:
+    """Return the figures of this topic."""
+    found = []
+    for coherent in (True, False):
+        found += _figures(of_seeds(seeds, coherent=coherent), coherent=coherent)
+    return found
+
+
+def _figures(by_seed: Mapping[int, Any], *, coherent: bool) -> list[Figure]:
+    pooled = Distances(*(np.concatenate([getattr(d, k) for d in by_seed.values()]) for k in ("reflection", "conversion")))
+    each = np.array([Distances(d.reflection, d.conversion).percentile() for d in by_seed.values()])
+    worst = np.argmax(each, axis=0)
+    seeds = list(by_seed)
+    how = "coherent" if coherent else "retuned"
+    world = f"R1 {reference_sha256()[:8]}, {how}"
+    rows = []
+    for k, (what, bound) in enumerate((("output reflection", MOST_REFLECTION), ("T22" if coherent else "|T22|", MOST_CONVERSION))):
+        span = f"seeds {min(seeds)} to {max(seeds)}"
+        rows.append(_at_most(f"|measured - true| {what}, 95 % of readings, {span} ({world})", pooled.percentile()[k], bound))
+        rows.append(_at_most(f"  worst single seed, {seeds[worst[k]]}", float(each[worst[k], k]), bound))
+    return rows
+
+
+def _at_most(name: str, figure: float, bound: float) -> Figure:
+    return {"name": name, "figure": figure, "bound": bound, "holds": figure <= bound}
+
+
+if __name__ == "__main__":
+    for figure in figures():
+        print(figure)
