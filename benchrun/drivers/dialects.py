@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import cache
 from pathlib import Path
 
 from benchrun.contract.hooks import DriverSpec
@@ -15,8 +16,9 @@ def load_dialect(path: Path) -> tuple[DialectText | None, list[Problem]]:
     return _checked(read_source(path))
 
 
+@cache
 def parse_dialect(text: str, file: str) -> DialectText:
-    """Read the text of a dialect. Raises FileProblemsError with every mistake."""
+    """Read the text of a dialect, once. Raises FileProblemsError with every mistake."""
     return _or_raise(_checked(read_text(text, file)))
 
 
