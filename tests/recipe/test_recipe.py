@@ -9,12 +9,13 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from ruamel.yaml import YAML
 
-from benchrun.bench import Bench
+from benchrun.bench import Bench, Kit, load_kit
 from benchrun.contract.hooks import StepSpec
 from benchrun.recipe import Recipe, Step, Sweep, load_recipe, recipe_source
+from benchrun.recipe.acquire import AcquireReader
 from benchrun.recipe.schema import recipe_schema
+from benchrun.yaml_source import json_schema, read_text
 
 Make = Callable[..., Recipe]
 
@@ -109,9 +110,6 @@ def test_the_schema_is_whole(steps: dict[str, StepSpec]) -> None:
 
 @pytest.mark.parametrize("kind", ["recipe", "bench", "kit"])
 def test_the_readme_documents_every_key(kind: str, recipes: Path, steps: dict[str, StepSpec]) -> None:
-    from benchrun.bench import Kit
-    from benchrun.yaml_source import json_schema
-
     schema = recipe_schema(steps) if kind == "recipe" else json_schema(Bench if kind == "bench" else Kit)
     keys = {
         key for found in _objects(schema) if isinstance(found.get("properties"), dict) for key in found["properties"]
@@ -121,8 +119,18 @@ def test_the_readme_documents_every_key(kind: str, recipes: Path, steps: dict[st
     assert keys - written == set()
 
 
-def test_the_examples_of_the_readme_are_yaml(recipes: Path) -> None:
-    blocks = re.findall(r"```yaml\n(.*?)```", (recipes / "README.md").read_text("utf-8"), re.DOTALL)
-    assert blocks
-    for block in blocks:
-        assert YAML(typ="safe", pure=True).load(block) is not None
+def test_the_examples_of_the_readme_are_right(
+    recipes: Path, tmp_path: Path, example_bench: Bench, steps: dict[str, StepSpec]
+) -> None:
+    text = (recipes / "README.md").read_text("utf-8")
+    blocks = [read_text(block, "README.md") for block in re.findall(r"```yaml\n(.*?)```", text, re.DOTALL)]
+    lists = [block for block in blocks if isinstance(block.data, list)]
+    kits = [block.text for block in blocks if "standards" in block.data]
+    assert (len(blocks), len(lists), len(kits)) == (7, 2, 1)
+    for block in lists:
+        reader = AcquireReader(block, example_bench, steps)
+        reader.items(block.data, ())
+        assert reader.problems == []
+    (tmp_path / "slide.s1p").write_text("# GHz S RI R 50\n2.0 0.5 0.1\n2.5 0.4 -0.1\n", "utf-8")
+    (tmp_path / "k.kit.yaml").write_text(kits[0], "utf-8")
+    assert load_kit(tmp_path / "k.kit.yaml")[1] == []
