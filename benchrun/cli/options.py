@@ -11,7 +11,7 @@ import click
 Function = TypeVar("Function", bound=Callable[..., Any])
 
 FILE = click.Path(path_type=Path)
-FOLDER = click.Path(file_okay=False, path_type=Path)
+FOLDER = click.Path(path_type=Path)
 RUN = click.Path(path_type=Path)
 
 recipe_argument = click.argument("recipe", type=FILE)

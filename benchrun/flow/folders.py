@@ -28,8 +28,9 @@ def make_run_folder(runs: Path, serial: str | None, recipe_name: str, today: dat
         runs.mkdir(parents=True, exist_ok=True)
         return _first_free(runs, stem)
     except OSError as error:
+        reason = "it is a file" if runs.is_file() else error.strerror or error
         raise FolderError(
-            f"{runs}: no run folder can be made here ({error.strerror or error}). Nothing was switched on. "
+            f"{runs}: no run folder can be made here ({reason}). Nothing was switched on. "
             "Choose a folder that you may write to with --to."
         ) from error
 
