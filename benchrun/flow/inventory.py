@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from benchrun.acquire.clock import RealClock
 from benchrun.drivers.registry import Registry, load_registry
+from benchrun.yaml_source import json_schema
 
 if TYPE_CHECKING:
     from pydantic import BaseModel
@@ -53,7 +54,7 @@ def schema(kind: str) -> dict[str, Any]:
     if kind == "dialect":
         from benchrun.visa.dialect import DialectText
 
-        return DialectText.model_json_schema(by_alias=True)
+        return json_schema(DialectText)
     if kind == "recipe":
         from benchrun.recipe.schema import recipe_schema
 
@@ -61,4 +62,4 @@ def schema(kind: str) -> dict[str, Any]:
     from benchrun.bench import Bench, Kit
 
     model: type[BaseModel] = Bench if kind == "bench" else Kit
-    return model.model_json_schema(by_alias=True)
+    return json_schema(model)
