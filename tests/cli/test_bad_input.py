@@ -187,8 +187,8 @@ SWEEPS = [
         HOT,
         "drive: {from",
         "meter.power: {from",
-    lines = [f"{place}: {message}" for place, message in sorted(made, key=lambda one: one[0].split(":")[:2])]
-        "gate.voltage, gate.current-limit, drain.voltage, drain.current-limit, meter.frequency, drive.",
+        "'meter.power' can be read, not set. What can be set: pump.frequency, pump.level, probe.frequency, "
+        "probe.level, gate.voltage, gate.current-limit, drain.voltage, drain.current-limit, meter.frequency, drive.",
     ),
     Mistake(
         HOT,
