@@ -11,7 +11,7 @@ from benchrun.bench import Bench, Kit, load_bench, load_kit
 from benchrun.drivers.dialects import dialect_for
 from benchrun.drivers.registry import Registry, load_registry
 from benchrun.errors import FileProblemsError, Problem
-from benchrun.recipe import Recipe, load_recipe, recipe_source
+from benchrun.recipe import Recipe, files_named, load_recipe, recipe_source
 from benchrun.visa.address import address_fault
 from benchrun.yaml_source import Path_, Source, read_source
 
@@ -53,18 +53,19 @@ def load_inputs(recipe_path: Path, bench_path: Path | None = None, kit_path: Pat
     Raises FileProblemsError with the mistakes of all files.
     """
     registry, folder = load_registry(), recipe_path.parent
-    outer, source, problems = recipe_source(recipe_path)
+    _, source, problems = recipe_source(recipe_path)
+    bench_name, kit_name = files_named(source)
     bench: Bench | None = None
     kit: Kit | None = None
-    if outer is not None:
-        absent = [] if bench_path else absent_file(source, ("bench",), folder / outer.bench)
+    if bench_name is not None:
+        absent = [] if bench_path else absent_file(source, ("bench",), folder / bench_name)
         if not absent:
-            bench, absent = load_bench(bench_path or folder / outer.bench, roles(registry))
+            bench, absent = load_bench(bench_path or folder / bench_name, roles(registry))
         problems += absent + _dialect_problems(bench, registry) + _address_problems(bench)
-    if outer is not None and outer.kit is not None:
-        absent = [] if kit_path else absent_file(source, ("kit",), folder / outer.kit)
+    if kit_name is not None:
+        absent = [] if kit_path else absent_file(source, ("kit",), folder / kit_name)
         if not absent:
-            kit, absent = load_kit(kit_path or folder / outer.kit)
+            kit, absent = load_kit(kit_path or folder / kit_name)
         problems += absent
     recipe, recipe_problems = load_recipe(recipe_path, bench, registry.steps)
     problems += recipe_problems

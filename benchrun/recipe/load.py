@@ -28,6 +28,13 @@ def recipe_source(path: Path) -> tuple[RecipeFile | None, Source, list[Problem]]
     return file, source, [*source.problems, *problems]
 
 
+def files_named(source: Source) -> tuple[str | None, str | None]:
+    """Return the bench file and the kit file that a recipe names, also where the rest of it has mistakes."""
+    data = source.data if isinstance(source.data, Placed) else {}
+    bench, kit = (name if isinstance(name := data.get(key), str) and name else None for key in ("bench", "kit"))
+    return bench, kit
+
+
 def load_recipe(path: Path, bench: Bench | None, steps: Mapping[str, StepSpec]) -> tuple[Recipe | None, list[Problem]]:
     """Read a *.recipe.yaml file against a bench: (recipe, []) or (None, all problems).
 

@@ -12,7 +12,7 @@ import pytest
 
 from benchrun.bench import Bench, Kit, load_kit
 from benchrun.contract.hooks import StepSpec
-from benchrun.recipe import Recipe, Step, Sweep, load_recipe, recipe_source
+from benchrun.recipe import Recipe, Step, Sweep, files_named, load_recipe, recipe_source
 from benchrun.recipe.acquire import AcquireReader
 from benchrun.recipe.schema import recipe_schema
 from benchrun.yaml_source import json_schema, read_text
@@ -70,6 +70,12 @@ def test_the_outer_form_is_known_without_bench_or_steps(tmp_path: Path) -> None:
     assert problems == []
     assert file is not None
     assert (file.bench, file.kit) == ("b", None)
+
+
+def test_the_files_that_it_names_are_known_whatever_else_is_wrong() -> None:
+    source = read_text("bench: b.bench.yaml\nkit: [1]\ntitel: T\n", "r.recipe.yaml")
+    assert files_named(source) == ("b.bench.yaml", None)
+    assert files_named(read_text("- 1\n", "r.recipe.yaml")) == (None, None)
 
 
 def test_what_decides_the_readings_is_hashed_and_nothing_else(recipe: Make) -> None:
