@@ -5,7 +5,7 @@
     BenchrunError                    exit 1   (never raised itself: whatever arrives as plain Exception is our defect)
     |-- InputError                   exit 2   what somebody wrote or asked for is wrong
     |   |-- QuantityError                     a text is not a quantity of the wanted kind
-    |   |-- FileProblemsError                 a bench, recipe, dialect or kit file has mistakes (all of them, with positions)
+    |   |-- FileProblemsError                 a bench, recipe, dialect or kit file has mistakes (all, with positions)
     |   |-- CalibrationError                  a calibration is missing, or does not fit the bench, plane, grid or date
     |   |-- DataSetError                      readings or standards do not allow what derive was asked for
     |   |-- FolderError                       a run folder cannot be made, found or read

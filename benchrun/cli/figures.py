@@ -22,7 +22,9 @@ def ratio_text(ratio_db: float | None) -> str:
 
 
 def duration_text(duration_s: float) -> str:
-    """Return a duration as a person says it: '40 s', '22 min', '3 h 20 min'."""
+    """Return a duration as a person says it: 'under 1 s', '40 s', '22 min', '3 h 20 min'."""
+    if 0 < duration_s < 1:
+        return "under 1 s"
     if duration_s < 90:
         return f"{duration_s:.0f} s"
     minutes = round(duration_s / 60)

@@ -13,7 +13,7 @@ class Clock(Protocol):
         """Whether this time is simulated."""
 
     def now_ns(self) -> int:
-        """Return the bench time in integer nanoseconds since the run's start (virtual) or an arbitrary origin (real)."""
+        """Return the bench time in integer nanoseconds since the run's start (virtual) or any origin (real)."""
 
     def sleep(self, duration_s: float) -> None:
         """Let `duration_s` seconds of bench time pass."""

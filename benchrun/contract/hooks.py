@@ -104,8 +104,8 @@ class StepSpec:
     """One kind of step: the key that recipes use, its pydantic model, and how it expands to actions.
 
     `expand(model, scope)` yields actions, pure. `execute(parameters, access)` is needed only where it yields a
-    ProcedureAction for itself; it returns what it found, for the archive's log. `duration_s(action)` is the modelled time of that
-    procedure.
+    ProcedureAction for itself; it returns what it found, for the archive's log. `duration_s(action)` is the
+    modelled time of that procedure.
     """
 
     key: str

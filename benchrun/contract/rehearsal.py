@@ -1,4 +1,4 @@
-"""What a rehearsal offers, reached through the entry point group benchrun.rehearsal (duck-typed: it imports nothing of ours)."""
+"""What a rehearsal offers, reached through the entry point group benchrun.rehearsal (it imports nothing of ours)."""
 
 from __future__ import annotations
 

@@ -28,6 +28,7 @@ def test_conditions_carry_their_units(key, value, text):
     ("duration_s", "text"),
     [
         (0, "0 s"),
+        (0.4, "under 1 s"),
         (89.4, "89 s"),
         (90, "2 min"),
         (1320, "22 min"),
