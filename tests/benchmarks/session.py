@@ -1,8 +1,8 @@
 """What the session costs beside the plain thing: blocks of waves and single queries, over a socket and in this process.
 
-Ours and the floor are measured turn by turn in one run, and compared by medians; pyvisa's default by itself, because
-the burst of work that it is disturbs whatever comes after it. The socket's other end is a process of its own with canned
-replies; in this process the simulated instruments answer.
+Ours and the floor are measured turn by turn in one run, compared by medians; pyvisa's default by itself, because
+the burst of work that it is disturbs whatever comes after it. The socket's other end is a process of its own with
+canned replies; in this process the simulated instruments answer.
 """
 
 from __future__ import annotations
@@ -214,7 +214,7 @@ def _plain_read(library: Any, handle: Any) -> FloatArray:
 
 
 def _block_figures(where: str, floor: str, medians_s: dict[str, float]) -> list[Figure]:
-    """Return the figures of a block. Nothing is faster than its floor: below 1 the floor was disturbed, and nothing holds."""
+    """Return a block's figures. Nothing beats its floor: below 1 the floor was disturbed, and nothing holds."""
     plain_s = medians_s["plain"]
     figures = [
         _figure(
