@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping
 from contextlib import suppress
 from dataclasses import dataclass
+from functools import partial
 from types import MappingProxyType
 from typing import cast
 
@@ -13,6 +14,7 @@ from benchrun.bench.model import Bench
 from benchrun.contract.clock import Clock
 from benchrun.contract.kinds import Settable
 from benchrun.contract.roles import DcSupply, Identity, Instrument, InstrumentSettings, SignalSource, WaveReceiver
+from benchrun.drivers.abandon import abandon
 from benchrun.drivers.dialects import dialect_for
 from benchrun.drivers.registry import Registry
 from benchrun.errors import BenchError, FileProblemsError, IdentityError, InstrumentError, Problem
@@ -163,8 +165,9 @@ def open_bench(
 ) -> OpenBench:
     """Open every instrument of the bench, see that each is what the bench file says, and return the drivers.
 
-    `addresses` replace those of the bench file, for a rehearsal. Nothing is set. Raises FileProblemsError (a dialect),
-    LinkError (nothing listens), IdentityError (another instrument answers).
+    `addresses` replace those of the bench file, for a rehearsal. Nothing is set; where that fails, RF and drains of
+    what answers are switched off. Raises FileProblemsError (a dialect), LinkError (nothing listens), IdentityError
+    (another instrument answers).
     """
     dialects = _dialects(bench, registry)
     sessions: dict[str, Session] = {}
@@ -172,15 +175,23 @@ def open_bench(
         for name, dialect in dialects.items():
             sessions[name] = _open(bench, name, dialect, bus, clock, (addresses or {}).get(name))
         identities = {name: _identified(bench, registry, name, session) for name, session in sessions.items()}
-    except BaseException:
+    except BaseException as error:
+        who = {name: partial(_identified_driver, bench, registry, name, session) for name, session in sessions.items()}
+        abandon(bench, who, error)
         for session in sessions.values():
             session.close()
         raise
-    drivers = {
-        name: registry.drivers[bench.instruments[name].driver].build(session, settings_of(bench, name))
-        for name, session in sessions.items()
-    }
+    drivers = {name: _driver(bench, registry, name, session) for name, session in sessions.items()}
     return OpenBench(bench, drivers, sessions, identities)
+
+
+def _driver(bench: Bench, registry: Registry, name: str, session: Session) -> Instrument:
+    return registry.drivers[bench.instruments[name].driver].build(session, settings_of(bench, name))
+
+
+def _identified_driver(bench: Bench, registry: Registry, name: str, session: Session) -> Instrument:
+    _identified(bench, registry, name, session)
+    return _driver(bench, registry, name, session)
 
 
 def settings_of(bench: Bench, name: str) -> InstrumentSettings:
