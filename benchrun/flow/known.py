@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -66,10 +66,20 @@ def newest(name: str, runs: Path, bench: Bench, origin: str, recipe: str) -> Mad
 
 def given(name: str, run: Path, bench: Bench, origin: str) -> Made:
     """Return the calibration `name` of a run that the user chose. Raises FolderError, CalibrationError."""
-    made = _of_run(name, require_run(run))
+    made = of_run(name, require_run(run))
     if reason := misfit(made, bench, origin):
         raise CalibrationError(f"{run}: {reason} Nothing was switched on.")
     return made
+
+
+def require_names(chosen: Iterable[str], used: Collection[str]) -> None:
+    """Raise CalibrationError where a calibration was chosen that the recipe does not use."""
+    for name in chosen:
+        if name not in used:
+            there = ", ".join(used) or "none"
+            raise CalibrationError(
+                f"--calibration {name}: the recipe uses no calibration of this name; it uses {there}."
+            )
 
 
 def misfit(made: Made, bench: Bench, origin: str) -> str:
@@ -84,7 +94,8 @@ def misfit(made: Made, bench: Bench, origin: str) -> str:
     return ""
 
 
-def _of_run(name: str, folder: Path) -> Made:
+def of_run(name: str, folder: Path) -> Made:
+    """Return the newest calibration `name` that a run made. Raises FolderError, CalibrationError."""
     found = [made for made in made_in(folder) if made.name == name]
     if not found:
         raise CalibrationError(

@@ -15,13 +15,13 @@ from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software_versions
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
-from benchrun.errors import BenchrunError, CalibrationError, DiskError
+from benchrun.errors import BenchrunError, DiskError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
-from benchrun.flow.known import Made, given, known_of, newest
+from benchrun.flow.known import Made, given, known_of, newest, require_names
 from benchrun.flow.planning import plan
-from benchrun.flow.produce import produce
+from benchrun.flow.produce import keep_used, produce
 from benchrun.flow.result import RunResult
 from benchrun.flow.summary import rows_of
 from benchrun.schedule import Schedule
@@ -52,10 +52,7 @@ class Setting:
 
 def given_calibrations(inputs: Inputs, origin: str, chosen: Mapping[str, Path]) -> dict[str, Made]:
     """Return the calibrations of the runs that the user chose. Raises CalibrationError, FolderError."""
-    for name in chosen:
-        if name not in inputs.recipe.calibrations:
-            known = ", ".join(inputs.recipe.calibrations) or "none"
-            raise CalibrationError(f"--calibration {name}: the recipe uses no calibration of this name, but {known}.")
+    require_names(chosen, inputs.recipe.calibrations)
     return {name: given(name, run, inputs.bench, origin) for name, run in chosen.items()}
 
 
@@ -142,6 +139,7 @@ def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, made: l
     for one in made:
         text = f"uses {one.kind} '{one.name}' of {one.folder.name}"
         writer.log(Event("calibration", text, {"run": str(one.folder)}))
+    keep_used(writer, known_of(made), "")
     clock, steps = setting.clock, inputs.registry.steps
     with Bus(setting.visa) as bus:
         bench = open_bench(inputs.bench, inputs.registry, bus, clock, setting.addresses or None)

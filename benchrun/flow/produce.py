@@ -16,11 +16,11 @@ from benchrun.derive.calibration import Calibration
 from benchrun.derive.levelling import Levelling
 from benchrun.derive.pipeline import Step, derive
 from benchrun.derive.results import Provenance, Results
-from benchrun.errors import CalibrationError, FolderError
+from benchrun.errors import FolderError
 from benchrun.flow.facts import definitions_of, facts_of
 from benchrun.flow.folders import require_run
 from benchrun.flow.inputs import Inputs, load_inputs
-from benchrun.flow.known import made_in
+from benchrun.flow.known import of_run, require_names
 from benchrun.flow.result import RunResult
 from benchrun.recipe.model import Entry
 from benchrun.save import save_results
@@ -57,10 +57,15 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
     with ArchiveWriter.append(run) as writer:
         for (kind, name), document in results.documents.items():
             writer.product(kind, name, document)
-        for name, one in known.items():
-            kind = "calibration" if isinstance(one, Calibration) else "levelling"
-            writer.product(USED[kind], name, {"result": folder.name, "document": one.to_document()})
+        keep_used(writer, known, folder.name)
     return Produced(results, folder)
+
+
+def keep_used(writer: ArchiveWriter, known: Mapping[str, Calibration | Levelling], result: str) -> None:
+    """Keep in a run's archive what `result` was made with; "" before there is any, for a run that breaks off."""
+    for name, one in known.items():
+        kind = "calibration" if isinstance(one, Calibration) else "levelling"
+        writer.product(USED[kind], name, {"result": result, "document": one.to_document()})
 
 
 def values_of(model: BaseModel) -> dict[str, Any]:
@@ -102,15 +107,11 @@ def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
         if archive.count == 0:
             raise FolderError(f"{folder}: there is no reading in this run, so there is nothing to derive.")
         meta, known = archive.meta, _used(archive)
-    for name, other in calibrations.items():
-        found = [made for made in made_in(require_run(other)) if made.name == name]
-        if not found:
-            raise CalibrationError(
-                f"{other}: this run made no calibration '{name}'. `benchrun calibrations` lists what there is."
-            )
-        known[name] = found[-1].known
     with tempfile.TemporaryDirectory() as place:
-        produced = produce(restored(meta, Path(place)), folder, known)
+        inputs = restored(meta, Path(place))
+        require_names(calibrations, inputs.recipe.calibrations)
+        known |= {name: of_run(name, require_run(other)).known for name, other in calibrations.items()}
+        produced = produce(inputs, folder, known)
     return RunResult(produced.folder, meta.state, 0, rows_of(produced.results), produced.results.notes)
 
 

@@ -78,14 +78,18 @@ def export(run: Path, form: str, to: Path) -> list[Path]:
         )
     try:
         to.mkdir(parents=True, exist_ok=True)
-        return [_copied(path, to / path.name) for path in sorted(results[-1].glob(FORMS[form]))]
+        sources = sorted(results[-1].glob(FORMS[form]))
+        _require_absent([to / source.name for source in sources])
+        return [Path(shutil.copyfile(source, to / source.name)) for source in sources]
     except OSError as error:
         raise FolderError(
             f"{to}: cannot be written ({error.strerror or error}). Choose another folder with --to."
         ) from error
 
 
-def _copied(source: Path, target: Path) -> Path:
-    if target.exists():
-        raise FolderError(f"{target}: is there already, and nothing is overwritten. Choose another folder with --to.")
-    return Path(shutil.copyfile(source, target))
+def _require_absent(targets: list[Path]) -> None:
+    for target in targets:
+        if target.exists():
+            raise FolderError(
+                f"{target}: is there already, and nothing is overwritten. Choose another folder with --to."
+            )

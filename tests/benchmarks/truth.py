@@ -141,16 +141,22 @@ def figures(seeds: Sequence[int] = SEEDS) -> list[Figure]:
 
 
 def _figures(by_seed: Mapping[int, Any], *, coherent: bool) -> list[Figure]:
-    pooled = Distances(*(np.concatenate([getattr(d, k) for d in by_seed.values()]) for k in ("reflection", "conversion")))
+    pooled = Distances(
+        *(np.concatenate([getattr(d, k) for d in by_seed.values()]) for k in ("reflection", "conversion"))
+    )
     each = np.array([Distances(d.reflection, d.conversion).percentile() for d in by_seed.values()])
     worst = np.argmax(each, axis=0)
     seeds = list(by_seed)
     how = "coherent" if coherent else "retuned"
     world = f"R1 {reference_sha256()[:8]}, {how}"
     rows = []
-    for k, (what, bound) in enumerate((("output reflection", MOST_REFLECTION), ("T22" if coherent else "|T22|", MOST_CONVERSION))):
+    for k, (what, bound) in enumerate(
+        (("output reflection", MOST_REFLECTION), ("T22" if coherent else "|T22|", MOST_CONVERSION))
+    ):
         span = f"seeds {min(seeds)} to {max(seeds)}"
-        rows.append(_at_most(f"|measured - true| {what}, 95 % of readings, {span} ({world})", pooled.percentile()[k], bound))
+        rows.append(
+            _at_most(f"|measured - true| {what}, 95 % of readings, {span} ({world})", pooled.percentile()[k], bound)
+        )
         rows.append(_at_most(f"  worst single seed, {seeds[worst[k]]}", float(each[worst[k], k]), bound))
     return rows
 
