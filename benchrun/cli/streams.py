@@ -6,6 +6,7 @@ written afterwards is dropped, and the command keeps its exit code. A full disk 
 
 from __future__ import annotations
 
+import contextlib
 import errno
 import json
 import os
@@ -63,10 +64,10 @@ class GuardedStream:
 
     def _sink(self) -> None:
         """Point the descriptor at nothing, so that what is still buffered cannot fail again when Python leaves."""
-        try:
-            os.dup2(os.open(os.devnull, os.O_WRONLY), self._stream.fileno())
-        except (OSError, ValueError):  # no descriptor behind it: then nothing is buffered either
-            return
+        with contextlib.suppress(OSError, ValueError), Path(os.devnull).open("wb") as nothing:
+            os.dup2(
+                nothing.fileno(), self._stream.fileno()
+            )  # fails where no descriptor is behind: nothing is buffered then
 
 
 def guard_standard_streams() -> None:
