@@ -31,6 +31,7 @@ REMEMBERED = 64
 REOPENINGS = 3
 #: Entries read from an error queue before it counts as never empty.
 LONGEST_QUEUE = 100
+CHECK_SCREEN = "Look at its own screen, and see that nobody else talks to it"
 T = TypeVar("T")
 
 
@@ -156,16 +157,15 @@ class Conversation:
 
     def garbled(self, message: str, error: ReplyError) -> ReplyError:
         """Return the error of an answer that makes no sense, and hold the link suspect."""
-        full = ReplyError(f"{self.wire.where}: answer to '{message}': {error}")
+        full = ReplyError(f"{self.wire.where}: answer to '{message}': {str(error).rstrip('.')}. {CHECK_SCREEN}")
         self._failed(self.now_ns(), message, full)
         return full
 
     def _complaint(self, entries: Sequence[scpi.ErrorEntry], message: str) -> InstrumentError:
         """Return the entries of the error queue as one error."""
         listed = "; ".join(map(str, entries))
-        error = InstrumentError(
-            f"{self.wire.where}: reported {listed} after '{message}'. Compare the dialect with the instrument's manual"
-        )
+        advice = scpi.advice(entries[0].number)
+        error = InstrumentError(f"{self.wire.where}: reported {listed} after '{message}'. {advice}")
         self.exchanges.append(Exchange(self.now_ns(), message, listed, str(error)))
         return error
 

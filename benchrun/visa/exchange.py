@@ -77,8 +77,9 @@ def read_values(answer: Answer, completed: bool, asks: Sequence[Use]) -> tuple[A
     units = answer.units
     if completed:
         if not units or units[0].strip() != "1":
-            raise ReplyError(f"*OPC? answers 1; this begins with {units[:1]}")
+            first = repr(units[0]) if units else "nothing"
+            raise ReplyError(f"*OPC? is answered with 1; this answer begins with {first}")
         units = units[1:]
     if len(units) != len(asks):
-        raise ReplyError(f"{len(asks)} replies were expected, {len(units)} came: {units}")
+        raise ReplyError(f"{len(asks)} replies were expected, {len(units)} came: {'; '.join(units)!r}")
     return tuple(use.entry.read(unit) for use, unit in zip(asks, units, strict=True))

@@ -151,6 +151,17 @@ class ErrorEntry:
 NO_ERROR = '0,"No error"'
 
 
+def advice(number: int) -> str:
+    """Return what to do about an entry of the error queue, by its class (SCPI-1999 volume 2, from memory)."""
+    if -200 < number <= -100:
+        return "It did not understand: compare the dialect with its manual"
+    if -300 < number <= -200:
+        return "It could not do that as it stands: look at its own screen, and at its limits in the bench file"
+    if -500 < number <= -400:
+        return "Questions and answers got out of step: check that nobody else talks to it"
+    return "Its manual says what this number means"
+
+
 def parse_error(text: str) -> ErrorEntry:
     """Read one entry of SYSTem:ERRor?: -113,"Undefined header". Raises ReplyError."""
     code, *rest = split(text.strip(), ",")
