@@ -26,10 +26,13 @@ class Said(NamedTuple):
     exchanges: tuple[Exchange, ...]
 
 
-def last_exchanges(bench: OpenBench, error: BaseException) -> tuple[Said, ...]:
+def is_failure(error: BaseException | None) -> bool:
+    """Whether something went wrong, rather than that somebody stopped the run."""
+    return isinstance(error, Exception) and not isinstance(error, StoppedError)
+
+
+def last_exchanges(bench: OpenBench) -> tuple[Said, ...]:
     """Return the last exchanges of the instruments that failed, or a few of every instrument where none says so."""
-    if not isinstance(error, Exception) or isinstance(error, StoppedError):
-        return ()
     everything = [Said(name, tuple(session.exchanges)) for name, session in bench.sessions.items()]
     failed = tuple(one for one in everything if one.exchanges and one.exchanges[-1].error)
     return failed or tuple(Said(one.instrument, one.exchanges[-FEW:]) for one in everything)

@@ -73,14 +73,14 @@ class Grid:
         return [name for name in capture.tones if name in self._signals and name not in own] if capture.follow else []
 
     def _load_list(self, name: str, capture: Capture) -> None:
-        source, level_dbm = self._bench.signal(name), self._stands.get(f"{name}.level")
-        if level_dbm is None or not isinstance(source, SignalSource):
+        source = self._bench.signal(name)
+        if not isinstance(source, SignalSource):
             raise InstrumentError(
-                f"{name} cannot follow the receiver: its level was never set. Set {name}.level before this reading"
+                f"{name} cannot follow the receiver: its instrument has no list. Step it point by point"
             )
         offset_hz = capture.offsets_hz[capture.tones.index(name)]
         self._listed = (*self._listed, name)
-        source.load_list([hz + offset_hz for hz in capture.frequencies_hz], [level_dbm] * len(capture.frequencies_hz))
+        source.load_list([hz + offset_hz for hz in capture.frequencies_hz], capture.levels_dbm)
 
     def _leave_lists(self) -> None:
         for name in self._listed:

@@ -77,8 +77,10 @@ class _Run:
     def to_end(self) -> Outcome:
         """Run, make safe, write down how it went; return, or raise what went wrong."""
         error = self._way_out()
-        said = ending.last_exchanges(self._around.bench, error) if error else ()
+        said = ending.last_exchanges(self._around.bench) if ending.is_failure(error) else ()
         report = self._made_safe()
+        if not report.safe:
+            said = (*said, *ending.last_exchanges(self._around.bench))
         outcome = self._outcome(error, report)
         error = self._written_down(outcome, said, error)
         if error is None and report.safe:

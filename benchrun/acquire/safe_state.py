@@ -63,15 +63,18 @@ class _Bringing:
     drains_v: dict[str, float] = field(default_factory=dict)
     failed: set[str] = field(default_factory=set)
     witnessed: bool = False
+    sources: dict[str, str] = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.sources = _sources(self.bench, self.outputs)
 
     def down(self, look: Look | None, *, gates: bool = True) -> SafeReport:
-        sources = _sources(self.bench, self.outputs)
-        descent = Descent(sources, self.outputs.drains_below_v, self.outputs.gates if gates else ())
+        descent = Descent(self.sources, self.outputs.drains_below_v, self.outputs.gates if gates else ())
         while step := descent.next():
             if step.kind is Kind.WITNESS:
                 confirmed = self._unseen(look)
             else:
-                confirmed = self._tried(step, sources.get(step.name) or self._carrier(step.name))
+                confirmed = self._tried(step, self.sources.get(step.name) or self._carrier(step.name))
             descent.report(step, confirmed=confirmed)
         return self._report(descent, gates=gates)
 
@@ -115,12 +118,15 @@ class _Bringing:
 
     def _unseen(self, look: Look | None) -> bool:
         """Whether no receiver sees RF. One that cannot look is no witness and no obstacle: sources were read back."""
-        if look is None or any(self.bench.instruments[name] is self.bench.receiver for name in self.failed):
+        receivers = {
+            name: one for name, one in self.sources.items() if isinstance(self.bench.instruments[one], WaveReceiver)
+        }
+        if look is None or not self.failed.isdisjoint(receivers.values()):
             return True
         try:
             seen = look()
-        except (Exception, KeyboardInterrupt):
-            return True
+        except (Exception, KeyboardInterrupt):  # it may have restarted, with its own RF on: that is asked again
+            return all(self._tried(Step(Kind.SOURCE, name), instrument) for name, instrument in receivers.items())
         self.witnessed = seen == ""
         if seen:
             self._because(seen)

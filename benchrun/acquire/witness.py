@@ -45,7 +45,9 @@ class Witness:
 
     def _one_point(self, capture: Capture) -> ComplexArray:
         receiver = self._receiver()
-        receiver.configure(replace(capture, frequencies_hz=capture.frequencies_hz[-1:], averages=1, follow=False))
+        receiver.configure(
+            replace(capture, frequencies_hz=capture.frequencies_hz[-1:], averages=1, follow=False, levels_dbm=())
+        )
         return receiver.acquire().data
 
 

@@ -6,6 +6,7 @@ import pytest
 
 from benchrun.acquire.outputs import Outputs
 from benchrun.acquire.safe_state import PATIENCE_S, lower, make_safe
+from benchrun.errors import LinkError
 from tests.acquire.fake_bench import (
     OUTPUTS,
     FakeBench,
@@ -146,6 +147,17 @@ def test_rf_that_fades_while_the_drain_falls_is_looked_at_again() -> None:
     report = make_safe(bench, OUTPUTS, bench.clock, lambda: next(seen))
     assert report.safe
     assert "no RF seen by a receiver" in report.confirmed
+
+
+def test_a_receiver_that_fails_as_a_witness_is_switched_off_again() -> None:
+    bench = live_bench()
+
+    def restarts() -> str:
+        bench.rf.add("probe")  # as some analysers are after a power-up
+        raise LinkError("analyser: the link broke")
+
+    assert make_safe(bench, OUTPUTS, bench.clock, restarts).safe
+    assert bench.dark
 
 
 @pytest.mark.parametrize("answer", [None, RuntimeError("no"), KeyboardInterrupt()])
