@@ -29,7 +29,10 @@ Look = Callable[[], str | None]
 
 @dataclass(frozen=True, slots=True)
 class SafeReport:
-    """What was confirmed and what was not, in words; `text` says all of it in one sentence, `reasons` why not."""
+    """What was confirmed and what was not, in words; `text` says all of it in one sentence.
+
+    `reasons` are what went wrong on the way, also what a second try then mended.
+    """
 
     confirmed: tuple[str, ...]
     unconfirmed: tuple[str, ...]
@@ -151,7 +154,7 @@ class _Bringing:
         )
         unconfirmed = [step.name for step in descent.unconfirmed]
         if not unconfirmed:
-            return SafeReport(confirmed, (), self._all_well(descent, gates=gates))
+            return SafeReport(confirmed, (), self._all_well(descent, gates=gates), tuple(self.reasons))
         return SafeReport(
             confirmed, tuple(unconfirmed), self._loud(confirmed, unconfirmed, descent), tuple(self.reasons)
         )

@@ -15,7 +15,7 @@ from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software_versions
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
-from benchrun.errors import BenchrunError, DiskError
+from benchrun.errors import DiskError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
@@ -91,8 +91,7 @@ def measure(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setti
     )
     try:
         return _measured(inputs, schedule, made, setting, folder)
-    except BenchrunError as error:
-        error.add_note(str(folder))
+    except BaseException as error:  # also a defect of ours and Ctrl-C: what was committed is in this folder
         error.__dict__.setdefault("folder", folder)
         raise
 
@@ -105,16 +104,26 @@ def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Set
     try:
         state = _acquired(writer, inputs, schedule, made, setting).state
     except BaseException as error:
-        outcome = outcome_of(error)
-        state = outcome.state if outcome is not None else "failed"
         with suppress(DiskError):  # the first error is the one to be told
-            writer.close(state)
+            _broken_off(writer, error)
         raise
     finally:
         setting.listener.end()
     writer.close(state)
     produced = produce(inputs, folder, known_of(made))
     return RunResult(folder, state, 0, rows_of(produced.results), produced.results.notes)
+
+
+def _broken_off(writer: ArchiveWriter, error: BaseException) -> None:
+    """Close the archive of a run that broke off. Raises DiskError."""
+    outcome = outcome_of(error)
+    if outcome is not None:
+        writer.close(outcome.state)
+        return
+    try:
+        writer.log(Event("failure", str(error) or type(error).__name__, {"error": type(error).__name__}))
+    finally:
+        writer.close("stopped" if isinstance(error, KeyboardInterrupt) else "failed")
 
 
 def _copy_files(inputs: Inputs, folder: Path) -> None:
