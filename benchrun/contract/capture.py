@@ -18,7 +18,7 @@ class Capture:
     `waves` are names of the bench's receivers ("incident", "reflected"). `tones` names the offsets ("probe",
     "pump", "image"); the probe's offset is 0 Hz. `frequencies_hz` is the probe's grid: one point for a reading that
     the recipe steps, several for a sweep that the receiver makes itself. When `follow` is true the grid is swept by
-    the receiver and another source follows it over trigger lines.
+    the receiver and another source follows it over trigger lines, with `levels_dbm` at its points (else empty).
     """
 
     waves: tuple[str, ...]
@@ -28,6 +28,7 @@ class Capture:
     if_bandwidth_hz: float
     averages: int = 1
     follow: bool = False
+    levels_dbm: tuple[float, ...] = ()
 
     @property
     def shape(self) -> tuple[int, int, int]:

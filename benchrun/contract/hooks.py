@@ -24,8 +24,9 @@ class DriverSpec:
     """One driver: the name that bench files use, its role, the dialect it falls back to, and how to build it.
 
     `dialect` is the text of a dialect file (YAML) that holds the generic SCPI-1999 entries. `needs` are the entries
-    without which the driver cannot work; `optional` those that add a capability. `build` gets the link and what the
-    bench says of the instrument.
+    without which the driver cannot work; `optional` those that add a capability; `following` those of them without
+    which a source cannot follow a receiver's sweep, or a receiver cannot lead one (empty: it never can). `build` gets
+    the link and what the bench says of the instrument.
     """
 
     name: str
@@ -35,6 +36,7 @@ class DriverSpec:
     needs: tuple[str, ...]
     build: Callable[[Link, InstrumentSettings], Instrument]
     optional: tuple[str, ...] = ()
+    following: tuple[str, ...] = ()
 
 
 class StepScope(Protocol):
@@ -64,6 +66,12 @@ class StepScope(Protocol):
         """Resolve a quantity, or a sum of references and quantities ("{frequency} - 7 MHz"), for a settable.
 
         Raises InputError for what cannot be resolved here, and for a value outside what the target takes.
+        """
+
+    def levels_dbm(self, signal: str, frequencies_hz: Sequence[float]) -> tuple[float, ...]:
+        """Return the level that a signal is to have at each of other frequencies than its own.
+
+        It is that of the drive where one is in force, else the level in force. Raises InputError where neither is.
         """
 
     def text(self, text: str) -> str:

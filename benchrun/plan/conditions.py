@@ -48,14 +48,17 @@ class Where:
         return f"{name} {value:+.1f} dBm" if kind == "level" else f"{name} {show(value, kind, 6)}"
 
 
-def conditions_of(bench: Bench, columns: Columns) -> Iterator[tuple[Conditions, Rows]]:
+def conditions_of(bench: Bench, schedule: Schedule, columns: Columns) -> Iterator[tuple[Conditions, Rows]]:
     """Yield what levels depend on, and which row of the columns each is of. A receiver's own sweep is written out."""
     grid = np.array(columns.read.grid_hz if columns.read is not None else ())
     different = _different(_looked_at(bench, columns), len(columns.index))
     at_once = max(1, MOST_AT_ONCE // max(len(grid), 1))
     for start in range(0, len(different), at_once):
         rows = np.repeat(different[start : start + at_once], max(len(grid), 1))
-        yield _conditions(bench, columns, rows, grid), rows
+        if grid.size:
+            yield _swept(bench, schedule, columns, rows, grid), rows
+        else:
+            yield _conditions(bench, columns, rows), rows
 
 
 def _looked_at(bench: Bench, columns: Columns) -> list[npt.NDArray[np.int64]]:
@@ -83,24 +86,44 @@ def _different(columns: Sequence[npt.NDArray[np.int64]], count: int) -> Rows:
 _ODD, _HALF = np.uint64(0x9E3779B97F4A7C15), np.uint64(29)
 
 
-def _conditions(bench: Bench, columns: Columns, rows: Rows, grid_hz: FloatArray) -> Conditions:
-    nothing = np.full(len(rows), np.nan)
-
-    def column(name: str) -> FloatArray:
-        return columns.values[name][rows] if name in columns.values else nothing
-
-    frequencies = {name: column(f"{name}.frequency") for name in bench.signals}
-    drive = column(DRIVE)
-    if grid_hz.size:
-        swept = np.tile(grid_hz, len(rows) // grid_hz.size)
-        offsets = {name: frequency - frequencies.get(PROBE, nothing) for name, frequency in frequencies.items()}
-        frequencies = {n: swept if n == PROBE else swept + offset for n, offset in offsets.items()}
-        drive = nothing
+def _conditions(bench: Bench, columns: Columns, rows: Rows) -> Conditions:
     settings = {
-        name: Setting(column(f"{name}.level"), frequencies[name], columns.signal_on(name)[rows])
+        name: Setting(
+            _column(columns, f"{name}.level", rows),
+            _column(columns, f"{name}.frequency", rows),
+            columns.signal_on(name)[rows],
+        )
         for name in bench.signals
     }
-    return Conditions(settings, drive, _connected(bench, columns, rows))
+    return Conditions(settings, _column(columns, DRIVE, rows), _connected(bench, columns, rows))
+
+
+def _column(columns: Columns, name: str, rows: Rows) -> FloatArray:
+    return columns.values[name][rows] if name in columns.values else np.full(len(rows), np.nan)
+
+
+def _swept(bench: Bench, schedule: Schedule, columns: Columns, rows: Rows, grid_hz: FloatArray) -> Conditions:
+    """Return the conditions of a receiver's own sweeps: each of the rows stands once for every point of the grid."""
+    standing = _conditions(bench, columns, rows)
+    swept = np.tile(grid_hz, len(rows) // grid_hz.size)
+    settings, drive_dbm = {}, np.full(len(rows), np.nan)
+    for name, setting in standing.settings.items():
+        if name == PROBE:
+            settings[name] = Setting(setting.level_dbm, swept, setting.on)
+            continue
+        offset_hz = setting.frequency_hz - standing.settings[PROBE].frequency_hz
+        level_dbm = setting.level_dbm
+        if np.any(setting.on):  # it follows: the step refuses a signal that would stand still
+            level_dbm = _listed_dbm(schedule, columns, rows[:: grid_hz.size])
+            drive_dbm = standing.drive_dbm
+        settings[name] = Setting(level_dbm, swept + offset_hz, setting.on)
+    return Conditions(settings, drive_dbm, standing.connected)
+
+
+def _listed_dbm(schedule: Schedule, columns: Columns, rows: Rows) -> FloatArray:
+    """Return the levels that the source which follows is given, reading by reading, (readings * points,)."""
+    captures = [schedule.reading(int(index)).action.capture for index in columns.index[rows]]
+    return np.concatenate([capture.levels_dbm for capture in captures if capture is not None])
 
 
 def _connected(bench: Bench, columns: Columns, rows: Rows) -> dict[str, dict[str, npt.NDArray[np.bool_]]]:

@@ -71,7 +71,7 @@ def check_levels(schedule: Schedule, bench: Bench) -> LevelTable:
     """
     levels, worst = BenchLevels(bench), WorstCases()
     for columns in itertools.chain(schedule.columns(), schedule.moments()):
-        for conditions, rows in conditions_of(bench, columns):
+        for conditions, rows in conditions_of(bench, schedule, columns):
             where = Where(schedule, columns, rows)
             worst.take(_wanted(levels.figures(conditions), columns.read), where)
             if columns.read is not None:

@@ -22,6 +22,8 @@ class ReadSite:
     scalars: tuple[str, ...]
     grid_hz: tuple[float, ...]
     """The receiver's own sweep, () where the reading is at the frequency in force."""
+    follow: bool = False
+    """Whether another source follows that sweep."""
 
 
 @dataclass(slots=True, eq=False)

@@ -15,7 +15,7 @@ from benchrun.recipe import Recipe
 from benchrun.recipe.model import Place
 from benchrun.schedule.columns import Columns, all_rounds
 from benchrun.schedule.drive import DRIVE, Driver
-from benchrun.schedule.program import Node, Site, SweepNode, sites
+from benchrun.schedule.program import Node, ReadSite, Site, SweepNode, sites
 from benchrun.schedule.scope import Scope
 from benchrun.schedule.state import State
 from benchrun.schedule.table import Table
@@ -53,7 +53,7 @@ class Surroundings:
 
     def scope(self) -> Scope:
         """Return a scope."""
-        return Scope(self.recipe, self.bench, self.kinds)
+        return Scope(self.recipe, self.bench, self.kinds, self.driver)
 
     def table(self) -> Table:
         """Return what works out columns."""
@@ -82,6 +82,11 @@ class Schedule:
     def kinds(self) -> Mapping[str, Kind]:
         """Kind of each condition by its full name."""
         return self._around.kinds
+
+    @property
+    def places(self) -> tuple[tuple[ReadSite, int], ...]:
+        """The places that read, each with the index of its first reading."""
+        return tuple((site.read, site.offset) for site in self._sites)
 
     @property
     def duration_s(self) -> float:

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from functools import lru_cache
+
+import numpy as np
 
 from benchrun.bench import Bench
 from benchrun.contract.kinds import Kind, Settable
@@ -12,6 +14,7 @@ from benchrun.errors import InputError
 from benchrun.quantities import parse, show
 from benchrun.recipe import Recipe
 from benchrun.recipe.references import DIFFERENCE, parse_sum, substitute
+from benchrun.schedule.drive import DRIVE, Driver
 
 
 class Noted(Mapping[str, float]):
@@ -34,7 +37,8 @@ class Noted(Mapping[str, float]):
 class Scope:
     """The StepScope that schedules give to steps (contract.hooks)."""
 
-    def __init__(self, recipe: Recipe, bench: Bench, kinds: Mapping[str, Kind]) -> None:
+    def __init__(self, recipe: Recipe, bench: Bench, kinds: Mapping[str, Kind], driver: Driver | None) -> None:
+        self._driver = driver
         self._settables = bench.settables()
         self._kinds = kinds
         self._signals, self._receivers = tuple(bench.signals), tuple(bench.receivers)
@@ -97,6 +101,18 @@ class Scope:
         for sign, name in references:
             value += sign * self._reference(name, settable)
         return in_range(value, settable)
+
+    def levels_dbm(self, signal: str, frequencies_hz: Sequence[float]) -> tuple[float, ...]:
+        """Return the level at each frequency: that of the drive in force, else that in force. Raises InputError."""
+        name, driver = f"{signal}.level", self._driver
+        drive_dbm = self._seen.get(DRIVE) if driver is not None and name == driver.level else None
+        if driver is not None and drive_dbm is not None:
+            levels = driver.levels_dbm(np.full(len(frequencies_hz), drive_dbm), np.array(frequencies_hz)).tolist()
+        elif name in self._seen:
+            levels = [self._seen[name]] * len(frequencies_hz)
+        else:
+            raise InputError(f"{name} has no value here. Set it before this reading.")
+        return tuple(in_range(level, self._settables[name]) for level in levels)
 
     def _reference(self, name: str, settable: Settable) -> float:
         kind = self._kinds.get(name)

@@ -280,7 +280,7 @@ def _site(action: ReadAction) -> ReadSite:
     capture = action.capture
     waves = () if capture is None else capture.waves
     grid = capture.frequencies_hz if capture is not None and len(capture.frequencies_hz) > 1 else ()
-    return ReadSite(action.name, action.signals, waves, action.scalars, grid)
+    return ReadSite(action.name, action.signals, waves, action.scalars, grid, capture is not None and capture.follow)
 
 
 def _tunings(action: ReadAction) -> Iterator[float]:

@@ -91,5 +91,6 @@ SPEC = DriverSpec(
     dialect=generic_dialect("signal_source"),
     needs=("frequency", "level", "output", "condition"),
     optional=(*LIST_ENTRIES, "level-mode", "abort", "reference", "panel-lock"),
+    following=LIST_ENTRIES,
     build=GenericSignalSource,
 )

@@ -191,5 +191,6 @@ SPEC = DriverSpec(
         "data", "limits",
     ),
     optional=("free-run", "byte-order", "averaging", "point-pulse", "reference", "panel-lock"),
+    following=("point-pulse",),
     build=GenericWaveReceiver,
 )  # fmt: skip

@@ -70,6 +70,8 @@ def expand(model: ReadModel, scope: StepScope) -> Iterator[Action]:
     _known("tones", model.tones, (*scope.signals, IMAGE))
     waves = scope.receivers if model.waves is None else model.waves
     _known("waves", waves, scope.receivers)
+    if model.follow is not None:
+        _known("follow", (model.follow,), scope.signals)
     signals = tuple(name for name in scope.signals if name in model.tones)
     capture = _capture(model, waves, scope) if waves and model.tones else None
     yield ReadAction(model.name, capture, signals, model.also)
@@ -82,14 +84,20 @@ def _known(key: str, names: tuple[str, ...], there: tuple[str, ...]) -> None:
 
 
 def _capture(model: ReadModel, waves: tuple[str, ...], scope: StepScope) -> Capture:
+    grid_hz, offsets_hz = _grid(model, scope), tuple(_offset(tone, model, scope) for tone in model.tones)
+    levels_dbm: tuple[float, ...] = ()
+    if model.follow is not None:
+        offset_hz = offsets_hz[model.tones.index(model.follow)]
+        levels_dbm = scope.levels_dbm(model.follow, [hz + offset_hz for hz in grid_hz])
     return Capture(
         waves=waves,
         tones=model.tones,
-        offsets_hz=tuple(_offset(tone, model, scope) for tone in model.tones),
-        frequencies_hz=_grid(model, scope),
+        offsets_hz=offsets_hz,
+        frequencies_hz=grid_hz,
         if_bandwidth_hz=scope.if_bandwidth_hz,
         averages=scope.averages,
         follow=model.follow is not None,
+        levels_dbm=levels_dbm,
     )
 
 
@@ -111,9 +119,9 @@ def _offset(tone: str, model: ReadModel, scope: StepScope) -> float:
     reference = _reference(model)
     if tone == reference:
         return 0.0
-    if model.over is not None and model.follow is None:
+    if model.over is not None and tone not in (model.follow, IMAGE):
         raise InputError(
-            f"the receiver sweeps and the {tone} would stand still. Write `follow: {PUMP}`, or sweep in the recipe."
+            f"the receiver sweeps and the {tone} would stand still. Write `follow: {tone}`, or sweep in the recipe."
         )
     source = PUMP if tone == IMAGE else tone
     distance_hz = round(_frequency(source, scope) - _frequency(reference, scope), OFFSET_DIGITS)

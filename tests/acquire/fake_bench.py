@@ -134,6 +134,7 @@ class FakeSource(FakeInstrument):
     def load_list(self, frequencies_hz: Sequence[float], levels_dbm: Sequence[float]) -> None:
         if self.signal in self.bench.rf:
             self.bench.harm.append(f"{self.signal} got a list with RF on")
+        assert len(frequencies_hz) == len(levels_dbm)
         self.session.say(f"list of {len(frequencies_hz)} from {frequencies_hz[0]:g} at {levels_dbm[0]:g}")
 
     def leave_list(self) -> None:

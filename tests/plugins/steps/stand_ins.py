@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 from benchrun.errors import InputError, InstrumentError
@@ -26,6 +26,11 @@ class Scope:
 
     def value(self, text: str | float, target: str) -> float:
         return parse(text, KINDS[target.rpartition(".")[2]])
+
+    def levels_dbm(self, signal: str, frequencies_hz: Sequence[float]) -> tuple[float, ...]:
+        """One level for all frequencies, less 1 dB for each GHz above the first."""
+        level_dbm = self.conditions[f"{signal}.level"]
+        return tuple(level_dbm - (hz - frequencies_hz[0]) * 1e-9 for hz in frequencies_hz)
 
     def text(self, text: str) -> str:
         return re.sub(r"\{(.*?)\}", lambda found: self.words[found[1]], text)

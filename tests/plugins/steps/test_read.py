@@ -71,16 +71,18 @@ def test_the_receivers_own_sweep_needs_no_frequency_in_force() -> None:
 def test_the_pump_follows_the_receivers_sweep_at_the_offset_in_force() -> None:
     over = {"frequency": {"from": "2.2 GHz", "to": "2.4 GHz", "points": 3}}
     asked = {"name": "hot", "tones": ["probe", "pump", "image"], "over": over, "follow": "pump"}
-    found = action(asked, conditions=BOTH)
+    found = action(asked, conditions={**BOTH, "pump.level": -3.0})
     assert found.capture is not None
     assert found.capture.follow
     assert found.capture.offsets_hz == (0.0, -7e6, -14e6)
+    assert found.capture.levels_dbm == pytest.approx((-3.0, -3.1, -3.2))
 
 
-def test_a_pump_that_would_stand_still_is_refused() -> None:
+@pytest.mark.parametrize("follow", [{}, {"follow": "probe"}])
+def test_a_pump_that_would_stand_still_is_refused(follow: dict[str, str]) -> None:
     over = {"frequency": {"from": "2.2 GHz", "to": "2.4 GHz", "points": 3}}
-    with pytest.raises(InputError, match="follow: pump"):
-        action({"name": "hot", "tones": ["probe", "pump"], "over": over}, conditions=BOTH)
+    with pytest.raises(InputError, match="Write `follow: pump`"):
+        action({"name": "hot", "tones": ["probe", "pump"], "over": over, **follow}, conditions=BOTH)
 
 
 @pytest.mark.parametrize(
