@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from benchrun.bench import Bench
 from benchrun.contract.actions import Action, ProcedureAction, ReadAction, SetAction, SettleAction
@@ -47,6 +47,10 @@ class Timing:
     """A procedure that does not say how long it takes."""
     lowering_s: float = 0.5
     """Making RF and drain safe before the operator is asked."""
+    spare_s: float = 0.001
+    """What a reading starts later than it could, so that it is never late."""
+    spare_db: float = 0.5
+    """How much more a level may rise than in the round that was timed, in steps of the ramp."""
 
 
 class ActionTimes:
@@ -55,19 +59,21 @@ class ActionTimes:
     def __init__(self, bench: Bench, timing: Timing, steps: Mapping[str, StepSpec]) -> None:
         self._bench, self._timing, self._steps = bench, timing, steps
         self._on: frozenset[str] = frozenset()
-        self._capture: Capture | None = None
+        self._set_up: Capture | None = None
         self._levels: dict[str, float] = {}
+        self._biased = False
         self._coherent = bench.coherent
+        self._drains = [name for name, bias in bench.bias.items() if bias.released_below is not None]
 
     def before_ns(self, action: Action) -> int:
         """Return the time from the action's beginning until its reading starts: RF, receiver and reference."""
         if not isinstance(action, ReadAction):
             return 0
         messages = self._switch(action.signals) + len(action.signals)
-        if action.capture is not None and action.capture != self._capture:
+        if action.capture is not None and _but_for_its_point(action.capture) != self._set_up:
             messages += 1
-            self._capture = action.capture
-        return round(messages * self._timing.message_s * NS)
+            self._set_up = _but_for_its_point(action.capture)
+        return round((messages * self._timing.message_s + self._timing.spare_s) * NS)
 
     def after_ns(self, action: Action) -> int:
         """Return the rest of the action's time."""
@@ -77,6 +83,7 @@ class ActionTimes:
             return round(sum(self._set_s(name, value) for name, value in self._with_blanking(action)) * NS)
         if isinstance(action, SettleAction):
             return round((self._switch(action.signals) * self._timing.message_s + action.duration_s) * NS)
+        self._biased = isinstance(action, ProcedureAction)
         if isinstance(action, ProcedureAction):
             return round((self._dark_s() + self._procedure_s(action)) * NS)
         return round((self._dark_s() + self._timing.operator_s + self._timing.lowering_s) * NS)
@@ -84,9 +91,13 @@ class ActionTimes:
     def _switch(self, signals: Sequence[str]) -> int:
         """Return how many messages it takes to have exactly these signals on."""
         wanted = frozenset(signals)
-        messages = len(wanted ^ self._on)
+        messages = len(self._on - wanted) + sum(self._switching_on(name) for name in wanted - self._on)
         self._on = wanted
         return messages
+
+    def _switching_on(self, signal: str) -> int:
+        """Return how many messages switch a signal on: a source's frequency and level are read back before."""
+        return 2 if self._bench.role(self._bench.signals[signal].instrument) == "signal-source" else 1
 
     def _dark_s(self) -> float:
         return self._switch(()) * self._timing.message_s
@@ -95,7 +106,7 @@ class ActionTimes:
         for name, value in action.values:
             signal, _, quantity = name.partition(".")
             if quantity == "frequency" and signal in self._on:
-                yield "", 2.0
+                yield "", 1.0 + self._switching_on(signal)
             yield name, value
 
     def _set_s(self, name: str, value: float) -> float:
@@ -104,22 +115,24 @@ class ActionTimes:
         if not name:
             return value * timing.message_s
         if signal in self._bench.signals:
-            count = self._rises(name, value, signal) if quantity == "level" else 1
-            return count * (timing.message_s + timing.source_s)
+            return self._level_s(name, value, signal) if quantity == "level" else timing.message_s + timing.source_s
         return timing.message_s + (timing.output_s if signal in self._bench.bias else 0.0)
 
-    def _rises(self, name: str, level_dbm: float, signal: str) -> int:
-        """Return in how many steps a level gets there; one more message where it is not known from where."""
-        ramp_db = self._bench.instruments[self._bench.signals[signal].instrument].ramp
-        before = self._levels.get(name)
+    def _level_s(self, name: str, level_dbm: float, signal: str) -> float:
+        """Return how long a level takes: it rises by the ramp, the first time from what is asked for."""
+        instrument, timing = self._bench.instruments[self._bench.signals[signal].instrument], self._timing
+        port = instrument.source_port
+        first = self._levels.get(name) is None
+        before = self._levels.get(name, level_dbm if port is None else port.power_up)
         self._levels[name] = level_dbm
-        if before is None or ramp_db is None:
-            return 2
-        return max(1, math.ceil((level_dbm - before) / ramp_db - 1e-9))
+        rise_db = level_dbm - before + timing.spare_db
+        steps = 1 if instrument.ramp is None or level_dbm <= before else math.ceil(rise_db / instrument.ramp)
+        return first * timing.message_s + steps * (timing.message_s + timing.source_s)
 
     def _reading_s(self, action: ReadAction) -> float:
-        scalars_s = sum(self._scalar_s(name) for name in action.scalars)
-        return scalars_s if action.capture is None else scalars_s + self._sweep_s(action.capture)
+        found_s = sum(self._scalar_s(name) for name in action.scalars)
+        found_s += self._timing.message_s * len(self._drains) * self._biased
+        return found_s if action.capture is None else found_s + self._sweep_s(action.capture)
 
     def _sweep_s(self, capture: Capture) -> float:
         timing = self._timing
@@ -138,6 +151,11 @@ class ActionTimes:
         spec = self._steps.get(action.step)
         known = spec.duration_s if spec is not None else None
         return self._timing.procedure_s if known is None else known(action.parameters)
+
+
+def _but_for_its_point(capture: Capture) -> Capture:
+    """Return what the receiver is set up for beside its one frequency, which is set with the source's."""
+    return replace(capture, frequencies_hz=(0.0,)) if len(capture.frequencies_hz) == 1 else capture
 
 
 # The timetable: each list of the program with the times of its steps. A sweep has two: for its first round, where much

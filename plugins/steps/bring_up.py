@@ -21,10 +21,10 @@ from .quantity import Current, Voltage, Wait
 
 KEY = "bring-up"
 #: Modelled time of one step of a voltage with its look at the current (s), and of the trips and outputs together.
-STEP_S = 0.012 + PAUSE_S
+STEP_S = 0.010 + PAUSE_S
 START_S = 0.1
-#: How many steps a search for the quiescent current is expected to take.
-USUAL_STEPS = 6
+#: How far a gate usually travels from pinch-off (V), and how many steps a search for the quiescent current takes.
+USUAL_TRAVEL_V, USUAL_STEPS = 3.0, 6
 
 
 class BringUpModel(Strict):
@@ -96,7 +96,7 @@ def _report(bias: DeviceBias, access: BenchAccess) -> Mapping[str, float]:
 def duration_s(parameters: Mapping[str, Any]) -> float:
     """Return the time (s) that bringing up is expected to take."""
     drain_steps = len(steps(0.0, float(parameters["drain_v"]), DRAIN_STEP_V))
-    gate_steps = len(steps(float(parameters.get("gate_low_v") or -5.0), float(parameters["gate_v"]), GATE_STEP_V))
+    gate_steps = len(steps(0.0, USUAL_TRAVEL_V, GATE_STEP_V))
     searched = USUAL_STEPS if parameters.get("quiescent_a") is not None else 0
     return START_S + STEP_S * (drain_steps + gate_steps + searched) + float(parameters.get("soak_s") or 0.0)
 

@@ -73,7 +73,7 @@ def _sweep(draw: st.DrawFn, around: tuple[str, ...], indent: int) -> str:
     space = " " * indent
     inside = draw(_body((*around, name), indent + 4))
     if name.startswith("f"):
-        values = ", ".join(f"{2012 + 20 * value} MHz" for value in draw(_distinct(0, 15)))
+        values = ", ".join(f"{2012 + 400 * number + 20 * value} MHz" for value in draw(_distinct(0, 15)))
         inside = f'{space}    - set: {{probe.frequency: "{{{name}}}"}}\n{inside}'
     elif name == "standard":
         values = ", ".join(draw(st.lists(st.sampled_from(("open", "short", "match")), min_size=1, unique=True)))
@@ -81,7 +81,8 @@ def _sweep(draw: st.DrawFn, around: tuple[str, ...], indent: int) -> str:
     else:
         unit, (low, high) = SETTABLE[name]
         values = ", ".join(f"{value} {unit}" for value in draw(_distinct(low, high)))
-    return f"{space}- sweep: {{{name}: [{values}]}}\n{space}  do:\n{inside}{space}    - {draw(st.sampled_from(READS))}\n"
+    last = draw(st.sampled_from(READS))
+    return f"{space}- sweep: {{{name}: [{values}]}}\n{space}  do:\n{inside}{space}    - {last}\n"
 
 
 @st.composite

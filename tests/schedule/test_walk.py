@@ -117,7 +117,8 @@ def test_settling_has_on_what_the_next_reading_in_the_same_list_has_on() -> None
 """)
     waits = [p.action for p in schedule.walk() if isinstance(p.action, SettleAction)]
     assert waits[0] == SettleAction(1.0, ())
-    assert waits[1:4] == [SettleAction(2.0, ("pump", "probe")), SettleAction(3.0, ("pump", "probe")), SettleAction(4.0, ())]
+    both = ("pump", "probe")
+    assert waits[1:4] == [SettleAction(2.0, both), SettleAction(3.0, both), SettleAction(4.0, ())]
 
 
 def test_after_the_last_reading_only_the_rest_is_left() -> None:

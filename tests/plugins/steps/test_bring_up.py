@@ -151,12 +151,13 @@ def test_a_soak_is_waited_for_and_the_current_looked_at_again() -> None:
     assert 600.0 < bring_up.duration_s(asked) < 603.0
 
 
-def test_the_modelled_time_is_near_the_time_it_takes() -> None:
+def test_the_modelled_time_is_enough_and_not_far_off() -> None:
     bench = DeviceOnSupply()
     asked = parameters()
     bring_up.execute(asked, bench)
-    exchanges_s = 0.005 * sum(step[0] == "read" for step in bench.log) + 0.002 * len(bench.log)
-    assert bring_up.duration_s(asked) == pytest.approx(bench.clock.slept_s + exchanges_s, rel=0.3)
+    exchanges_s = 0.005 * sum(step[0] == "read" for step in bench.log) + 0.001 * len(bench.log)
+    took_s = bench.clock.slept_s + exchanges_s
+    assert took_s < bring_up.duration_s(asked) < 2.0 * took_s
 
 
 @pytest.mark.parametrize(
