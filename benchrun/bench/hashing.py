@@ -59,6 +59,9 @@ def part_summaries(bench: Bench, plane: str) -> dict[str, str]:
     return found
 
 
+#: What does not change what a part does to a wave; a Touchstone file counts by what it says, not by its name.
+_BESIDE: dict[str, Any] = {"linear": True, "damage": True, "floor": True, "loss": {"file"}, "gain": {"file"}}
+
+
 def _plain(model: BaseModel | None) -> Any:
-    # A touchstone file counts by what it says, not by its name.
-    return model.model_dump(mode="json", by_alias=True, exclude={"loss": {"file"}, "gain": {"file"}}) if model else None
+    return model.model_dump(mode="json", by_alias=True, exclude=_BESIDE) if model else None

@@ -164,6 +164,8 @@ def test_a_calibration_depends_on_what_lies_before_the_receivers(bench: Make, ch
         ("192.0.2.2::INSTR", "192.0.2.9::INSTR"),
         ("loss: 20 dB", "loss: 20.0 dB"),
         ("gain: 14.5 dB", "gain: 10 dB"),
+        ("loss: 0.3 dB, damage: 47 dBm", "loss: 0.3 dB, damage: 45 dBm"),
+        ("receiver: {linear: -3 dBm, damage: 15 dBm", "receiver: {linear: -6 dBm, damage: 12 dBm, floor: -110 dBm"),
     ],
 )
 def test_a_calibration_does_not_depend_on_the_rest(bench: Make, change: tuple[str, str]) -> None:
