@@ -1,4 +1,4 @@
-"""What the tests of the whole way stand on: the recipes in a folder of their own, smaller where that will do, silence."""
+"""What the tests of the whole way stand on: the recipes in a folder of their own, small where that will do, silence."""
 
 from __future__ import annotations
 

@@ -214,7 +214,7 @@ def test_the_calibration_recipes_leave_their_documents_and_no_touchstone(demo: W
 
 
 def test_the_calibration_finds_the_bench_that_it_calibrates(demo: Way) -> None:
-    """R1's coupler has a raw directivity of 37 dB behind adapters of -36 dB; residuals say that five standards agree."""
+    """R1's coupler has a raw directivity of 37 dB behind adapters of -36 dB; the residuals say that standards agree."""
     with (demo.calibration / "summary.csv").open(encoding="utf-8", newline="") as file:
         rows = list(csv.DictReader(file))
     assert np.array_equal([float(row["frequency_hz"]) for row in rows], np.linspace(2.18e9, 2.4e9, 89))

@@ -1,4 +1,4 @@
-"""The same readings corrected again, next year and elsewhere: from the archive alone, with one calibration or another."""
+"""The same readings corrected again, next year and elsewhere: from the archive alone, with this calibration or that."""
 
 from __future__ import annotations
 
