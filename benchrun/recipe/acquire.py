@@ -9,7 +9,7 @@ from benchrun.bench import Bench
 from benchrun.contract.hooks import StepSpec
 from benchrun.contract.kinds import Kind, Settable
 from benchrun.errors import Problem, QuantityError
-from benchrun.recipe.axis import Axis, AxisProblemsError, read_axis
+from benchrun.recipe.axis import Axis, read_axis
 from benchrun.recipe.messages import nearest_first, no_such
 from benchrun.recipe.model import Place, Step, Sweep
 from benchrun.recipe.references import parse_sum, references_in
@@ -143,12 +143,11 @@ class AcquireReader:
             self._tell(path, f"'{name}' is swept around this already.", at_key=True)
         elif self._settables is not None and settable is None and not _refers_to(name, do):
             self._tell(path, self._not_sweepable(name), at_key=True)
-        try:
-            return read_axis(name, given, settable.kind if settable else None, settable=settable is not None)
-        except AxisProblemsError as error:
-            for within, message in error.found:
-                self._tell((*path, *within), message)
-        return None
+        kind = settable.kind if settable else None
+        axis, wrong = read_axis(name, given, kind, settable=settable is not None)
+        for within, message in wrong:
+            self._tell((*path, *within), message)
+        return axis
 
     def _not_sweepable(self, name: str) -> str:
         message = self._cannot_be_set(name)

@@ -72,35 +72,46 @@ class Axis:
         return {"name": self.name, "kind": self.kind, "values": list(values)}
 
 
-class AxisProblemsError(QuantityError):
-    """The values of a sweep have mistakes: each with its way from the sweep's name, and its message."""
-
-    def __init__(self, found: Sequence[tuple[Path_, str]]) -> None:
-        self.found = tuple(found)
-        super().__init__("; ".join(message for _, message in found))
+#: A mistake in the values of a sweep: its way from the sweep's name, and what is wrong.
+Wrong = tuple[Path_, str]
 
 
-def read_axis(name: str, given: Any, kind: Kind | None, *, settable: bool) -> Axis:
-    """Read the values of a sweep over `name`; where `kind` is None it is found from their units.
+class _WrongError(Exception):
+    """Mistakes on their way to read_axis(), which returns them."""
 
-    Raises AxisProblemsError with every mistake.
+    def __init__(self, found: Sequence[Wrong]) -> None:
+        super().__init__(found)
+        self.found = list(found)
+
+
+def read_axis(name: str, given: Any, kind: Kind | None, *, settable: bool) -> tuple[Axis | None, list[Wrong]]:
+    """Read the values of a sweep over `name`: (axis, []) or (None, every mistake).
+
+    Where `kind` is None it is found from the values' units.
     """
+    try:
+        return Axis(name, *_values(given, kind), settable), []
+    except _WrongError as error:
+        return None, error.found
+
+
+def _values(given: Any, kind: Kind | None) -> tuple[Kind, Sequence[float] | Sequence[str]]:
     if isinstance(given, Mapping):
-        return Axis(*_range(name, given, kind), settable)
+        return _range(given, kind)
     if not isinstance(given, list) or not given:
-        raise AxisProblemsError([((), f"a sweep goes over {_SHAPES}")])
+        raise _WrongError([((), f"a sweep goes over {_SHAPES}")])
     words = [value for value in given if isinstance(value, str) and _WORD.fullmatch(value)]
     if kind is None and len(words) == len(given):
-        return Axis(name, "text", tuple(words), settable)
+        return "text", tuple(words)
     if kind is None and words:
-        raise AxisProblemsError([((), "a sweep goes over words or over quantities, not over both")])
+        raise _WrongError([((), "a sweep goes over words or over quantities, not over both")])
     found, values = _read_all(dict(enumerate(given)), kind)
-    return Axis(name, found, tuple(values.values()), settable)
+    return found, tuple(values.values())
 
 
 def _read_all(given: Mapping[Any, Any], kind: Kind | None) -> tuple[Kind, dict[Any, float]]:
     """Read several quantities of one kind, by key; the kind is that of the first one that has one."""
-    problems: list[tuple[Path_, str]] = []
+    problems: list[Wrong] = []
     kinds: dict[Any, Kind] = {}
     for key, text in given.items():
         try:
@@ -116,31 +127,31 @@ def _read_all(given: Mapping[Any, Any], kind: Kind | None) -> tuple[Kind, dict[A
         except QuantityError as error:
             problems.append(((key,), str(error)))
     if problems:
-        raise AxisProblemsError(problems)
+        raise _WrongError(problems)
     return found, values
 
 
-def _range(name: str, given: Mapping[str, Any], kind: Kind | None) -> tuple[str, Kind, Evenly]:
+def _range(given: Mapping[str, Any], kind: Kind | None) -> tuple[Kind, Evenly]:
     if set(given) not in ({"from", "to", "step"}, {"from", "to", "points"}):
-        raise AxisProblemsError([((), f"a sweep goes over {_SHAPES}; here stands {', '.join(given) or 'nothing'}")])
-    problems: list[tuple[Path_, str]] = []
+        raise _WrongError([((), f"a sweep goes over {_SHAPES}; here stands {', '.join(given) or 'nothing'}")])
+    problems: list[Wrong] = []
     ends = _gather(problems, lambda: _read_all({"from": given["from"], "to": given["to"]}, kind))
     count = _gather(problems, lambda: _points(given["points"])) if "points" in given else None
     if ends is not None and "step" in given:
         count = _gather(problems, lambda: _steps(given, *ends))
     if problems or ends is None or count is None:
-        raise AxisProblemsError(problems)
+        raise _WrongError(problems)
     found, values = ends
     if count == 1 and values["from"] != values["to"]:
-        raise AxisProblemsError([(("points",), "one point cannot reach from one value to another; use a list")])
-    return name, found, Evenly(values["from"], values["to"], count)
+        raise _WrongError([(("points",), "one point cannot reach from one value to another; use a list")])
+    return found, Evenly(values["from"], values["to"], count)
 
 
-def _gather(problems: list[tuple[Path_, str]], read: Callable[[], Got]) -> Got | None:
+def _gather(problems: list[Wrong], read: Callable[[], Got]) -> Got | None:
     """Return what is read; None where it has mistakes, which are gathered."""
     try:
         return read()
-    except AxisProblemsError as error:
+    except _WrongError as error:
         problems.extend(error.found)
     return None
 
@@ -149,9 +160,9 @@ def _points(given: Any) -> int:
     try:
         count = int(parse(given, "count"))
     except QuantityError as error:
-        raise AxisProblemsError([(("points",), str(error))]) from None
+        raise _WrongError([(("points",), str(error))]) from None
     if not 1 <= count <= MOST_VALUES:
-        raise AxisProblemsError([(("points",), f"{count} points; a sweep has 1 to {MOST_VALUES}")])
+        raise _WrongError([(("points",), f"{count} points; a sweep has 1 to {MOST_VALUES}")])
     return count
 
 
@@ -161,15 +172,15 @@ def _steps(given: Mapping[str, Any], kind: Kind, ends: Mapping[str, float]) -> i
     try:
         step = parse(given["step"], step_kind)
     except QuantityError as error:
-        raise AxisProblemsError([(("step",), str(error))]) from None
+        raise _WrongError([(("step",), str(error))]) from None
     if step <= 0.0:
-        raise AxisProblemsError([(("step",), f"'{given['step']}': a step is written without a sign, and is not 0")])
+        raise _WrongError([(("step",), f"'{given['step']}': a step is written without a sign, and is not 0")])
     span = ends["to"] - ends["from"]
     steps = abs(span) / step
     if steps >= MOST_VALUES:
-        raise AxisProblemsError([(("step",), f"{steps + 1:.0f} points; a sweep has 1 to {MOST_VALUES}")])
+        raise _WrongError([(("step",), f"{steps + 1:.0f} points; a sweep has 1 to {MOST_VALUES}")])
     if abs(steps - round(steps)) > STEP_TOLERANCE:
         last = show(round(ends["from"] + (step if span > 0 else -step) * int(steps), 9), kind)
         message = f"steps of {given['step']} from {given['from']} reach {last}, not {given['to']}: change one of them"
-        raise AxisProblemsError([(("step",), message)])
+        raise _WrongError([(("step",), message)])
     return round(steps) + 1
