@@ -76,8 +76,8 @@ def test_reads_its_own_example(kind: str) -> None:
         (
             "1,000 MHz",
             "frequency",
-            "'1,000 MHz' could be 1.000 MHz or 1000 MHz: the decimal mark is a point, and there are no thousands marks. "
-            "Write which",
+            "'1,000 MHz' could be 1.000 MHz or 1000 MHz: the decimal mark is a point, and there are no thousands "
+            "marks. Write which",
         ),
         (
             "1,234.5 MHz",
