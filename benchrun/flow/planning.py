@@ -68,4 +68,4 @@ def plan_levels(recipe_path: Path, bench: Path | None = None) -> LevelReport:
     inputs = load_inputs(recipe_path, bench)
     schedule = plan(inputs, {})
     table = check_levels(schedule, inputs.bench)
-    return LevelReport(table, len(schedule), schedule.axes_text, schedule.duration_s, schedule.prompts)
+    return LevelReport(table, len(schedule), schedule.axes_text, schedule.duration_s, schedule.prompts, table.notes)

@@ -77,7 +77,7 @@ def _different(columns: Sequence[npt.NDArray[np.int64]], count: int) -> Rows:
         mixed ^= mixed >> _HALF
     _, first, which = np.unique(mixed, return_index=True, return_inverse=True)
     if all(np.array_equal(column, column[first][which]) for column in columns):
-        return np.asarray(first)
+        return np.sort(first)
     return np.arange(count)
 
 

@@ -62,6 +62,8 @@ class WorstCases:
 
     def __init__(self) -> None:
         self.found: dict[tuple[str, str, LimitKind | None], Worst] = {}
+        self.lowest: dict[tuple[str, str], float] = {}
+        """The lowest level of each tone at what reads it linearly."""
 
     def take(self, figures: Iterator[Figure], where: Callable[[int], str]) -> None:
         """Take figures over the same N conditions; `where` describes the n-th of them."""
@@ -80,6 +82,9 @@ class WorstCases:
             return
         n = int(np.nanargmax(figure.level_dbm))
         level = float(figure.level_dbm[n])
+        if figure.receiver and figure.key[1] == "linear":
+            lowest = float(np.nanmin(figure.level_dbm)), self.lowest.get((figure.receiver, figure.tone), np.inf)
+            self.lowest[figure.receiver, figure.tone] = min(lowest)
         key = (figure.plane, figure.tone, figure.key[1])
         if key not in self.found or level > self.found[key].level_dbm:
             self.found[key] = Worst(figure, level, lambda: where(n))

@@ -13,6 +13,7 @@ from benchrun.errors import LevelError
 from benchrun.plan.conditions import Where, conditions_of
 from benchrun.plan.figure import TOGETHER, TOLERANCE_DB, Figure, LimitKind, Worst, WorstCases
 from benchrun.plan.messages import advice, consequence
+from benchrun.plan.notes import notes_of
 from benchrun.plan.waves import BenchLevels
 from benchrun.schedule import Schedule
 from benchrun.schedule.program import ReadSite
@@ -44,6 +45,8 @@ class LevelTable:
 
     rows: tuple[LevelRow, ...]
     conditions: int
+    notes: tuple[str, ...] = ()
+    """What else the levels tell beforehand."""
 
     @property
     def refused(self) -> bool:
@@ -78,7 +81,20 @@ def check_levels(schedule: Schedule, bench: Bench) -> LevelTable:
                 worst.take(levels.power_up_figures(conditions), where)
     found = [_row(bench, case) for case in worst.found.values()]
     ranked = sorted(_nearest(found), key=lambda row: (row.margin_db or 0.0) if row.refused else math.inf)
-    return LevelTable(tuple(ranked), len(schedule))
+    return LevelTable(tuple(ranked), len(schedule), tuple(_notes(bench, schedule, worst)))
+
+
+def _notes(bench: Bench, schedule: Schedule, worst: WorstCases) -> Iterator[str]:
+    """Yield the notes: a receiver samples the signal of its own coupler's way; the other ones are beside it."""
+    lowest, highest = dict[str, float](), dict[str, float]()
+    for name, receiver in bench.receivers.items():
+        for signal, described in bench.signals.items():
+            key = (f"receiver {name}", signal, "linear")
+            if receiver.coupler in described.path and (name, signal) in worst.lowest:
+                lowest[name] = worst.lowest[name, signal]
+            elif receiver.coupler not in described.path and key in worst.found:
+                highest[name] = worst.found[key].level_dbm
+    return notes_of(bench, schedule.bandwidth_hz, lowest, highest)
 
 
 def _wanted(figures: Iterator[Figure], read: ReadSite | None) -> Iterator[Figure]:
@@ -94,6 +110,9 @@ def _row(bench: Bench, case: Worst) -> LevelRow:
     figure, limit = case.figure, case.figure.limit
     margin = None if limit is None else limit.level_dbm - case.level_dbm
     must_hold = limit is not None and (limit.kind != "linear" or bool(figure.receiver))
+    refused = must_hold and margin is not None and margin < -TOLERANCE_DB
+    worst = case.where()
+    told = _because(figure, worst, -(margin or 0.0)) if refused else _remark(bench, figure, case.level_dbm)
     return LevelRow(
         plane=figure.plane,
         tone=figure.tone,
@@ -101,10 +120,20 @@ def _row(bench: Bench, case: Worst) -> LevelRow:
         limit_dbm=None if limit is None else limit.level_dbm,
         limit_kind=None if limit is None else limit.kind,
         margin_db=margin,
-        note="; ".join(note for note in (_compression(bench, figure, case.level_dbm), figure.note) if note),
-        worst=case.where(),
-        refused=must_hold and margin is not None and margin < -TOLERANCE_DB,
+        note=told,
+        worst=worst,
+        refused=refused,
     )
+
+
+def _because(figure: Figure, worst: str, over_db: float) -> str:
+    """Return at which condition a level is over its limit, what would happen, and what to change."""
+    happens = consequence(figure.plane, figure.key[1])
+    return f"at {worst}. {happens} {advice(figure.plane, figure.tone, over_db)}"
+
+
+def _remark(bench: Bench, figure: Figure, level_dbm: float) -> str:
+    return "; ".join(note for note in (_compression(bench, figure, level_dbm), figure.note) if note)
 
 
 def _compression(bench: Bench, figure: Figure, level_dbm: float) -> str:
@@ -124,7 +153,7 @@ def _compression(bench: Bench, figure: Figure, level_dbm: float) -> str:
 def _nearest(rows: Sequence[LevelRow]) -> list[LevelRow]:
     """Keep what is refused; of one tone at one plane the nearest limit, and no tone that is lost in others.
 
-    Tones together are kept at receivers only.
+    Tones together are kept at receivers, and where they are over a limit that neither of them is over.
     """
     nearest: dict[tuple[str, str], LevelRow] = {}
     highest: dict[str, float] = {}
@@ -133,25 +162,25 @@ def _nearest(rows: Sequence[LevelRow]) -> list[LevelRow]:
         if before is None or _margin(row) < _margin(before):
             nearest[row.plane, row.tone] = row
         highest[row.plane] = max(row.level_dbm, highest.get(row.plane, -math.inf))
-    return [
-        row for row in rows if row.refused or (row is nearest[row.plane, row.tone] and _tells(row, highest[row.plane]))
-    ]
+    alone = {(row.plane, row.limit_kind) for row in rows if row.refused and row.tone != TOGETHER}
+    return [row for row in rows if _kept(row, row is nearest[row.plane, row.tone], highest[row.plane], alone)]
+
+
+def _kept(row: LevelRow, nearest: bool, highest_dbm: float, alone: set[tuple[str, LimitKind | None]]) -> bool:
+    if row.refused:
+        return row.tone != TOGETHER or (row.plane, row.limit_kind) not in alone
+    if row.plane.startswith("receiver"):
+        return nearest
+    return nearest and row.tone != TOGETHER and row.level_dbm > highest_dbm - LOST_DB
 
 
 def _margin(row: LevelRow) -> float:
     return math.inf if row.margin_db is None else row.margin_db
 
 
-def _tells(row: LevelRow, highest_dbm: float) -> bool:
-    if row.plane.startswith("receiver"):
-        return True
-    return row.tone != TOGETHER and row.level_dbm > highest_dbm - LOST_DB
-
-
 def _told(row: LevelRow) -> str:
     over_db = -(row.margin_db or 0.0)
     return (
         f"{row.plane}: {row.tone} {row.level_dbm:+.1f} dBm, {over_db:.1f} dB over the {row.limit_kind} limit of "
-        f"{row.limit_dbm:+.1f} dBm, at {row.worst}. "
-        f"{consequence(row.plane, row.limit_kind)} {advice(row.plane, row.tone, over_db)}"
+        f"{row.limit_dbm:+.1f} dBm, {row.note}"
     )

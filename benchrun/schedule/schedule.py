@@ -84,6 +84,12 @@ class Schedule:
         return self._around.kinds
 
     @property
+    def bandwidth_hz(self) -> float:
+        """Noise bandwidth of a reading: the recipe's IF bandwidth over its averages."""
+        receiver = self._around.recipe.receiver
+        return receiver.if_bandwidth / receiver.averages
+
+    @property
     def places(self) -> tuple[tuple[ReadSite, int], ...]:
         """The places that read, each with the index of its first reading."""
         return tuple((site.read, site.offset) for site in self._sites)
