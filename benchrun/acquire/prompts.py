@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 import sys
 import textwrap
 from collections.abc import Callable
@@ -65,8 +66,13 @@ class TerminalPrompter:
         print(shown(prompt), file=self._out)
         _forget_typed(self._in)
         while True:
-            print(f"{prompt.confirmed}  {_QUESTION}", end="", file=self._out, flush=True)
-            line = self._in.readline()
+            print(_folded([prompt.confirmed], _width()), file=self._out)
+            print(_QUESTION, end="", file=self._out, flush=True)
+            try:
+                line = self._in.readline()
+            except KeyboardInterrupt:
+                print(file=self._out)  # what is said next begins on a line of its own
+                raise
             if not line:
                 return "stop"
             answer = _ANSWERS.get(line.strip().lower())
@@ -113,8 +119,16 @@ def require_somebody(prompts: int, prompter: Prompter) -> None:
 
 def shown(prompt: Prompt) -> str:
     """Return the text and cautions of a prompt, folded."""
-    lines = [prompt.text, *prompt.cautions]
-    return "\n".join(part for line in lines for part in textwrap.wrap(line, WIDTH) or [""])
+    return _folded([prompt.text, *prompt.cautions], _width())
+
+
+def _folded(lines: list[str], width: int) -> str:
+    return "\n".join(part for line in lines for part in textwrap.wrap(line, width) or [""])
+
+
+def _width() -> int:
+    """Return how wide text may be: the terminal, and never wider than is good to read."""
+    return min(WIDTH, shutil.get_terminal_size((WIDTH, 24)).columns)
 
 
 def _forget_typed(stream: TextIO) -> None:

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from benchrun.acquire.clock import RealClock
 from benchrun.drivers.registry import Registry, load_registry
+from benchrun.errors import InputError
 from benchrun.yaml_source import json_schema
 
 if TYPE_CHECKING:
@@ -27,12 +28,19 @@ def _from(registry: Registry, name: str) -> str:
 
 
 def identify(address: str, backend: str = "py") -> dict[str, Any]:
-    """Return who answers at a VISA address, which driver fits, and what it does not answer. Raises BenchError."""
+    """Return who answers at a VISA address, which driver fits, and what it does not answer.
+
+    Raises InputError for a text that is no address, BenchError.
+    """
     from dataclasses import asdict
 
     from benchrun.drivers.identify import identify as ask
+    from benchrun.visa.address import address_fault
     from benchrun.visa.session import Bus
 
+    fault = address_fault(address)
+    if fault:
+        raise InputError(fault)
     registry = load_registry()
     with Bus(backend) as bus:
         finding = ask(address, registry, bus, RealClock())

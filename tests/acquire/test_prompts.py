@@ -39,7 +39,8 @@ def test_everything_is_shown_before_the_question() -> None:
     assert text == (
         "Connect OPEN to the output plane (right-hand side of the coupler).\n"
         "Clean, gauge, torque to the connector's value.\n"
-        "RF off and drain off, read back at 21:14:02.  Enter to read, s to skip, q to stop > "
+        "RF off and drain off, read back at 21:14:02.\n"
+        "Enter to read, s to skip, q to stop > "
     )
 
 
@@ -119,3 +120,20 @@ def test_nobody_refuses() -> None:
     require_somebody(0, RefusingPrompter())
     with pytest.raises(StoppedError):
         RefusingPrompter().ask(PROMPT)
+
+
+def test_ctrl_c_at_the_question_leaves_its_line() -> None:
+    class Interrupted(io.StringIO):
+        def readline(self, size: int | None = -1, /) -> str:
+            raise KeyboardInterrupt
+
+    sink = io.StringIO()
+    with pytest.raises(KeyboardInterrupt):
+        TerminalPrompter(Interrupted(), sink).ask(PROMPT)
+    assert sink.getvalue().endswith("> \n")
+
+
+def test_the_text_fits_a_narrow_terminal(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("COLUMNS", "40")
+    _, text = asked("\n")
+    assert max(len(line) for line in text.splitlines()) <= 40
