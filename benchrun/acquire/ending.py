@@ -71,7 +71,7 @@ def log(around: Surroundings, outcome: Outcome, said: Iterable[Said], error: Bas
 
 def explained(error: BaseException | None, outcome: Outcome, around: Surroundings) -> BaseException:
     """Return the error to raise: one message that says what happened, how the bench was left, and what is safe."""
-    text = _message(outcome, around)
+    text = _message(outcome.cause or str(error or "the run came to its end"), outcome, around)
     if error is None or not outcome.safe.safe:
         return UnsafeError(text)
     if isinstance(error, KeyboardInterrupt):
@@ -81,12 +81,12 @@ def explained(error: BaseException | None, outcome: Outcome, around: Surrounding
     return error
 
 
-def _message(outcome: Outcome, around: Surroundings) -> str:
-    lines = [f"{time.strftime('%H:%M:%S')}  {(outcome.cause or 'the run came to its end').rstrip('.')}."]
+def _message(cause: str, outcome: Outcome, around: Surroundings) -> str:
+    lines = [f"{time.strftime('%H:%M:%S')}  {cause.rstrip('.')}."]
     safe = outcome.safe
     if safe.safe:
         lines.append(f"Made safe: {safe.text}.")
     else:
-        lines += [f"{safe.text}.", *(f"  {reason}" for reason in safe.reasons if reason not in outcome.cause)]
+        lines += [f"{safe.text}.", *(f"  {reason}" for reason in safe.reasons if reason not in cause)]
     lines.append(f"{around.writer.readings} of {outcome.planned} readings are safe in {around.writer.path}.")
     return "\n".join(lines)

@@ -240,7 +240,7 @@ def _on_disk(path: Path, what: str, safe: int) -> Iterator[None]:
     except apsw.Error as error:
         raise DiskError(
             f"{path}: could not be written ({what}): {_reason(error)}. {safe} readings are safe in it. "
-            "Make room or mend the disk, then run the recipe again into a new folder"
+            "Make room or mend the disk"
         ) from error
 
 

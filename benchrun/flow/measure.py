@@ -15,7 +15,7 @@ from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software_versions
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
-from benchrun.errors import DiskError
+from benchrun.errors import DiskError, UnsafeError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
@@ -99,19 +99,42 @@ def measure(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setti
 def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting, folder: Path) -> RunResult:
     _copy_files(inputs, folder)
     setting.listener.begin(inputs.recipe.title, len(schedule), setting.note)
-    writer = ArchiveWriter.create(folder, meta_of(inputs, schedule, setting))
+    writer = _begun(inputs, schedule, made, setting, folder)
     state: State = "failed"
     try:
-        state = _acquired(writer, inputs, schedule, made, setting).state
+        state = _acquired(writer, inputs, schedule, setting).state
     except BaseException as error:
         with suppress(DiskError):  # the first error is the one to be told
             _broken_off(writer, error)
         raise
     finally:
         setting.listener.end()
-    writer.close(state)
-    produced = produce(inputs, folder, known_of(made))
+    try:
+        writer.close(state)
+        produced = produce(inputs, folder, known_of(made))
+    except DiskError as error:
+        raise DiskError(f"{str(error).rstrip('.')}. Then `benchrun derive {folder}` makes the results.") from error
     return RunResult(folder, state, 0, rows_of(produced.results), produced.results.notes)
+
+
+def _begun(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting, folder: Path) -> ArchiveWriter:
+    """Return an archive that says where the run begins and what it uses. Raises DiskError, FolderError."""
+    try:
+        writer = ArchiveWriter.create(folder, meta_of(inputs, schedule, setting))
+        try:
+            begins = {"start_ns": setting.start_ns}
+            writer.log(Event("bench-time", "where this run begins in the bench's time", begins))
+            for one in made:
+                text = f"uses {one.kind} '{one.name}' of {one.folder.name}"
+                writer.log(Event("calibration", text, {"run": str(one.folder)}))
+            keep_used(writer, known_of(made), "")
+        except DiskError:
+            with suppress(DiskError):
+                writer.close("failed")
+            raise
+    except DiskError as error:
+        raise DiskError(f"{str(error).rstrip('.')}. Nothing was switched on.") from error
+    return writer
 
 
 def _broken_off(writer: ArchiveWriter, error: BaseException) -> None:
@@ -138,25 +161,34 @@ def _copy_files(inputs: Inputs, folder: Path) -> None:
         ) from error
 
 
-def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, made: list[Made], setting: Setting) -> Outcome:
+def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, setting: Setting) -> Outcome:
     """Open the bench and acquire. The bus is closed last, whatever happens."""
     from benchrun.acquire.runner import acquire
     from benchrun.drivers.open_bench import open_bench
     from benchrun.visa.session import Bus
 
-    writer.log(Event("bench-time", "where this run begins in the bench's time", {"start_ns": setting.start_ns}))
-    for one in made:
-        text = f"uses {one.kind} '{one.name}' of {one.folder.name}"
-        writer.log(Event("calibration", text, {"run": str(one.folder)}))
-    keep_used(writer, known_of(made), "")
     clock, steps = setting.clock, inputs.registry.steps
     with Bus(setting.visa) as bus:
         bench = open_bench(inputs.bench, inputs.registry, bus, clock, setting.addresses or None)
         try:
-            writer.update(identities=identities_of(bench))
+            _keep_identities(writer, bench, inputs, clock)
             return acquire(schedule, bench, inputs.bench, steps, writer, clock, setting.prompter, setting.listener)
         finally:
             bench.close()
+
+
+def _keep_identities(writer: ArchiveWriter, bench: OpenBench, inputs: Inputs, clock: Clock) -> None:
+    """Write down who answers. Raises DiskError, UnsafeError: the bench is made safe then, as it is by acquire later."""
+    from benchrun.acquire.outputs import outputs_of
+    from benchrun.acquire.safe_state import make_safe
+
+    try:
+        writer.update(identities=identities_of(bench))
+    except DiskError as error:
+        report = make_safe(bench, outputs_of(inputs.bench), clock)
+        made = f"Made safe: {report.text}" if report.safe else report.text
+        text = f"{str(error).rstrip('.')}.\n{made}."
+        raise (DiskError(text) if report.safe else UnsafeError(text)) from error
 
 
 def identities_of(bench: OpenBench) -> dict[str, dict[str, Any]]:
