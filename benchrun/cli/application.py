@@ -17,6 +17,7 @@ COMMANDS = (
     "show",
     "derive",
     "export",
+    "report",
     "calibrations",
     "simulate",
     "identify",

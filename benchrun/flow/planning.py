@@ -11,6 +11,7 @@ from benchrun.drivers.dialects import dialect_for
 from benchrun.errors import FileProblemsError
 from benchrun.flow.inputs import Inputs, load_inputs
 from benchrun.flow.result import LevelReport
+from benchrun.flow.subject import require_report
 from benchrun.recipe.entries import HotMatch
 from benchrun.schedule import Schedule, build_schedule
 
@@ -22,6 +23,7 @@ def plan(inputs: Inputs, known: Known) -> Schedule:
 
     Raises FileProblemsError for what only shows itself when values meet the bench.
     """
+    require_report(inputs)
     schedule = build_schedule(
         inputs.recipe, inputs.bench, inputs.registry.steps, drive_gain=_levelling(inputs, known), kit=inputs.kit
     )

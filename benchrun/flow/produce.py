@@ -22,8 +22,10 @@ from benchrun.flow.folders import require_run
 from benchrun.flow.inputs import Inputs, load_inputs
 from benchrun.flow.known import of_run, require_names
 from benchrun.flow.result import RunResult
+from benchrun.flow.subject import free_name, subject_of, wanted, write_page
 from benchrun.recipe.model import Entry
 from benchrun.save import save_results
+from benchrun.save.report import FILE_NAME, require_libraries
 
 USED = {"calibration": "used-calibration", "levelling": "used-levelling"}
 
@@ -41,24 +43,33 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
 
     Raises CalibrationError, DataSetError, FolderError, DiskError.
     """
+    if wanted(inputs):
+        require_libraries()
     with open_archive(run) as archive:
-        provenance = provenance_of(archive.meta, archive.digest())
-        readings = {name: list(archive.readings(name)) for name in archive.names}
-    results = derive(
-        [Step(entry.kind, values_of(entry.model)) for entry in inputs.recipe.derive],
-        readings,
-        facts_of(inputs.bench, inputs.kit),
-        known,
-        definitions_of(inputs.kit),
-        provenance,
-        inputs.kit.title if inputs.kit is not None else "",
-    )
+        results = derived(inputs, archive, known)
     folder = save_results(results, run, _kinds(inputs.recipe.save))
     with ArchiveWriter.append(run) as writer:
         for (kind, name), document in results.documents.items():
             writer.product(kind, name, document)
         keep_used(writer, known, folder.name)
+    if wanted(inputs):
+        with open_archive(run) as archive:
+            subject = subject_of(archive, inputs.bench, known, results)
+        write_page(subject, free_name(folder / FILE_NAME))
     return Produced(results, folder)
+
+
+def derived(inputs: Inputs, archive: ArchiveReader, known: Mapping[str, Calibration | Levelling]) -> Results:
+    """Return the results of an archive's readings; nothing is written. Raises CalibrationError, DataSetError."""
+    return derive(
+        [Step(entry.kind, values_of(entry.model)) for entry in inputs.recipe.derive],
+        {name: list(archive.readings(name)) for name in archive.names},
+        facts_of(inputs.bench, inputs.kit),
+        known,
+        definitions_of(inputs.kit),
+        provenance_of(archive.meta, archive.digest()),
+        inputs.kit.title if inputs.kit is not None else "",
+    )
 
 
 def keep_used(writer: ArchiveWriter, known: Mapping[str, Calibration | Levelling], result: str) -> None:
@@ -106,7 +117,7 @@ def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
     with open_archive(folder) as archive:
         if archive.count == 0:
             raise FolderError(f"{folder}: there is no reading in this run, so there is nothing to derive.")
-        meta, known = archive.meta, _used(archive)
+        meta, known = archive.meta, used(archive)
     with tempfile.TemporaryDirectory() as place:
         inputs = restored(meta, Path(place))
         require_names(calibrations, inputs.recipe.calibrations)
@@ -115,7 +126,8 @@ def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
     return RunResult(produced.folder, meta.state, 0, rows_of(produced.results), produced.results.notes)
 
 
-def _used(archive: ArchiveReader) -> dict[str, Calibration | Levelling]:
+def used(archive: ArchiveReader) -> dict[str, Calibration | Levelling]:
+    """Return the calibrations and levellings that a run's newest result was made with, by name."""
     known: dict[str, Calibration | Levelling] = {}
     for product in archive.products(USED["calibration"]):
         known[product.name] = Calibration.from_document(product.document["document"])

@@ -62,6 +62,10 @@ class SaveSummary(Strict):
     """Write summary.csv."""
 
 
+class SaveReport(Strict):
+    """Write report.html, which opens offline."""
+
+
 DERIVE: Mapping[str, type[BaseModel]] = {
     "correct": Correct,
     "one-port": OnePort,
@@ -69,6 +73,6 @@ DERIVE: Mapping[str, type[BaseModel]] = {
     "calibrate": Calibrate,
     "level": LevelChain,
 }
-SAVE: Mapping[str, type[BaseModel]] = {"touchstone": SaveTouchstone, "summary": SaveSummary}
+SAVE: Mapping[str, type[BaseModel]] = {"touchstone": SaveTouchstone, "summary": SaveSummary, "report": SaveReport}
 #: Fields of derive entries that name readings.
 OF_READINGS = ("readings", "standards", "power")
