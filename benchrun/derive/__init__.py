@@ -1,31 +1,71 @@
 """The derive room: from raw waves to corrected ones, and from these to what the device does. Pure numpy, no I/O."""
 
+from benchrun.derive.contributions import (
+    mismatch_limits,
+    mismatch_uncertainty,
+    noise_of_ratio,
+    reading_limits_db,
+    residual_error,
+)
 from benchrun.derive.one_path import OnePathTerms, Response, solve_one_path
 from benchrun.derive.one_port import ErrorTerms
+from benchrun.derive.one_port_uncertainty import reflection_spread, sensitivity, terms_spread
 from benchrun.derive.scattering import Scattering, Waves, flush_thru
 from benchrun.derive.switch_terms import add_switch_terms, from_excitations, read_switch_terms, remove_switch_terms
 from benchrun.derive.two_port import TwoPortTerms, WaveCorrection
 from benchrun.derive.two_port_lines import line_phases, solve_multiline, solve_trl
 from benchrun.derive.two_port_solve import solve_standards, solve_thru, solve_unknown_thru
+from benchrun.derive.uncertainty import (
+    Spread,
+    coverage_factor,
+    derivatives,
+    ellipse,
+    inside,
+    monte_carlo,
+    polar,
+    propagate,
+    real_errors,
+    round_errors,
+    together,
+)
 
 __all__ = [
     "ErrorTerms",
     "OnePathTerms",
     "Response",
     "Scattering",
+    "Spread",
     "TwoPortTerms",
     "WaveCorrection",
     "Waves",
     "add_switch_terms",
+    "coverage_factor",
+    "derivatives",
+    "ellipse",
     "flush_thru",
     "from_excitations",
+    "inside",
     "line_phases",
+    "mismatch_limits",
+    "mismatch_uncertainty",
+    "monte_carlo",
+    "noise_of_ratio",
+    "polar",
+    "propagate",
     "read_switch_terms",
+    "reading_limits_db",
+    "real_errors",
+    "reflection_spread",
     "remove_switch_terms",
+    "residual_error",
+    "round_errors",
+    "sensitivity",
     "solve_multiline",
     "solve_one_path",
     "solve_standards",
     "solve_thru",
     "solve_trl",
     "solve_unknown_thru",
+    "terms_spread",
+    "together",
 ]
