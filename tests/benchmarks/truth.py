@@ -1,17 +1,17 @@
-"""Does the tool find what is true? World R1, seeds 1 to 20, the whole way from recipe to Touchstone files, everything on.
+"""Does the tool find what is true? The whole way from recipe to Touchstone files in world R1, with everything on.
 
-Every reading's measured output reflection and T22 are compared with what the simulated world knows of the device at that
-moment, with this bench at port 1. Each seed is another bench: other standards, another power meter, other connections.
+Every reading's output reflection and T22 are compared with what the simulated world knows of the device at that moment,
+with this bench at port 1. Each seed is another bench: other standards, another power meter, other connections.
 """
 
 from __future__ import annotations
 
 import re
 import tempfile
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
-from contextlib import contextmanager
 from dataclasses import dataclass
+from importlib import import_module
 from multiprocessing import get_context
 from pathlib import Path
 from typing import Any, TypedDict
@@ -19,14 +19,14 @@ from unittest.mock import patch
 
 import numpy as np
 import skrf
+from benchrun_sim.world.reference import reference_sha256
 from numpy.typing import NDArray
 
 from benchrun.archive import open_archive
 from benchrun.contract.capture import FloatArray
 from benchrun.contract.reading import Reading
-from benchrun.flow import RunResult, rehearse
-from benchrun.flow.rehearse import rehearsal_plugin
-from benchrun_sim.world.reference import reference_sha256
+from benchrun.flow import rehearse
+from tests.faults.flow.worlds import Worlds
 from tests.flow.stage import HOT, RETUNED, Changes, Silence, recipes_in
 
 SEEDS = range(1, 21)
@@ -55,28 +55,6 @@ class Distances:
     def percentile(self) -> tuple[float, float]:
         """Return the 95th percentiles of both."""
         return float(np.percentile(self.reflection, PERCENTILE)), float(np.percentile(self.conversion, PERCENTILE))
-
-
-class Watched:
-    """The simulated bench's plugin, which keeps the world that it opened last: the product itself never sees it."""
-
-    def __init__(self) -> None:
-        self._plugin = rehearsal_plugin()
-        self.world: Any = None
-
-    def open_in_process(self, wiring: Mapping[str, Any], **how: Any) -> Any:
-        """Build a world in this process, and keep it."""
-        opened = self._plugin.open_in_process(wiring, **how)
-        self.world = opened.rack.world  # type: ignore[attr-defined]
-        return opened
-
-
-@contextmanager
-def watched() -> Iterator[Watched]:
-    """Let rehearsals open their worlds through a plugin that keeps them."""
-    plugin = Watched()
-    with patch("benchrun.flow.rehearse.rehearsal_plugin", lambda: plugin):
-        yield plugin
 
 
 def distances(run: Path, world: Any, *, coherent: bool) -> Distances:
@@ -116,10 +94,11 @@ def _measured(run: Path, quantity: str) -> dict[tuple[float, float], complex]:
 
 def of_seed(seed: int, coherent: bool, changes: Changes = ()) -> Distances:
     """Rehearse the hot recipe, with what it needs, in a folder of its own, and compare it with the truth."""
-    with tempfile.TemporaryDirectory() as place, watched() as plugin:
+    worlds, flow = Worlds(), import_module("benchrun.flow.rehearse")
+    with tempfile.TemporaryDirectory() as place, patch.object(flow, "rehearsal_plugin", lambda: worlds):
         recipes = recipes_in(Path(place) / "recipes", (*changes, *(() if coherent else RETUNED)))
-        result: RunResult = rehearse(recipes / HOT, Path(place) / "runs", seed=seed, listener=Silence())
-        return distances(result.folder, plugin.world, coherent=coherent)
+        result = rehearse(recipes / HOT, Path(place) / "runs", seed=seed, listener=Silence())
+        return distances(result.folder, worlds.last.rack.world, coherent=coherent)
 
 
 def of_seeds(seeds: Sequence[int], *, coherent: bool, changes: Changes = ()) -> dict[int, Distances]:
