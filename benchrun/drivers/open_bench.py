@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from contextlib import suppress
 from dataclasses import dataclass
 from functools import partial
@@ -171,13 +171,21 @@ def open_bench(
     """
     dialects = _dialects(bench, registry)
     sessions: dict[str, Session] = {}
+
+    def link(name: str) -> Session:
+        if name not in sessions:
+            sessions[name] = _open(bench, name, dialects[name], bus, clock, (addresses or {}).get(name))
+        return sessions[name]
+
+    absent = ""
     try:
-        for name, dialect in dialects.items():
-            sessions[name] = _open(bench, name, dialect, bus, clock, (addresses or {}).get(name))
+        for absent in dialects:
+            link(absent)
+        absent = ""
         identities = {name: _identified(bench, registry, name, session) for name, session in sessions.items()}
     except BaseException as error:
-        who = {name: partial(_identified_driver, bench, registry, name, session) for name, session in sessions.items()}
-        abandon(bench, who, error)
+        there = {name: partial(_identified_driver, bench, registry, name, link) for name in dialects if name != absent}
+        abandon(bench, there, error)
         for session in sessions.values():
             session.close()
         raise
@@ -189,7 +197,8 @@ def _driver(bench: Bench, registry: Registry, name: str, session: Session) -> In
     return registry.drivers[bench.instruments[name].driver].build(session, settings_of(bench, name))
 
 
-def _identified_driver(bench: Bench, registry: Registry, name: str, session: Session) -> Instrument:
+def _identified_driver(bench: Bench, registry: Registry, name: str, link: Callable[[str], Session]) -> Instrument:
+    session = link(name)
     _identified(bench, registry, name, session)
     return _driver(bench, registry, name, session)
 
@@ -247,7 +256,7 @@ def _identified(bench: Bench, registry: Registry, name: str, session: Session) -
         wanted, found = getattr(expected, field), getattr(identity, field)
         if wanted is not None and wanted != found:
             raise IdentityError(
-                f"{name}: the bench file expects {field} '{wanted}'; {found!r} answers "
+                f"{session.where}: the bench file expects {field} '{wanted}'; {found!r} answers "
                 f"({identity.maker} {identity.model}, serial {identity.serial}). "
                 "Check the address, or correct the bench file"
             )
@@ -255,7 +264,7 @@ def _identified(bench: Bench, registry: Registry, name: str, session: Session) -
     strange = [] if session.understands_all(spec.needs) else session.not_understood(spec.needs, enough=1)
     if strange:
         raise IdentityError(
-            f"{name}: {identity.maker} {identity.model} answers, and does not know {strange[0]!r}, which driver "
-            f"{spec.name} needs. Check the address, the driver and the dialect in the bench file"
+            f"{session.where}: {identity.maker} {identity.model} answers, and does not know {strange[0]!r}, which "
+            f"driver {spec.name} needs. Check the address, the driver and the dialect in the bench file"
         )
     return identity

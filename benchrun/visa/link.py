@@ -53,6 +53,11 @@ class Session:
         return self._wire.name
 
     @property
+    def where(self) -> str:
+        """Name and address, as messages begin."""
+        return self._wire.where
+
+    @property
     def clock(self) -> Clock:
         """Clock to wait on."""
         return self._talk.clock

@@ -96,7 +96,7 @@ class Wire:
             )
         return LinkError(
             f"{self.where}: cannot be opened, nothing answers there ({reason(error)}). "
-            "Check that it is on, the cable, and the address in the bench file"
+            "Check that it is on, the cable, and the address"
         )
 
     def close(self) -> None:
@@ -257,5 +257,7 @@ CHECK_LINE = "Check that it is on, its cable, and that nobody else talks to it"
 
 def reason(error: Exception) -> str:
     """Return a library's error in one line, without its code's number."""
-    text = str(getattr(error, "description", "") or error).strip().rstrip(".")
+    if getattr(error, "error_code", None) == StatusCode.error_resource_not_found:
+        return "no connection"
+    text = str(getattr(error, "description", "") or getattr(error, "strerror", "") or error).strip().rstrip(".")
     return " ".join(text.split()) or type(error).__name__

@@ -108,13 +108,13 @@ class TestAnotherInstrument:
     def test_another_kind(self, rehearsed: Rehearsed) -> None:
         addresses = rehearsed.rehearsal.addresses
         with pytest.raises(
-            IdentityError, match=r"pump: Ostrelby Beck-1 answers, and does not know 'frequency'|'level'"
+            IdentityError, match=r"pump \(TCPIP0::.+\): Ostrelby Beck-1 answers, and does not know '(frequency|level)'"
         ):
             rehearsed.open(pump=addresses["meter"])
-        with pytest.raises(IdentityError, match=r"meter: Quillfen Works Fell-6 answers"):
+        with pytest.raises(IdentityError, match=r"meter \(TCPIP0::.+\): Quillfen Works Fell-6 answers"):
             rehearsed.open(meter=addresses["pump"])
         with pytest.raises(
-            IdentityError, match=r"pump: Larkmoor Instruments Tarn-4 answers, and does not know 'frequency'"
+            IdentityError, match=r"pump \(.+\): Larkmoor Instruments Tarn-4 answers, and does not know 'frequency'"
         ):
             rehearsed.open(pump=addresses["analyser"])
 

@@ -71,7 +71,7 @@ def test_another_instrument(bench: Bench, registry: Registry, served: Any, how: 
     channel = benchrun_sim.open_channel(served.channel)
     try:
         with Bus("py") as bus:
-            with pytest.raises(IdentityError, match="meter: Merrowby Mere-1 answers"):
+            with pytest.raises(IdentityError, match=r"meter \(TCPIP0::127.0.0.1::.+\): Merrowby Mere-1 answers"):
                 open_bench(bench, registry, bus, channel.clock, {**addresses, "meter": addresses["ambient"]})
             finding = identify(addresses["supply"], registry, bus, channel.clock)
             assert finding.best is not None
