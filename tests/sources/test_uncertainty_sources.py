@@ -40,7 +40,10 @@ def impedance(v, i, phase):
 
 
 def test_row_12_resistance_reactance_impedance():
-    """JCGM 100 example H.2: R 127.732(71), X 219.847(295), Z 254.260(236) ohm, r(R, X) = -.588 (mem.)."""
+    """JCGM 100 example H.2: R 127.732(71), X 219.847(295), Z 254.260(236) ohm, r(R, X) = -.588 (mem.).
+
+    The example's inputs are printed with two digits of uncertainty: u to .002 ohm and r to .005 is what they give.
+    """
     z = impedance(V, I, PHASE)
     spread = propagate(real_errors(COVARIANCE), *derivatives(impedance, [[V], [I], [PHASE]]))
     plane = spread.plane()[0]
@@ -48,7 +51,7 @@ def test_row_12_resistance_reactance_impedance():
     assert z.imag == pytest.approx(219.847, abs=1e-3)
     assert np.sqrt(plane[0, 0]) == pytest.approx(0.071, abs=2e-3)
     assert np.sqrt(plane[1, 1]) == pytest.approx(0.295, abs=2e-3)
-    assert plane[0, 1] / np.sqrt(plane[0, 0] * plane[1, 1]) == pytest.approx(-0.588, abs=2e-3)
+    assert plane[0, 1] / np.sqrt(plane[0, 0] * plane[1, 1]) == pytest.approx(-0.588, abs=5e-3)
     size = polar([z], spread)
     assert size.magnitude[0] == pytest.approx(254.260, abs=1e-3)
     assert size.magnitude_uncertainty[0] == pytest.approx(0.236, abs=2e-3)
