@@ -136,7 +136,7 @@ class Stopping(Silence):
 def test_what_a_stopped_run_has_read_can_be_derived(small: Way, rehearse: Callable[..., RunResult]) -> None:
     with pytest.raises(StoppedError) as stopped:
         rehearse(HOT, listener=Stopping(12))
-    folder = Path(stopped.value.__notes__[-1])
+    folder = stopped.value.folder
     assert show(folder)["state"] == "stopped"
     again = derive_again(folder, {})
     found = [skrf.Network(str(path)) for path in sorted(again.folder.glob("touchstone/*_S22.s1p"))]
@@ -152,4 +152,4 @@ def test_a_run_without_readings_says_so(small: Way, rehearse: Callable[..., RunR
     with pytest.raises(StoppedError) as stopped:
         rehearse(HOT, listener=AtOnce())
     with pytest.raises(FolderError, match="nothing to derive"):
-        derive_again(Path(stopped.value.__notes__[-1]), {})
+        derive_again(stopped.value.folder, {})

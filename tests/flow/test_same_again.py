@@ -12,6 +12,7 @@ import pytest
 from benchrun.archive import open_archive
 from benchrun.flow import RunResult
 from benchrun.flow.inputs import load_inputs
+from benchrun.flow.known import made_in
 from benchrun.flow.planning import plan
 from tests.flow.conftest import Way
 from tests.flow.stage import CALIBRATE, HOT, LEVEL
@@ -77,6 +78,7 @@ def test_every_reading_starts_at_its_time_in_the_timetable(small: Way, recipe: s
     run = {CALIBRATE: small.calibration, LEVEL: small.levelling, HOT: small.hot}[recipe]
     with open_archive(run) as archive:
         started_ns = np.array([reading.started_ns for reading in archive.readings()])
-    schedule = plan(load_inputs(small.recipes / recipe), {})
+    levelled = {made.name: made.known for made in made_in(small.levelling)} if recipe == HOT else {}
+    schedule = plan(load_inputs(small.recipes / recipe), levelled)
     planned_ns = np.array([schedule.start_ns(index) for index in range(len(schedule))])
     assert np.unique(started_ns - planned_ns).tolist() == [5_000_000_000]
