@@ -37,8 +37,11 @@ def build_schedule(
     """
     body = compiled(recipe.acquire, steps)
     signal = bench.drive_signal
-    driver = Driver(signal, drive_gain or PartsGain(bench, signal)) if signal is not None else None
-    known = {name: settable.kind for name, settable in bench.settables().items()}
+    settables = bench.settables()
+    driver = None
+    if signal is not None:
+        driver = Driver(signal, drive_gain or PartsGain(bench, signal), settables[f"{signal}.level"].low)
+    known = {name: settable.kind for name, settable in settables.items()}
     clashes, kinds = kinds_of(body, known)
     bias = frozenset(f"{name}.{quantity}" for name in bench.bias for quantity in ("voltage", "current-limit"))
     around = Surroundings(recipe, bench, kinds, driver, bias)

@@ -10,6 +10,8 @@ import numpy.typing as npt
 from benchrun.bench import Bench
 from benchrun.bench.chain import path_gain_db
 from benchrun.contract.capture import FloatArray
+from benchrun.errors import InputError
+from benchrun.quantities import show
 
 DRIVE = "drive"
 #: Levels that follow from a drive are rounded to 0.1 mdB, far below any instrument's resolution, so that they are the
@@ -47,14 +49,24 @@ class PartsGain:
 class Driver:
     """Turns drives into levels of `signal`, and remembers them."""
 
-    def __init__(self, signal: str, gain: DriveGain) -> None:
+    def __init__(self, signal: str, gain: DriveGain, lowest_dbm: float | None = None) -> None:
         self.frequency, self.level = f"{signal}.frequency", f"{signal}.level"
-        self.gain = gain
+        self._gain, self._lowest_dbm = gain, lowest_dbm
         self._known: dict[tuple[float, float], float] = {}
 
     def levels_dbm(self, drive_dbm: FloatArray, frequency_hz: FloatArray) -> FloatArray:
-        """Return the levels for drives at frequencies, both of shape (N,). Raises InputError."""
-        return np.asarray(np.round(self.gain.pump_level_dbm(drive_dbm, frequency_hz), LEVEL_DIGITS))
+        """Return the levels for drives at frequencies, both of shape (N,). Raises InputError.
+
+        That is so below the source's lowest level, too; what is above its highest the level check tells.
+        """
+        levels = np.asarray(np.round(self._gain.pump_level_dbm(drive_dbm, frequency_hz), LEVEL_DIGITS))
+        if self._lowest_dbm is not None and np.any(levels < self._lowest_dbm):
+            n = int(np.argmin(levels))
+            raise InputError(
+                f"a drive of {drive_dbm[n]:g} dBm at {show(float(frequency_hz[n]), 'frequency', 6)} needs {self.level} "
+                f"at {levels[n]:.2f} dBm; the bench file allows {self._lowest_dbm:g} dBm and more. Drive more."
+            )
+        return levels
 
     def level_dbm(self, drive_dbm: float, frequency_hz: float) -> float:
         """Return one level. Raises InputError."""

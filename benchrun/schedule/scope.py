@@ -9,12 +9,14 @@ from functools import lru_cache
 import numpy as np
 
 from benchrun.bench import Bench
+from benchrun.contract.actions import Action, SetAction
 from benchrun.contract.kinds import Kind, Settable
 from benchrun.errors import InputError
 from benchrun.quantities import parse, show
 from benchrun.recipe import Recipe
 from benchrun.recipe.references import DIFFERENCE, parse_sum, substitute
 from benchrun.schedule.drive import DRIVE, Driver
+from benchrun.schedule.program import StepNode
 
 
 class Noted(Mapping[str, float]):
@@ -22,9 +24,12 @@ class Noted(Mapping[str, float]):
 
     def __init__(self, values: Mapping[str, float], words: Mapping[str, str]) -> None:
         self.values_, self.words, self.noted = values, words, set[str]()
+        self.own: set[str] = set()
+        """What the step has set itself: looking at that is no looking at what was there before."""
 
     def __getitem__(self, name: str) -> float:
-        self.noted.add(name)
+        if name not in self.own:
+            self.noted.add(name)
         return self.values_[name]
 
     def __iter__(self) -> Iterator[str]:
@@ -53,7 +58,24 @@ class Scope:
     def begin(self, following: tuple[str, ...]) -> None:
         """Begin a step: nothing is noted yet."""
         self._seen.noted.clear()
+        self._seen.own.clear()
         self._following = following
+
+    def has_set(self, action: Action) -> None:
+        """Note that the step has set something itself."""
+        if isinstance(action, SetAction):
+            self._seen.own.update(name for name, _ in action.values)
+
+    def expanded(self, node: StepNode, numbers: Mapping[str, float], words: Mapping[str, str]) -> Iterator[Action]:
+        """Expand a step for itself under these conditions; it sees what it has set."""
+        values = dict(numbers)
+        self.stand(values, words)
+        self.begin(node.following)
+        for action in node.spec.expand(node.model, self):
+            yield action
+            if isinstance(action, SetAction):
+                values.update(action.values)
+                self.has_set(action)
 
     @property
     def noted(self) -> frozenset[str]:

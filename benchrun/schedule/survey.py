@@ -1,6 +1,6 @@
 """The survey of a program: every mistake that can be found without going through all conditions.
 
-Each step is expanded where every sweep is at its first value, and where every sweep is at its last; a step that sets
+Each step is expanded where every sweep is at its first value, its second and its last; a step that sets
 something also at the extremes of every sweep that it refers to. Sums of references have their extremes there. What
 lies between is looked at by the level check, which goes through all conditions.
 """
@@ -50,7 +50,7 @@ class Survey:
 
     def run(self, body: Sequence[Node]) -> None:
         """Survey a program."""
-        for pick in (0, -1):
+        for pick in (0, 1, -1):
             self._state = self._new_state()
             self._scope.stand(self._state.values, self._state.words)
             self._list(body, pick)
@@ -82,7 +82,7 @@ class Survey:
                 coming = node.reads[0].signals if node.reads else coming
 
     def _sweep(self, node: SweepNode, pick: int) -> None:
-        name, value = node.axis.name, node.axis.values[pick]
+        name, value = node.axis.name, node.axis.values[min(pick, len(node.axis) - 1)]
         self._state.put(name, value)
         self._attempt(node.place, lambda: self._begin(node, value))
         self._around.append(node)
@@ -116,11 +116,11 @@ class Survey:
     # Steps
 
     def _step(self, node: StepNode, *, first: bool) -> None:
-        before = dict(self._state.values)
+        before = dict(self._state.values), dict(self._state.words)
         if self._attempt(node.place, lambda: self._expand(node)) or not first:
             return
         if node.changes:
-            self._at_extremes(node, before)
+            self._at_extremes(node, *before)
 
     def _expand(self, node: StepNode) -> None:
         reads, prompts = list[ReadSite](), 0
@@ -132,6 +132,7 @@ class Survey:
                 reads.append(_site(action))
             prompts += isinstance(action, AskAction)
             self._state.apply(action)
+            self._scope.has_set(action)
         node.uses |= self._scope.noted
         if node.reads and node.reads != tuple(reads):
             raise InputError(
@@ -226,22 +227,20 @@ class Survey:
         if self._connectable is not None and what not in self._connectable:
             raise InputError(f"nothing called '{what}' can be connected; there is {', '.join(self._connectable)}.")
 
-    def _at_extremes(self, node: StepNode, before: Mapping[str, float]) -> None:
+    def _at_extremes(self, node: StepNode, numbers: Mapping[str, float], words: Mapping[str, str]) -> None:
         """Expand a step that sets something at the extremes of the sweeps that it refers to."""
         sweeps = [sweep for sweep in self._around if sweep.axis.name in node.uses]
         combinations = itertools.product(*(_extremes(sweep) for sweep in sweeps))
         for values in itertools.islice(combinations, MOST_EXTREMES):
             at = {sweep.axis.name: value for sweep, value in zip(sweeps, values, strict=True)}
-            numbers = {**before, **{name: value for name, value in at.items() if not isinstance(value, str)}}
-            words = {**self._state.words, **{name: value for name, value in at.items() if isinstance(value, str)}}
-            if self._attempt(node.place, lambda: self._try(node, numbers, words)):  # noqa: B023  called at once
+            there = {**numbers, **{name: value for name, value in at.items() if not isinstance(value, str)}}
+            called = {**words, **{name: value for name, value in at.items() if isinstance(value, str)}}
+            if self._attempt(node.place, lambda: self._try(node, there, called)):  # noqa: B023  called at once
                 break
         self._scope.stand(self._state.values, self._state.words)
 
     def _try(self, node: StepNode, numbers: Mapping[str, float], words: Mapping[str, str]) -> None:
-        self._scope.stand(numbers, words)
-        self._scope.begin(node.following)
-        for action in node.spec.expand(node.model, self._scope):
+        for action in self._scope.expanded(node, numbers, words):
             if isinstance(action, SetAction | AskAction):
                 self._check(action)
 

@@ -167,7 +167,7 @@ class Table:
             block.put(name, column, rows)
             if self._driver is not None:
                 self._follow_drive(self._driver, name, block, rows)
-            if watch and self._at_sources(name) and ON in block.words:
+            if watch and self._at_sources(name):
                 there = self._distinct if rows is None else self._distinct & rows
                 self._moments.append((block.taken(there), there))
 
@@ -208,9 +208,8 @@ class Table:
         if known is None:
             if len(self._remembered) > MOST_REMEMBERED:
                 self._remembered.clear()
-            self._scope.stand(*in_force(block.values, block.words, self._vocabulary, row))
-            self._scope.begin(node.following)
-            known = self._remembered[key] = tuple(node.spec.expand(node.model, self._scope))
+            there = in_force(block.values, block.words, self._vocabulary, row)
+            known = self._remembered[key] = tuple(self._scope.expanded(node, *there))
             node.uses |= self._scope.noted
         return known
 

@@ -47,6 +47,8 @@ class Timing:
     """A procedure that does not say how long it takes."""
     lowering_s: float = 0.5
     """Making RF and drain safe before the operator is asked."""
+    list_s: float = 0.018
+    """A source leaves its list, is given a new one, and waits for trigger pulses."""
     spare_s: float = 0.001
     """What a reading starts later than it could, so that it is never late."""
     spare_db: float = 0.5
@@ -70,10 +72,12 @@ class ActionTimes:
         if not isinstance(action, ReadAction):
             return 0
         messages = self._switch(action.signals) + len(action.signals)
+        listed_s = 0.0
         if action.capture is not None and _but_for_its_point(action.capture) != self._set_up:
             messages += 1
+            listed_s = self._timing.list_s * action.capture.follow
             self._set_up = _but_for_its_point(action.capture)
-        return round((messages * self._timing.message_s + self._timing.spare_s) * NS)
+        return round((messages * self._timing.message_s + listed_s + self._timing.spare_s) * NS)
 
     def after_ns(self, action: Action) -> int:
         """Return the rest of the action's time."""

@@ -134,7 +134,7 @@ def test_every_state_that_sources_are_in_while_rf_is_on_is_among_the_moments_or_
     looked_at = set()
     for columns in schedule.moments(chunk=5):
         for n in range(len(columns.index)):
-            on = columns.vocabulary[columns.words[ON][n]]
+            on = columns.vocabulary[columns.words[ON][n]] if ON in columns.words else ""
             looked_at.add((on, tuple(columns.row(n)[0].get(name) for name in SOURCES)))
     for columns in schedule.columns():
         assert columns.read is not None
