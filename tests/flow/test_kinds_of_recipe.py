@@ -13,6 +13,9 @@ import skrf
 from benchrun.archive import open_archive
 from benchrun.errors import FileProblemsError
 from benchrun.flow import RunResult, check_files
+from benchrun.flow.inputs import load_inputs
+from benchrun.flow.known import made_in
+from benchrun.flow.planning import plan
 from tests.faults.flow.worlds import Worlds, complaints
 from tests.flow.conftest import Way
 from tests.flow.stage import COLD, HOT, change
@@ -85,8 +88,12 @@ def test_a_pump_that_follows_gives_what_stepping_gives(
     run = rehearse(HOT).folder
     assert complaints(worlds.last) == []
     with open_archive(run) as archive:
-        assert [len(reading.frequencies_hz) for reading in archive.readings("hot")] == [9, 9, 9]
-        assert not any(reading.flags for reading in archive.readings("hot"))
+        readings = list(archive.readings("hot"))
+    assert [len(reading.frequencies_hz) for reading in readings] == [9, 9, 9]
+    assert not any(reading.flags for reading in readings)
+    levelled = {made.name: made.known for made in made_in(small.levelling)}
+    schedule = plan(load_inputs(small.recipes / HOT), levelled)
+    assert {reading.started_ns - schedule.start_ns(reading.index) for reading in readings} == {5_000_000_000}
     stepped, followed = table(small.hot), table(run)
     for name in ("drive_dbm", "frequency_hz", "pump_frequency_hz"):
         assert np.array_equal(column(stepped, name), column(followed, name))
