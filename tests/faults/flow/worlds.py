@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 from collections.abc import Callable, Mapping
 from typing import Any
 
@@ -15,15 +16,19 @@ RELEASED_V = 1.0
 class Worlds:
     """Stands where the simulated bench's entry point stands, and keeps every world that the product opens.
 
-    `arm` is called with each world before the product gets it: it plans the faults.
+    `wired` changes what a world is told, where it is to differ from the bench file; `arm` is called with each world
+    before the product gets it: it plans the faults.
     """
 
     def __init__(self) -> None:
         self.opened: list[InProcessRehearsal] = []
+        self.wired: Callable[[dict[str, Any]], object] = lambda _wiring: None
         self.arm: Callable[[InProcessRehearsal], None] = lambda _world: None
 
     def open_in_process(self, wiring: Mapping[str, Any], *, seed: int, real_time: bool = False) -> InProcessRehearsal:
-        world = benchrun_sim.open_in_process(wiring, seed=seed, real_time=real_time)
+        told = copy.deepcopy(dict(wiring))
+        self.wired(told)
+        world = benchrun_sim.open_in_process(told, seed=seed, real_time=real_time)
         self.opened.append(world)
         self.arm(world)
         return world
@@ -39,6 +44,20 @@ class Worlds:
     def untouched(self) -> bool:
         """Whether no message ever came to an instrument."""
         return all(world.faults.exchanges == 0 for world in self.opened)
+
+
+def watch(world: InProcessRehearsal, said: list[tuple[str, str]]) -> None:
+    """Keep every message that is executed in a world as (instrument, text), in order: exchange n is said[n - 1]."""
+    for name, instrument in world.rack.instruments.items():
+        instrument.execute = _watched(name, instrument.execute, said)  # type: ignore[method-assign]
+
+
+def _watched(name: str, execute: Callable[[str], bytes], said: list[tuple[str, str]]) -> Callable[[str], bytes]:
+    def execute_watched(message: str) -> bytes:
+        said.append((name, message))
+        return execute(message)
+
+    return execute_watched
 
 
 def events(world: InProcessRehearsal) -> list[str]:
