@@ -80,13 +80,13 @@ def term_chart(plane: Plane) -> dict[str, Any] | None:
     return _over_frequency(title, "dB", plane.terms)
 
 
-def level_chart(traces: Sequence[Trace], key: str, linear_dbm: Sequence[float]) -> dict[str, Any] | None:
+def level_chart(reading: str, traces: Sequence[Trace], key: str, linear_dbm: Sequence[float]) -> dict[str, Any] | None:
     """Return the highest level at each receiver against a condition, with the linear limits as lines across."""
     unit = unit_of(key)
     size = unit.size if unit else 1.0
     lines = [_line(t.name, t.x / size, t.level_dbm) for t in traces if not t.name.endswith(TOGETHER)]
     marks = [{"name": "linear limit", "y": limit} for limit in sorted(set(linear_dbm))]
-    title = "Highest level at the receivers"
+    title = f"Highest level at the receivers, {reading}"
     return _lines(title, _axis(heading(key).name, unit.name if unit else ""), "dBm", lines, marks)
 
 

@@ -51,7 +51,6 @@ NAMES = {
     "optimum_load_extrapolated_magnitude_ratio": "optimum load, extrapolated",
     "optimum_load_extrapolated_phase_deg": "its phase",
     "optimum_load_extrapolated_power_dbm": "its power, extrapolated",
-    "frequency_hz": "frequency",
 }
 
 
@@ -74,7 +73,7 @@ def heading(key: str, *, number: bool = True) -> Heading:
     """Return the heading of a column or the name of a quantity: 'drive_dbm' is drive, in dBm."""
     unit = unit_of(key) if number else None
     plain = key if unit is None else key.rpartition("_")[0]
-    return Heading(NAMES.get(key, plain.replace("_", " ")), unit.name if unit else "", number)
+    return Heading(NAMES.get(key, plain.replace("_", " ").replace(".", " ")), unit.name if unit else "", number)
 
 
 def cells(key: str, column: Column) -> list[str]:

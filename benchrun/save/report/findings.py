@@ -136,7 +136,7 @@ def _trusted(quantity: str, own: Sequence[OnePortData], tables: Sequence[Table])
     place = ", ".join(named(key, value) for key, value in network.conditions.items())
     lines = [line for line in network.comments if line.startswith(OF_TRUST)]
     widest = table is not None and len(own) > 1
-    return quantity, f"largest at {place}" if widest else place, lines
+    return quantity, f"bound largest at {place}" if widest else place, lines
 
 
 def _widest(own: Sequence[OnePortData], table: Table, column: str) -> OnePortData:

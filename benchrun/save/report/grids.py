@@ -16,6 +16,15 @@ FREQUENCY = "frequency_hz"
 MOST_ROWS = 6_000
 #: More points than this are not drawn.
 MOST_POINTS = 20_000
+#: What key figures do without, by the end of the column's name: it stands in the table of all points.
+NO_KEY_FIGURE = (
+    "pump_frequency_hz",
+    "delivered_power_dbm",
+    "t22_phase_from_twice_b2_pump_deg",
+    "optimum_load_extrapolated_power_dbm",
+    "_degc",
+    ".voltage_v",
+)
 #: More rows than this are not printed as key figures.
 MOST_KEY_ROWS = 60
 
@@ -59,10 +68,16 @@ def key_figures(table: Table) -> Grid:
     everything = np.arange(len(table))
     if not keys:
         chosen = np.unique(np.linspace(0, len(table) - 1, min(len(table), 9)).astype(np.int64))
-        return _grid(table, list(table.columns), chosen, "at a few frequencies of the band")
+        return _grid(table, _short(table), chosen, "at a few frequencies of the band")
     middle = [_middle(table, rows) for rows, _ in _groups(table, keys, everything)]
     few = middle[:: -(-len(middle) // MOST_KEY_ROWS)]
-    return _grid(table, list(table.columns), np.array(few, dtype=np.int64), "at the middle of the band")
+    return _grid(table, _short(table), np.array(few, dtype=np.int64), "at the middle of the band")
+
+
+def _short(table: Table) -> list[str]:
+    """Return the columns of the key figures: flags only where there is one."""
+    bare = "flags" in table.columns and not np.any(table.columns["flags"] != "")
+    return [key for key in table.columns if not key.endswith(NO_KEY_FIGURE) and not (key == "flags" and bare)]
 
 
 def thinned(table: Table, most: int, verb: str) -> Thinned:

@@ -57,8 +57,8 @@ def facts(subject: Subject) -> Facts:
     """Return what was measured, on which device and bench, when and by whom."""
     meta, bench = subject.meta, subject.bench
     told = [
-        ("Device", _device(meta.device)),
-        ("Origin", "simulated instruments: " + meta.origin if subject.simulated else "real instruments"),
+        ("Device", device_text(subject)),
+        ("Origin", f"{meta.origin}: nothing real was measured" if subject.simulated else "real instruments"),
         ("Readings", _readings(subject)),
         ("Started", time_text(meta.started_utc)),
         ("Ended", time_text(meta.ended_utc)),
@@ -99,9 +99,11 @@ def log_lines(subject: Subject) -> list[LogLine]:
     return [_line(event) for event in subject.events]
 
 
-def _device(device: Mapping[str, str]) -> str:
+def device_text(subject: Subject) -> str:
+    """Return the device in words; what stands in the recipe's head where none is named: the bench."""
+    device = subject.meta.device
     part, serial, note = (device.get(key, "") for key in ("part", "serial", "note"))
-    return ", ".join(text for text in (part, serial and f"serial {serial}", note) if text) or "none is named"
+    return ", ".join(text for text in (part, serial and f"serial {serial}", note) if text) or "no device is named"
 
 
 def _readings(subject: Subject) -> str:

@@ -92,9 +92,9 @@ def _levels(subject: Subject, drawn: _Drawn) -> dict[str, Any]:
     rows = receiver_levels(subject.readings, subject.bench)
     linear = [row.linear_dbm for row in rows if row.linear_dbm is not None]
     named = []
-    for own in subject.readings.values():
-        key = next((k for k in ("drive_dbm", "frequency_hz") if k in own[0].conditions), "")
-        named.append(drawn.add("lines", charts.level_chart(against(own, key), key, linear)) if key else "")
+    for name, own in subject.readings.items():
+        key = "drive_dbm" if "drive_dbm" in own[0].conditions else "frequency_hz"
+        named.append(drawn.add("lines", charts.level_chart(name, against(own, key), key, linear)))
     return {"rows": rows, "charts": [name for name in named if name]}
 
 
@@ -104,12 +104,17 @@ def _planes(subject: Subject, drawn: _Drawn) -> list[dict[str, Any]]:
             "plane": plane,
             "charts": [
                 name
-                for chart in (charts.residual_chart(plane), charts.term_chart(plane))
+                for chart in (charts.residual_chart(plane), charts.term_chart(plane) if _untold(plane) else None)
                 if (name := drawn.add("lines", chart))
             ],
         }
         for plane in planes.planes(subject)
     ]
+
+
+def _untold(plane: planes.Plane) -> bool:
+    """Whether the results do not show a plane's curves already: those of a levelling that this run made are there."""
+    return plane.used or plane.kind != "levelling"
 
 
 def _scalars(subject: Subject, drawn: _Drawn) -> dict[str, Any]:

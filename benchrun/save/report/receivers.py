@@ -6,12 +6,14 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from benchrun.bench import Bench
 from benchrun.contract.capture import FloatArray
 from benchrun.contract.reading import Reading
 from benchrun.save.report.figures import named
 
+FREQUENCY = "frequency_hz"
 TOGETHER = "all together"
 FLOOR_W = 1e-30
 
@@ -53,20 +55,31 @@ def receiver_levels(readings: Mapping[str, Sequence[Reading]], bench: Bench | No
 
 
 def against(readings: Sequence[Reading], key: str) -> list[Trace]:
-    """Return, for each wave and tone, the highest level at each value of the condition `key`; [] where it is absent."""
-    waved = [r for r in readings if r.data.size and isinstance(r.conditions.get(key), float | int)]
+    """Return, for each wave and tone, the highest level at each value of `key`; [] where no wave was read.
+
+    `key` is a condition, or "frequency_hz", which is the probe's at each point of a reading.
+    """
+    waved = [r for r in readings if r.data.size]
     if not waved or not _alike(waved):
         return []
-    at = np.array([r.conditions[key] for r in waved], dtype=np.float64)
-    x, place = np.unique(at, return_inverse=True)
-    peak_w = np.array([np.max(_power_w(r), axis=2) for r in waved])
+    at = np.concatenate([_values(r, key) for r in waved])
+    peak_w = np.concatenate([_power_w(r) for r in waved], axis=2)
+    x, place = np.unique(at[np.isfinite(at)], return_inverse=True)
     traces = []
     for t, tone in enumerate(waved[0].tones):
         for w, wave in enumerate(waved[0].waves):
             highest = np.zeros(x.size)
-            np.maximum.at(highest, place, peak_w[:, t, w])
+            np.maximum.at(highest, place, peak_w[t, w][np.isfinite(at)])
             traces.append(Trace(f"{wave}, {tone}", x, _dbm(highest)))
-    return traces
+    return traces if x.size else []
+
+
+def _values(reading: Reading, key: str) -> FloatArray:
+    """Return `key` (P,) at each point of a reading, NaN where it has none."""
+    if key == FREQUENCY:
+        return np.array(reading.frequencies_hz, dtype=np.float64)
+    value = reading.conditions.get(key)
+    return np.full(len(reading.frequencies_hz), value if isinstance(value, float | int) else np.nan)
 
 
 def limits(bench: Bench | None, wave: str) -> tuple[float | None, float | None]:
@@ -80,30 +93,26 @@ def _rows(readings: Sequence[Reading], bench: Bench | None) -> Iterator[Receiver
     waved = [r for r in readings if r.data.size]
     if not waved or not _alike(waved):
         return
-    power = [_power_w(r) for r in waved]
-    highest = np.array([p.max(axis=2) for p in power])
-    lowest = np.array([p.min(axis=2) for p in power])
-    total = np.array([p.sum(axis=0).max(axis=1) for p in power])
-    quiet = np.array([p.sum(axis=0).min(axis=1) for p in power])
+    power = np.concatenate([_power_w(r) for r in waved], axis=2)
+    whose = np.repeat(np.arange(len(waved)), [len(r.frequencies_hz) for r in waved])
     for w, wave in enumerate(waved[0].waves):
-        for t, tone in enumerate(waved[0].tones):
-            yield _row(waved, wave, tone, highest[:, t, w], lowest[:, t, w], bench)
-        if len(waved[0].tones) > 1:
-            yield _row(waved, wave, TOGETHER, total[:, w], quiet[:, w], bench)
+        tones = dict(zip(waved[0].tones, power[:, w], strict=True))
+        if len(tones) > 1:
+            tones[TOGETHER] = power[:, w].sum(axis=0)
+        linear, damage = limits(bench, wave)
+        for tone, power_w in tones.items():
+            worst = int(np.argmax(power_w))
+            reading, highest, lowest = waved[whose[worst]], _dbm(power_w.max()), _dbm(power_w.min())
+            point = worst - int(np.searchsorted(whose, whose[worst]))
+            place = where(reading, reading.frequencies_hz[point])
+            yield ReceiverLevel(reading.name, wave, tone, float(highest), float(lowest), linear, damage, place)
 
 
-def _row(
-    readings: Sequence[Reading], wave: str, tone: str, most_w: FloatArray, least_w: FloatArray, bench: Bench | None
-) -> ReceiverLevel:
-    worst = int(np.argmax(most_w))
-    linear, damage = limits(bench, wave)
-    highest, lowest = float(_dbm(most_w[worst : worst + 1])[0]), float(_dbm(np.array([least_w.min()]))[0])
-    return ReceiverLevel(readings[worst].name, wave, tone, highest, lowest, linear, damage, where(readings[worst]))
-
-
-def where(reading: Reading) -> str:
-    """Return at which conditions a reading was taken: those that recipes sweep, else what was set."""
-    told = {key: value for key, value in reading.conditions.items() if "." not in key} or dict(reading.conditions)
+def where(reading: Reading, frequency_hz: float | None = None) -> str:
+    """Return at which conditions a reading was taken: those that recipes sweep, and one frequency of its grid."""
+    told = {key: value for key, value in reading.conditions.items() if "." not in key}
+    if frequency_hz is not None:
+        told[FREQUENCY] = frequency_hz
     return ", ".join(named(key, value) for key, value in told.items()) or f"reading {reading.index}"
 
 
@@ -115,6 +124,6 @@ def _power_w(reading: Reading) -> FloatArray:
     return np.asarray(np.abs(reading.data) ** 2)
 
 
-def _dbm(power_w: FloatArray) -> FloatArray:
+def _dbm(power_w: npt.ArrayLike) -> FloatArray:
     """Return power in dBm; what is nothing at all stands at -270 dBm."""
     return np.asarray(10.0 * np.log10(np.maximum(power_w, FLOOR_W) / 1e-3))

@@ -7,8 +7,10 @@
   const SERIES = ["#123a6b", "#a4460d", "#7d7f86", "#c29a1f", "#4f7fb5", "#5b2c0a", "#000000", "#9db4cf"];
   const DASHES = ["solid", "dash", "dot", "dashdot", "longdash", "longdashdot"];
   const SIGNS = ["circle", "diamond", "square", "triangle-up", "cross", "x"];
-  const MOST_BEHIND = 24, FEW = 30, CIRCLES = 7;
-  const CONFIG = {responsive: true, displaylogo: false, modeBarButtonsToRemove: ["lasso2d", "select2d", "autoScale2d"]};
+  const MOST_BEHIND = 24, FEW = 30, CIRCLES = 7, MANY = 4;
+  // The library would offer to send a chart to its maker's server: never from here; the page's policy forbids it too.
+  const CONFIG = {responsive: true, displaylogo: false, displayModeBar: "hover", showSendToCloud: false, showEditInChartStudio: false, plotlyServerURL: "",
+    modeBarButtonsToRemove: ["sendChartToCloud", "sendDataToCloud", "lasso2d", "select2d", "autoScale2d", "zoomIn2d", "zoomOut2d"]};
 
   const ramp = (share) => {
     const at = share * (RAMP.length - 1), low = Math.min(Math.floor(at), RAMP.length - 2), rest = at - low;
@@ -25,7 +27,7 @@
       title: {text: plain(title), x: 0, xref: "paper", xanchor: "left", yref: "container", y: .97, font: {size: 13.5, color: INK}},
       font: {family: getComputedStyle(document.body).fontFamily, size: 12, color: INK}, paper_bgcolor: "#ffffff", plot_bgcolor: "#ffffff",
       margin: {l: 62, r: 14, t: 40, b: 48}, showlegend: false, hovermode: "closest", autosize: true,
-      legend: {orientation: "h", x: 0, y: -0.24, yanchor: "top", font: {size: 11.5}}, ...more,
+      legend: {orientation: "h", x: 0, xref: "paper", y: 0, yref: "container", yanchor: "bottom", font: {size: 11.5}}, ...more,
     };
   }
   const axis = (title, more) => ({title: {text: plain(title), standoff: 8}, gridcolor: LINE, linecolor: QUIET, zerolinecolor: LINE, ticks: "outside",
@@ -46,7 +48,8 @@
         line: {color: INK, width: 1.2, dash: "dash"}, marker: {symbol: "line-ew-open", size: 30, color: INK},
         hovertemplate: `${plain(mark.name)} %{y:.5~g} ${plain(chart.y)}<extra></extra>`});
     }
-    draw(element, traces, layout(chart.title, {showlegend: traces.length > 1, xaxis: axis(chart.x), yaxis: axis(chart.y), margin: {l: 62, r: 14, t: 40, b: traces.length > 1 ? 78 : 48}}));
+    element.classList.toggle("mid", traces.length > MANY);
+    draw(element, traces, layout(chart.title, {showlegend: traces.length > 1, xaxis: axis(chart.x), yaxis: axis(chart.y), margin: {l: 62, r: 14, t: 40, b: traces.length > MANY ? 112 : traces.length > 1 ? 78 : 48}}));
   }
 
   // Reflections become normalised impedances: z = (1 + G) / (1 - G).
@@ -158,7 +161,7 @@
       const beyond = own ? view.rows.filter((row) => own.re[row] !== null && Math.hypot(own.re[row], own.im[row]) >= 1).length : 0;
       const title = `Output reflection against ${view.key.name}${beyond ? ` (${beyond} at 1 or above are outside)` : ""}`;
       const quietAxis = {gridcolor: LINE, linecolor: QUIET, tickfont: {size: 10, color: QUIET}};
-      draw(figure, traces, layout(title, {showlegend: true, legend: {orientation: "h", x: 0, y: -0.06, yanchor: "top", font: {size: 11.5}}, margin: {l: 34, r: 34, t: 56, b: 56},
+      draw(figure, traces, layout(title, {showlegend: true, margin: {l: 24, r: 24, t: 52, b: 56},
         smith: {bgcolor: "#ffffff", realaxis: {...quietAxis, tickvals: [0.2, 0.5, 1, 2, 5]}, imaginaryaxis: {...quietAxis, tickvals: [-5, -2, -1, -0.5, -0.2, 0, 0.2, 0.5, 1, 2, 5]}}}));
     }
     polar(figure, view) {
@@ -167,7 +170,7 @@
       traces.push({type: "scatterpolar", ...pick(view.rows), mode: mode(view.rows.length), line: {color: ACCENT, width: 2.6}, marker: {size: 6},
         text: view.rows.map((row) => this.place(view, row)), hovertemplate: "T22 %{r:.4f} at %{theta:.1f} deg<br>%{text}<extra></extra>"});
       const quietAxis = {gridcolor: LINE, linecolor: QUIET, tickfont: {size: 10, color: QUIET}};
-      draw(figure, traces, layout(`T22 against ${view.key.name}, phase from twice that of b2 at the pump`, {margin: {l: 34, r: 34, t: 56, b: 56},
+      draw(figure, traces, layout(`T22 against ${view.key.name}`, {margin: {l: 24, r: 24, t: 62, b: 34},
         polar: {bgcolor: "#ffffff", radialaxis: {...quietAxis, rangemode: "tozero", angle: 90, tickangle: 90, nticks: 5}, angularaxis: {...quietAxis, ticksuffix: " deg", dtick: 45}}}));
     }
     panel(figure, panel, view) {
@@ -176,14 +179,14 @@
       for (const one of view.family.families) traces.push({type: "scatter", x: xs(one.rows), y: pick(first, one.rows), mode: mode(one.rows.length), line: {color: one.colour, width: 1}, marker: {size: 3}, hoverinfo: "skip", showlegend: false});
       if (bound) {
         const y = pick(first, view.rows), b = pick(bound, view.rows), edge = {type: "scatter", x: view.x, mode: "lines", line: {width: 0}, hoverinfo: "skip", showlegend: false};
-        traces.push({...edge, y: y.map((v, k) => v === null ? null : Math.max(v - b[k], 0))}, {...edge, y: y.map((v, k) => v === null ? null : v + b[k]), fill: "tonexty", fillcolor: "rgba(164,70,13,.14)"});
+        traces.push({...edge, y: y.map((v, k) => v === null ? null : Math.max(v - b[k], 0))}, {...edge, y: y.map((v, k) => v === null ? null : v + b[k]), name: "bound", showlegend: true, fill: "tonexty", fillcolor: "rgba(164,70,13,.14)"});
       }
       panel.lines.forEach(([column, name], k) => traces.push({type: "scatter", name: plain(name), x: view.x, y: pick(column, view.rows), mode: mode(view.rows.length),
         line: {color: k ? [INK, "#4f7fb5"][k - 1] : ACCENT, width: 2.4, dash: DASHES[k]}, marker: {size: 6, symbol: SIGNS[k]}, text: view.rows.map((row) => this.place(view, row)),
         hovertemplate: `${plain(name)} %{y:.5~g} ${plain(panel.unit)}<br>%{text}<extra></extra>`}));
-      const amAm = panel.title === "Output power" && view.key.name === "drive" ? " (AM-AM)" : "", band = bound ? ", with its bound" : "";
-      draw(figure, traces, layout(`${panel.title} against ${view.key.name}${amAm}${band}`, {showlegend: panel.lines.length > 1, xaxis: axis(axisName(view.key)), yaxis: axis(panel.unit),
-        margin: {l: 62, r: 14, t: 40, b: panel.lines.length > 1 ? 78 : 48}}));
+      const amAm = panel.title === "Output power" && view.key.name === "drive" ? " (AM-AM)" : "", legend = panel.lines.length > 1 || Boolean(bound);
+      draw(figure, traces, layout(`${panel.title} against ${view.key.name}${amAm}`, {showlegend: legend, xaxis: axis(axisName(view.key)), yaxis: axis(panel.unit),
+        margin: {l: 62, r: 14, t: 40, b: legend ? 78 : 48}}));
     }
   }
 
@@ -194,10 +197,10 @@
     }
   }
   // On paper a chart has half the page's width; its script measures the screen, so it is told.
-  const PAPER = {width: 335, height: 235, tall: 335};
+  const PAPER = {width: 340, fonts: {"title.font.size": 11.5, "legend.font.size": 9.5, "font.size": 10.5}}, SCREEN = {"title.font.size": 13.5, "legend.font.size": 11.5, "font.size": 12};
   const resize = (size) => document.querySelectorAll("figure.chart").forEach((figure) => figure.layout && Plotly.relayout(figure, size(figure)));
-  window.addEventListener("beforeprint", () => resize((figure) => ({width: PAPER.width, height: figure.classList.contains("tall") ? PAPER.tall : PAPER.height})));
-  window.addEventListener("afterprint", () => resize(() => ({width: undefined, height: undefined, autosize: true})));
+  window.addEventListener("beforeprint", () => resize((figure) => ({width: PAPER.width, height: figure.classList.contains("tall") ? 330 : figure.classList.contains("mid") ? 300 : 230, ...PAPER.fonts})));
+  window.addEventListener("afterprint", () => resize(() => ({width: undefined, height: undefined, autosize: true, ...SCREEN})));
 
   async function unpack() {
     const packed = Uint8Array.from(atob(document.getElementById("plotting").textContent), (c) => c.charCodeAt(0));
