@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import datetime
+import errno
 import re
 from pathlib import Path
 
-from benchrun.errors import FolderError
+from benchrun.errors import DiskError, FolderError
 
 ARCHIVE = "archive.sqlite"
 _UNSAFE = re.compile(r"[^A-Za-z0-9.-]+")
@@ -20,7 +21,7 @@ def slug(text: str) -> str:
 def make_run_folder(runs: Path, serial: str | None, recipe_name: str, today: datetime.date | None = None) -> Path:
     """Make and return a new folder `{date}_{serial}_{recipe}` below `runs`; a number is added where it exists.
 
-    Raises FolderError where it cannot be made or written.
+    Raises FolderError where it may not be made, DiskError where the disk is full or fails.
     """
     day = (today or datetime.date.today()).isoformat()
     stem = "_".join(slug(part) for part in (day, serial or "bench", recipe_name))
@@ -29,7 +30,8 @@ def make_run_folder(runs: Path, serial: str | None, recipe_name: str, today: dat
         return _first_free(runs, stem)
     except OSError as error:
         reason = "it is a file" if runs.is_file() else error.strerror or error
-        raise FolderError(
+        kind = DiskError if error.errno in (errno.ENOSPC, errno.EDQUOT, errno.EIO) else FolderError
+        raise kind(
             f"{runs}: no run folder can be made here ({reason}). Nothing was switched on. "
             "Choose a folder that you may write to with --to."
         ) from error
