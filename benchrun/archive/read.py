@@ -51,6 +51,11 @@ class ArchiveReader:
         return self._number("SELECT count(*) FROM reading")
 
     @property
+    def last_index(self) -> int:
+        """Greatest index of a reading that is committed, -1 where there is none."""
+        return self._number("SELECT ifnull(max(schedule_index), -1) FROM reading")
+
+    @property
     def names(self) -> tuple[str, ...]:
         """Names of readings, in the order in which the schedule first meets them."""
         with _readable(self.path):
@@ -63,6 +68,13 @@ class ArchiveReader:
             with _readable(self.path):
                 reading = decode(layout, row)
             yield reading
+
+    def attempts(self, index: int) -> list[Reading]:
+        """Return every attempt at one reading, the final one last; [] where it is not there. Raises FolderError."""
+        with _readable(self.path):
+            query = f"{schema.ROWS} WHERE schedule_index = ? ORDER BY name, attempt"
+            rows = self._connection.execute(query, (index,))
+            return [decode(Layout(*values[:4]), Row(*values[4:-1])) for values in rows]
 
     def stack(self, name: str) -> Stack:
         """Return the final readings `name` as arrays. Raises DataSetError where there are none or shapes differ."""

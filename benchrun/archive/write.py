@@ -13,7 +13,7 @@ import contextlib
 from collections.abc import Iterator, Mapping
 from dataclasses import asdict, fields
 from pathlib import Path
-from typing import Any
+from typing import Any, Self
 
 import apsw
 
@@ -68,7 +68,7 @@ class ArchiveWriter:
         return writer
 
     @classmethod
-    def append(cls, folder: Path) -> ArchiveWriter:
+    def append(cls, folder: Path) -> Self:
         """Open the archive of a run that has ended, to add to it. Raises FolderError, DiskError."""
         from benchrun.archive.read import open_archive
 
@@ -82,7 +82,7 @@ class ArchiveWriter:
         return writer
 
     @classmethod
-    def _opened(cls, path: Path, lock: media.WriterLock, vfs: str | None, *, make: bool) -> ArchiveWriter:
+    def _opened(cls, path: Path, lock: media.WriterLock, vfs: str | None, *, make: bool) -> Self:
         flags = apsw.SQLITE_OPEN_READWRITE | (apsw.SQLITE_OPEN_CREATE if make else 0)
         with _on_disk(path, "opened", 0):
             connection = apsw.Connection(str(path), flags=flags, vfs=vfs)
@@ -130,12 +130,12 @@ class ArchiveWriter:
             )
             return self._connection.last_insert_rowid()
 
-    def product(self, kind: str, name: str, document: Mapping[str, Any]) -> int:
-        """Keep what was made of readings; returns its number in this archive. Raises DiskError."""
+    def product(self, kind: str, name: str, document: Mapping[str, Any], made_utc: str = "") -> int:
+        """Keep what was made of readings, now if nothing else is said; returns its number here. Raises DiskError."""
         with self._transaction(f"{kind} '{name}'"):
             self._execute(
                 "INSERT INTO product (kind, name, document, made_utc) VALUES (?, ?, ?, ?)",
-                (kind, name, to_json(dict(document)), utc_now()),
+                (kind, name, to_json(dict(document)), made_utc or utc_now()),
             )
             return self._connection.last_insert_rowid()
 

@@ -14,6 +14,7 @@ COMMANDS = (
     "levels",
     "rehearse",
     "run",
+    "resume",
     "show",
     "derive",
     "export",

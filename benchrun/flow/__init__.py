@@ -6,6 +6,7 @@ known.py       calibrations and levellings in a folder of runs: which there are,
 measure.py     -> readings in an archive, committed before anything else; then produce.py
 produce.py     archive -> results -> files, from the archive alone
 rehearse.py    the same on simulated instruments;   run.py on real ones
+resume.py      a run that was cut off, taken up;    unchanged.py what must be as it was
 report.py, subject.py   an archive -> one page that opens offline
 simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way
 """
@@ -18,6 +19,7 @@ from benchrun.flow.produce import derive_again
 from benchrun.flow.rehearse import rehearse
 from benchrun.flow.report import report
 from benchrun.flow.result import LevelReport, RunResult
+from benchrun.flow.resume import resume
 from benchrun.flow.run import run
 from benchrun.flow.show import export, show
 from benchrun.flow.simulate import ServedBench, simulate
@@ -35,6 +37,7 @@ __all__ = [
     "plan_levels",
     "rehearse",
     "report",
+    "resume",
     "run",
     "schema",
     "show",

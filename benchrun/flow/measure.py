@@ -15,12 +15,13 @@ from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software_versions
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
-from benchrun.errors import DiskError, UnsafeError
+from benchrun.drivers.registry import Registry
+from benchrun.errors import DiskError, IdentityError, UnsafeError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
 from benchrun.flow.known import Made, given, known_of, newest, require_names
-from benchrun.flow.planning import plan
+from benchrun.flow.planning import Known, plan
 from benchrun.flow.produce import keep_used, produce
 from benchrun.flow.result import RunResult
 from benchrun.flow.summary import rows_of
@@ -30,12 +31,17 @@ if TYPE_CHECKING:
     from benchrun.drivers.open_bench import OpenBench
 
 
+#: What an instrument says of itself for as long as it is the same instrument.
+IDENTITY = ("maker", "model", "serial", "firmware", "options")
+
+
 @dataclass(frozen=True, slots=True)
 class Setting:
     """Where a measurement happens: folder of runs, clock, way to the instruments, and who is told and asked.
 
     `visa` is a backend word or a VISA library; `addresses` stand in for those of the bench file; `start_ns` is where
-    in the simulated bench's time a rehearsal begins.
+    in the simulated bench's time a rehearsal begins. For a run that is taken up again `start` is its first reading, and
+    `who` are the instruments that must answer, as the archive keeps them.
     """
 
     runs: Path
@@ -48,6 +54,8 @@ class Setting:
     prompter: Prompter
     note: str = ""
     start_ns: int = 0
+    start: int = 0
+    who: Mapping[str, Mapping[str, Any]] | None = None
 
 
 def given_calibrations(inputs: Inputs, origin: str, chosen: Mapping[str, Path]) -> dict[str, Made]:
@@ -100,6 +108,13 @@ def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Set
     _copy_files(inputs, folder)
     setting.listener.begin(inputs.recipe.title, len(schedule), setting.note)
     writer = _begun(inputs, schedule, made, setting, folder)
+    return carry_out(writer, inputs, schedule, known_of(made), setting, folder)
+
+
+def carry_out(
+    writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, known: Known, setting: Setting, folder: Path
+) -> RunResult:
+    """Acquire into an archive that is there, close it, derive and save. Raises BenchrunError."""
     state: State = "failed"
     try:
         state = _acquired(writer, inputs, schedule, setting).state
@@ -111,7 +126,7 @@ def _measured(inputs: Inputs, schedule: Schedule, made: list[Made], setting: Set
         setting.listener.end()
     try:
         writer.close(state)
-        produced = produce(inputs, folder, known_of(made))
+        produced = produce(inputs, folder, known)
     except DiskError as error:
         raise DiskError(f"{str(error).rstrip('.')}. Then `benchrun derive {folder}` makes the results.") from error
     return RunResult(folder, state, 0, rows_of(produced.results), produced.results.notes)
@@ -171,24 +186,48 @@ def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, setting
     with Bus(setting.visa) as bus:
         bench = open_bench(inputs.bench, inputs.registry, bus, clock, setting.addresses or None)
         try:
-            _keep_identities(writer, bench, inputs, clock)
-            return acquire(schedule, bench, inputs.bench, steps, writer, clock, setting.prompter, setting.listener)
+            _keep_identities(writer, bench, inputs, setting)
+            return acquire(
+                schedule, bench, inputs.bench, steps, writer, clock, setting.prompter, setting.listener,
+                start=setting.start,
+            )  # fmt: skip
         finally:
             bench.close()
 
 
-def _keep_identities(writer: ArchiveWriter, bench: OpenBench, inputs: Inputs, clock: Clock) -> None:
-    """Write down who answers. Raises DiskError, UnsafeError: the bench is made safe then, as it is by acquire later."""
+def _keep_identities(writer: ArchiveWriter, bench: OpenBench, inputs: Inputs, setting: Setting) -> None:
+    """Write down who answers, or see that it is who answered before.
+
+    Raises DiskError, IdentityError, UnsafeError: the bench is made safe then, as it is by acquire later.
+    """
     from benchrun.acquire.outputs import outputs_of
     from benchrun.acquire.safe_state import make_safe
 
     try:
-        writer.update(identities=identities_of(bench))
-    except DiskError as error:
-        report = make_safe(bench, outputs_of(inputs.bench), clock)
+        if setting.who is None:
+            writer.update(identities=identities_of(bench))
+        else:
+            require_same(identities_of(bench), setting.who)
+    except (DiskError, IdentityError) as error:
+        report = make_safe(bench, outputs_of(inputs.bench), setting.clock)
         made = f"Made safe: {report.text}" if report.safe else report.text
         text = f"{str(error).rstrip('.')}.\n{made}."
-        raise (DiskError(text) if report.safe else UnsafeError(text)) from error
+        raise (type(error)(text) if report.safe else UnsafeError(text)) from error
+
+
+def require_same(answered: Mapping[str, Mapping[str, Any]], before: Mapping[str, Mapping[str, Any]]) -> None:
+    """Raise IdentityError where others answer than the instruments that the readings before came from."""
+    changed = [
+        f"{name} answers with {field} '{now.get(field, '')}', and was '{before[name].get(field, '')}'"
+        for name, now in answered.items()
+        for field in IDENTITY
+        if name in before and now.get(field, "") != before[name].get(field, "")
+    ]
+    if changed:
+        raise IdentityError(
+            f"other instruments than this run began with: {'; '.join(changed)}. Readings of two benches are not mixed: "
+            "put back what was there, or begin a new run"
+        )
 
 
 def identities_of(bench: OpenBench) -> dict[str, dict[str, Any]]:
@@ -196,10 +235,14 @@ def identities_of(bench: OpenBench) -> dict[str, dict[str, Any]]:
     return {name: asdict(identity) for name, identity in bench.identities().items()}
 
 
+def plugin_versions(registry: Registry) -> list[tuple[str, str]]:
+    """Return each plugin, by its name and distribution, with its version."""
+    return [(f"{plugin.name} ({plugin.distribution})", plugin.version) for plugin in registry.plugins]
+
+
 def meta_of(inputs: Inputs, schedule: Schedule, setting: Setting) -> Meta:
     """Return what the archive says of a run before it begins."""
     device = inputs.recipe.device
-    plugins = [(f"{plugin.name} ({plugin.distribution})", plugin.version) for plugin in inputs.registry.plugins]
     return Meta(
         run_id=str(uuid.uuid4()),
         title=inputs.recipe.title,
@@ -211,6 +254,6 @@ def meta_of(inputs: Inputs, schedule: Schedule, setting: Setting) -> Meta:
         origin=setting.origin,
         seed=setting.seed,
         device={"part": device.part, "serial": device.serial or ""} if device else {},
-        versions=software_versions(plugins),
+        versions=software_versions(plugin_versions(inputs.registry)),
         operator=operator_name(),
     )

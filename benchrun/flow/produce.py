@@ -126,18 +126,24 @@ def derive_again(run: Path, calibrations: Mapping[str, Path]) -> RunResult:
     return RunResult(produced.folder, meta.state, 0, rows_of(produced.results), produced.results.notes)
 
 
-def used(archive: ArchiveReader) -> dict[str, Calibration | Levelling]:
-    """Return the calibrations and levellings that a run's newest result was made with, by name."""
+def used(archive: ArchiveReader, result: str | None = None) -> dict[str, Calibration | Levelling]:
+    """Return the calibrations and levellings that a run's newest result was made with, by name.
+
+    `result` names another one; "" stands for what the run began with, before there was any.
+    """
     known: dict[str, Calibration | Levelling] = {}
-    for product in archive.products(USED["calibration"]):
-        known[product.name] = Calibration.from_document(product.document["document"])
-    for product in archive.products(USED["levelling"]):
-        known[product.name] = Levelling.from_document(product.document["document"])
+    for kind, understood in (("calibration", Calibration.from_document), ("levelling", Levelling.from_document)):
+        for product in archive.products(USED[kind]):
+            if result in (None, product.document["result"]):
+                known[product.name] = understood(product.document["document"])
     return known
 
 
-def restored(meta: Meta, place: Path) -> Inputs:
-    """Write the files of a run into `place` and read them again, so that nothing but the archive is needed."""
+def restored(meta: Meta, place: Path, bench: Path | None = None) -> Inputs:
+    """Write the files of a run into `place` and read them again, so that nothing but the archive is needed.
+
+    `bench` is a file to be read in place of the archive's own. Raises FolderError, FileProblemsError.
+    """
     for name, text in meta.files.items():
         path = place / name
         if not path.resolve().is_relative_to(place.resolve()):
@@ -145,4 +151,4 @@ def restored(meta: Meta, place: Path) -> Inputs:
         path.parent.mkdir(parents=True, exist_ok=True)
         path.write_text(text, encoding="utf-8", newline="")
     kit = next((place / name for name in meta.files if name.endswith(".kit.yaml")), None)
-    return load_inputs(place / meta.recipe, place / meta.bench, kit)
+    return load_inputs(place / meta.recipe, bench or place / meta.bench, kit)

@@ -63,7 +63,7 @@ def _hash(recipe: Recipe, bench: Bench, steps: Mapping[str, StepSpec], drive_gai
     content = {
         "schedule": VERSION,
         "recipe": recipe.document(),
-        "bench": _without_ways(json.loads(bench.canonical())),
+        "bench": without_ways(json.loads(bench.canonical())),
         "drive": _without_dates(drive_gain.to_document()) if drive_gain is not None else None,
         "steps": {key: [steps[key].expand.__module__, steps[key].model.model_json_schema()] for key in used},
     }
@@ -71,7 +71,7 @@ def _hash(recipe: Recipe, bench: Bench, steps: Mapping[str, StepSpec], drive_gai
     return hashlib.sha256(text.encode()).hexdigest()
 
 
-def _without_ways(bench: dict[str, Any]) -> dict[str, Any]:
+def without_ways(bench: dict[str, Any]) -> dict[str, Any]:
     """Leave out how the instruments are reached: the same happens in-process, over HiSLIP and over raw sockets."""
     instruments = {name: {**one, "address": ""} for name, one in bench["instruments"].items()}
     return {key: value for key, value in bench.items() if key not in _WAYS} | {"instruments": instruments}
