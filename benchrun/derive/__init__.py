@@ -15,6 +15,7 @@ from benchrun.derive.contributions import (
     reading_limits_db,
     residual_error,
 )
+from benchrun.derive.hot_uncertainty import HotReflection, RawSidebands, hot_reflection
 from benchrun.derive.one_path import OnePathTerms, Response, solve_one_path
 from benchrun.derive.one_port import ErrorTerms
 from benchrun.derive.one_port_uncertainty import reflection_spread, sensitivity, terms_spread
@@ -40,8 +41,10 @@ from benchrun.derive.uncertainty import (
 
 __all__ = [
     "ErrorTerms",
+    "HotReflection",
     "HotTwoPort",
     "OnePathTerms",
+    "RawSidebands",
     "Response",
     "Scattering",
     "Sidebands",
@@ -61,6 +64,7 @@ __all__ = [
     "free_of_port_1",
     "from_excitations",
     "from_probe_states",
+    "hot_reflection",
     "inside",
     "line_phases",
     "margin",

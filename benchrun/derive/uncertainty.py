@@ -206,7 +206,8 @@ def polar(value: npt.ArrayLike, spread: Spread, which: int = 0) -> Polar:
 
 def _sandwich(left: ComplexArray, middle: ComplexArray, right: ComplexArray) -> ComplexArray:
     """Return left middle right^T (m, m, ..., F), planar."""
-    return np.asarray(np.einsum("ij...,jk...,lk...->il...", left, middle, right))
+    half = np.einsum("jk...,lk...->jl...", middle, right)
+    return np.asarray(np.einsum("ij...,jl...->il...", left, half))
 
 
 def _results(function: Function, values: Sequence[ComplexArray]) -> ComplexArray:
