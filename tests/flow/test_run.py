@@ -1,4 +1,4 @@
-"""A run on instruments that the tool takes for real: simulated ones behind HiSLIP, and no word of it in the bench file."""
+"""A run on instruments that the tool takes for real: simulated ones behind HiSLIP, with no word of it in the file."""
 
 from __future__ import annotations
 
