@@ -73,7 +73,7 @@ def test_the_shell_completes_commands_without_heavy_imports():
 def test_the_shell_completes_commands():
     ended = subprocess.run(
         [sys.executable, "-m", "benchrun"],
-        env=os.environ | {"_BENCHRUN_COMPLETE": "bash_complete", "COMP_WORDS": "benchrun re", "COMP_CWORD": "1"},
+        env=os.environ | {"_BENCHRUN_COMPLETE": "bash_complete", "COMP_WORDS": "benchrun reh", "COMP_CWORD": "1"},
         capture_output=True, text=True, check=True,
     )  # fmt: skip
     assert ended.stdout.split() == ["plain,rehearse"]

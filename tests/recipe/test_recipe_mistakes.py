@@ -342,13 +342,13 @@ def test_the_recipe_is_right(told: Told) -> None:
             "  - touchstone: {}",
             "  - touchston: {}",
             "touchston",
-            "there is no entry of save 'touchston'. Did you mean 'touchstone'? There is: touchstone, summary.",
+            "there is no entry of save 'touchston'. Did you mean 'touchstone'? There is: touchstone, summary, report.",
         ),
         (
             "  - touchstone: {}",
             "  - touchstone",
             "touchstone",
-            "an entry of save is one key with its values; known: touchstone, summary.",
+            "an entry of save is one key with its values; known: touchstone, summary, report.",
         ),
         (
             'what: "{standard}"',
