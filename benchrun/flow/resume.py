@@ -258,7 +258,7 @@ def _require_alone(writer: SeamWriter, seam: Seam, folder: Path) -> None:
 def _said(seam: Seam, planned: int) -> str:
     if seam.first >= planned:
         return f"Resumed: all {planned} readings are there; what comes after them is done."
-    again = "" if seam.again is None else f", after reading {seam.again} was taken again"
+    again = "" if seam.again is None else f"; reading {seam.again} is taken again before it"
     return f"Resumed at reading {seam.first} of {planned}{again}."
 
 
