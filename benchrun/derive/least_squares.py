@@ -12,6 +12,9 @@ import numpy as np
 
 from benchrun.contract.capture import ComplexArray, FloatArray
 
+#: Frequencies solved at once: so many that numpy's own time does not count, so few that all fits in a cache.
+BLOCK = 400
+
 
 class Solution(NamedTuple):
     """x (n, ..., F) that minimises |A x - y|, and how independent the columns are, (..., F) between 0 and 1.
@@ -34,20 +37,37 @@ def least_squares(columns: ComplexArray, right: ComplexArray) -> Solution:
     >>> bool(np.allclose(found.x, [[2] * 3, [-1j] * 3], rtol=0, atol=1e-14))
     True
     """
-    n = len(columns)
-    size = np.sqrt(np.sum(np.abs(columns) ** 2, axis=1))
+    shape = columns.shape
+    columns, right = columns.reshape(*shape[:2], -1), right.reshape(shape[1], -1)
+    found = Solution(np.empty((shape[0], columns.shape[-1]), np.complex128), np.empty(columns.shape[-1]))
+    memory = np.empty((2, shape[0] + 1, shape[1], min(BLOCK, columns.shape[-1])), np.complex128)
     with np.errstate(divide="ignore", invalid="ignore"):
-        work = np.concatenate([columns / size[:, None], right[None]])
-        left = np.empty(size.shape)
-        projections: list[ComplexArray] = []
-        for k in range(n):
-            left[k] = np.sqrt(np.sum(np.abs(work[k]) ** 2, axis=0))
-            direction = work[k] / left[k]
-            onto = np.sum(np.conj(direction) * work[k + 1 :], axis=1)
-            work[k + 1 :] -= direction * onto[:, None]
-            projections.append(onto)
-        x = np.empty(size.shape, np.complex128)
-        for k in reversed(range(n)):
-            rest = projections[k][-1] - np.sum(projections[k][:-1] * x[k + 1 :], axis=0)
-            x[k] = rest / left[k]
-        return Solution(np.asarray(x / size), np.nan_to_num(np.min(left, axis=0)))
+        for first in range(0, columns.shape[-1], BLOCK):
+            block = slice(first, first + BLOCK)
+            found.x[:, block], found.independence[block] = _block(columns[..., block], right[:, block], memory)
+    return Solution(found.x.reshape(shape[0], *shape[2:]), np.nan_to_num(found.independence.reshape(shape[2:])))
+
+
+def _block(columns: ComplexArray, right: ComplexArray, memory: ComplexArray) -> Solution:
+    """Solve for `columns` (n, N, f) and `right` (N, f) in `memory` (2, n + 1, N, at least f)."""
+    n = len(columns)
+    work, spare = memory[..., : right.shape[-1]]
+    size = _length(columns)
+    np.divide(columns, size[:, None], out=work[:n])
+    work[n] = right
+    left, projections = np.empty(size.shape), []
+    for k in range(n):
+        left[k] = _length(work[k])
+        direction, rest, product = work[k] / left[k], work[k + 1 :], spare[k + 1 :]
+        onto = np.sum(np.multiply(np.conj(direction), rest, out=product), axis=1)
+        rest -= np.multiply(direction, onto[:, None], out=product)
+        projections.append(onto)
+    x = np.empty(size.shape, np.complex128)
+    for k in reversed(range(n)):
+        x[k] = (projections[k][-1] - np.sum(projections[k][:-1] * x[k + 1 :], axis=0)) / left[k]
+    return Solution(np.asarray(x / size), np.asarray(np.min(left, axis=0)))
+
+
+def _length(vectors: ComplexArray) -> FloatArray:
+    """Return the length of `vectors` (..., N, f), (..., f)."""
+    return np.asarray(np.sqrt(np.sum(vectors.real**2 + vectors.imag**2, axis=-2)))
