@@ -15,6 +15,7 @@ from hypothesis import strategies as st
 
 from benchrun.archive import Event
 from benchrun.bench import load_bench
+from benchrun.derive.optimum_load import delivered_w, optimum_load
 from benchrun.derive.results import OnePortData, Results, Table
 from benchrun.drivers.registry import load_registry
 from benchrun.errors import InputError
@@ -23,6 +24,7 @@ from benchrun.save.report import Subject, libraries, report_html
 from benchrun.save.report.charts import embedded, explorer
 from benchrun.save.report.figures import cells, duration_text, figure, fixed, heading, named
 from benchrun.save.report.grids import key_figures, key_names, thinned
+from benchrun.save.report.loads import source_of
 from benchrun.save.report.receivers import TOGETHER, against, receiver_levels
 from tests.archive.readings import META, reading
 from tests.save.pages import MINUS, Page, decimals, number, same_to_the_printed_digit
@@ -319,6 +321,25 @@ def test_readings_without_waves_have_no_levels() -> None:
     assert receiver_levels({"power": [bare]}, None) == []
     assert against([bare], "drive_dbm") == []
     assert "Receiver levels" not in page(Subject(META, {"power": [bare]}, "")).text
+
+
+# Other loads
+
+
+@given(
+    st.complex_numbers(max_magnitude=10.0, min_magnitude=0.1),
+    st.complex_numbers(max_magnitude=0.6),
+    st.complex_numbers(max_magnitude=0.35),
+    st.complex_numbers(max_magnitude=0.9),
+)
+def test_the_device_behind_an_optimum_load_takes_into_any_load_what_derive_says(
+    b: complex, s: complex, t: complex, other: complex
+) -> None:
+    one, two, three = (np.array([value]) for value in (b, s, t))
+    best = optimum_load(one, two, three)
+    again = source_of(two, three, best.reflection, best.power_w)
+    load = np.array([other])
+    np.testing.assert_allclose(delivered_w(load, again, two, three), delivered_w(load, one, two, three), rtol=1e-4)
 
 
 # Huge runs

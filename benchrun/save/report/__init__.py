@@ -6,6 +6,7 @@ grids.py       result tables as cells; what is thinned out in huge runs
 receivers.py   levels at the receivers, from the raw waves
 overview.py    what was measured, with what, how it ended; the log
 findings.py    flags, bounds, scalars over the run
+loads.py       what other loads would take
 planes.py      calibrations and levellings
 charts.py      what the script draws
 page.py        everything put into page.html

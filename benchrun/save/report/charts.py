@@ -8,11 +8,12 @@ from typing import Any
 
 import numpy as np
 
-from benchrun.contract.capture import FloatArray
+from benchrun.contract.capture import ComplexArray, FloatArray
 from benchrun.derive.results import Column, Table
 from benchrun.save.report.figures import figure, heading, unit_of
 from benchrun.save.report.findings import Scalar
 from benchrun.save.report.grids import MOST_POINTS, Rows, key_names, thinned
+from benchrun.save.report.loads import OPTIMUM, REFLECTION, T22_PHASE, has_loads, polar, source_wave
 from benchrun.save.report.planes import Curve, Plane
 from benchrun.save.report.receivers import TOGETHER, Trace
 
@@ -42,7 +43,7 @@ PANELS: Sequence[tuple[str, str, tuple[tuple[str, str, str], ...]]] = (
     ("Power at the plane", "dBm", (("power_dbm", "power", ""),)),
     ("Gain of the chain", "dB", (("chain_gain_db", "gain of the chain", ""),)),
 )
-SMITH = ("output_reflection", "optimum_load_extrapolated")
+SMITH = (REFLECTION, OPTIMUM)
 _KNOWN = {key for _, _, lines in PANELS for key, _, _ in lines} | {f"{name}_magnitude_ratio" for name in SMITH}
 
 
@@ -51,7 +52,6 @@ def explorer(table: Table) -> dict[str, Any] | None:
     shown = thinned(table, MOST_POINTS, "drawn")
     panels = _panels(table)
     smith = {name: _polar(table, name, shown.rows) for name in SMITH if f"{name}_phase_deg" in table.columns}
-    polar = _t22(table, shown.rows)
     if not (panels or smith) or not len(table):
         return None
     return {
@@ -59,7 +59,8 @@ def explorer(table: Table) -> dict[str, Any] | None:
         "note": shown.note,
         "keys": [_key(key, table.columns[key][shown.rows]) for key in key_names(table)],
         "smith": smith,
-        "polar": polar,
+        "polar": _t22(table, shown.rows),
+        "source": _parts(source_wave(table)[shown.rows]) if has_loads(table) else None,
         "panels": panels,
         "columns": {
             key: _numbers(table.columns[key][shown.rows].astype(np.float64))
@@ -143,24 +144,24 @@ def _key(key: str, column: Column) -> dict[str, Any]:
 
 
 def _polar(table: Table, name: str, rows: Rows) -> dict[str, Any]:
-    magnitude = table.columns[f"{name}_magnitude_ratio"][rows].astype(np.float64)
-    phase = np.deg2rad(table.columns[f"{name}_phase_deg"][rows].astype(np.float64))
     bound = table.columns.get(f"{name}_bound_ratio")
     return {
-        "re": _numbers(magnitude * np.cos(phase)),
-        "im": _numbers(magnitude * np.sin(phase)),
+        **_parts(polar(table, name)[rows]),
         "bound": None if bound is None else _numbers(bound[rows].astype(np.float64)),
     }
 
 
 def _t22(table: Table, rows: Rows) -> dict[str, Any] | None:
-    phase = "t22_phase_from_twice_b2_pump_deg"
-    if phase not in table.columns:
+    if T22_PHASE not in table.columns:
         return None
     return {
         "r": _numbers(table.columns["t22_magnitude_ratio"][rows].astype(np.float64)),
-        "deg": _numbers(table.columns[phase][rows].astype(np.float64)),
+        "deg": _numbers(table.columns[T22_PHASE][rows].astype(np.float64)),
     }
+
+
+def _parts(values: ComplexArray) -> dict[str, Any]:
+    return {"re": _numbers(values.real), "im": _numbers(values.imag)}
 
 
 def _over_frequency(title: str, unit: str, curves: Sequence[Curve]) -> dict[str, Any] | None:

@@ -80,6 +80,7 @@ def _result(table: Table, drawn: _Drawn) -> dict[str, Any]:
         "keys": [] if explored is None else explored["keys"],
         "polar": bool(explored and explored["polar"]),
         "smith": bool(explored and explored["smith"]),
+        "loads": bool(explored and explored["source"]),
         "panels": [] if explored is None else explored["panels"],
         "drawn_note": "" if explored is None else explored["note"],
         "figures": key_figures(table),

@@ -73,6 +73,14 @@
     return {type: "scattersmith", name: "bound: S22 lies inside", real, imag, mode: "lines", line: {color: ACCENT, width: 1, dash: "dot"}, hoverinfo: "skip"};
   }
 
+  // Power that a passive load g takes: |b|^2 (1 - |g|^2), b = ((1 - s g)* B + t g* B*) / (|1 - s g|^2 - |t g|^2).
+  function delivered(device, re, im) {
+    const {b, s, t} = device, u = [1 - s[0] * re + s[1] * im, -s[0] * im - s[1] * re], v = [t[0] * re + t[1] * im, t[1] * re - t[0] * im];
+    const wave = [u[0] * b[0] + u[1] * b[1] + v[0] * b[0] + v[1] * b[1], u[0] * b[1] - u[1] * b[0] + v[1] * b[0] - v[0] * b[1]];
+    const under = u[0] ** 2 + u[1] ** 2 - v[0] ** 2 - v[1] ** 2;
+    return (wave[0] ** 2 + wave[1] ** 2) / under ** 2 * (1 - re ** 2 - im ** 2);
+  }
+
   class Explorer {
     constructor(element, chart) {
       Object.assign(this, {element, chart, along: chart.keys.findLastIndex((key) => key.values.length > 1)});
@@ -100,10 +108,10 @@
         return label;
       };
       pick("Show against", varied.map((k) => [k, this.chart.keys[k].name]), this.along, (k) => { this.along = k; });
-      this.pickers = varied.map((k) => [k, pick(`at ${this.chart.keys[k].name}`, this.chart.keys[k].texts.map((text, n) => [n, text]), this.chosen[k], (n) => { this.chosen[k] = n; })]);
+      this.pickers = varied.map((k) => [k, pick("", this.chart.keys[k].texts.map((text, n) => [n, text]), this.chosen[k], (n) => { this.chosen[k] = n; })]);
       this.show();
     }
-    show() { for (const [k, label] of this.pickers) label.hidden = k === this.along, label.style.display = label.hidden ? "none" : ""; }
+    show() { for (const [k, label] of this.pickers) label.firstChild.textContent = `${k === this.along ? "with a ring at" : "at"} ${this.chart.keys[k].name} `; }
     rows(chosen) {
       const keys = this.chart.keys, found = [];
       for (let row = 0; row < this.count; row += 1) {
@@ -124,18 +132,21 @@
     }
     draw() {
       const rows = this.rows(this.chosen), family = this.behind(), key = this.chart.keys[this.along], at = this.at();
-      const view = {rows, family, key, at, x: rows.map((row) => key.values[key.of[row]])};
+      const mark = rows.find((row) => key.of[row] === this.chosen[this.along]);
+      const view = {rows, family, key, at, mark, x: rows.map((row) => key.values[key.of[row]])};
       this.legend(view);
       for (const figure of this.element.querySelectorAll("figure")) {
         if (figure.dataset.part === "smith") this.smith(figure, view);
+        if (figure.dataset.part === "plane") this.plane(figure, view);
         if (figure.dataset.part === "polar") this.polar(figure, view);
+        if (figure.dataset.part === "loads") this.loads(figure, view);
         if (figure.dataset.part === "panel") this.panel(figure, this.chart.panels[Number(figure.dataset.panel)], view);
       }
     }
     legend(view) {
       const text = this.element.querySelector(".legend"), {key, families} = view.family;
       text.hidden = !view.at;
-      text.textContent = view.at ? `Thick: ${view.at}. ` : "";
+      text.textContent = `Thick: ${view.at}. Ring: ${view.key.name} ${view.key.texts[this.chosen[this.along]]}. `;
       if (families.length < 2) return;
       const bar = document.createElement("span");
       bar.className = "ramp";
@@ -157,12 +168,40 @@
         if (own.bound && view.rows.length) traces.push(circles(own, view.rows));
         traces.push(main(own, "output reflection", ACCENT, "solid", "circle"));
       }
+      if (own && view.mark !== undefined) traces.push(smithTrace(own, [view.mark], {mode: "markers", showlegend: false, marker: {size: 13, symbol: "circle-open", color: INK, line: {width: 2}}}));
       if (load) traces.push(main(load, "optimum load (extrapolated)", INK, "dash", "diamond-open"));
       const beyond = own ? view.rows.filter((row) => own.re[row] !== null && Math.hypot(own.re[row], own.im[row]) >= 1).length : 0;
       const title = `Output reflection against ${view.key.name}${beyond ? ` (${beyond} at 1 or above are outside)` : ""}`;
       const quietAxis = {gridcolor: LINE, linecolor: QUIET, tickfont: {size: 10, color: QUIET}};
-      draw(figure, traces, layout(title, {showlegend: true, margin: {l: 24, r: 24, t: 52, b: 56},
+      draw(figure, traces, layout(title, {showlegend: true, margin: {l: 24, r: 24, t: 52, b: 68},
         smith: {bgcolor: "#ffffff", realaxis: {...quietAxis, tickvals: [0.2, 0.5, 1, 2, 5]}, imaginaryaxis: {...quietAxis, tickvals: [-5, -2, -1, -0.5, -0.2, 0, 0.2, 0.5, 1, 2, 5]}}}));
+    }
+    plane(figure, view) {
+      const own = this.chart.smith.output_reflection, pick = (rows) => ({x: rows.map((row) => own.re[row]), y: rows.map((row) => own.im[row])});
+      const traces = view.family.families.map((one) => ({type: "scatter", ...pick(one.rows), mode: mode(one.rows.length), line: {color: one.colour, width: 1}, marker: {size: 3}, hoverinfo: "skip"}));
+      const shapes = !own.bound ? [] : evenly(view.rows, CIRCLES).filter((row) => own.re[row] !== null && own.bound[row] !== null).map((row) => ({type: "circle", line: {color: ACCENT, width: 1, dash: "dot"},
+        x0: own.re[row] - own.bound[row], x1: own.re[row] + own.bound[row], y0: own.im[row] - own.bound[row], y1: own.im[row] + own.bound[row]}));
+      traces.push({type: "scatter", ...pick(view.rows), mode: mode(view.rows.length), line: {color: ACCENT, width: 2.6}, marker: {size: 6}, text: view.rows.map((row) => this.place(view, row)),
+        hovertemplate: "%{x:.4f} %{y:+.4f} j<br>%{text}<extra></extra>"});
+      if (view.mark !== undefined) traces.push({type: "scatter", ...pick([view.mark]), mode: "markers", hoverinfo: "skip", marker: {size: 13, symbol: "circle-open", color: INK, line: {width: 2}}});
+      draw(figure, traces, layout(`Close-up${shapes.length ? "; S22 lies inside the dotted circles" : ""}`, {shapes, xaxis: axis("real part"), yaxis: axis("imaginary part", {scaleanchor: "x"})}));
+    }
+    loads(figure, view) {
+      const n = 121, side = Array.from({length: n}, (_, k) => -1 + 2 * k / (n - 1)), row = view.mark, t = this.chart.polar, {output_reflection: s, optimum_load_extrapolated: best} = this.chart.smith;
+      const where = [view.at, `${view.key.name} ${view.key.texts[this.chosen[this.along]]}`].filter(Boolean).join(", "), title = "Power into other loads, dB (extrapolated)";
+      const range = {range: [-1.05, 1.05], zeroline: true}, edge = side.map((_, k) => 2 * Math.PI * k / (n - 1));
+      const traces = [{type: "scatter", x: edge.map(Math.cos), y: edge.map(Math.sin), mode: "lines", line: {color: QUIET, width: 1}, hoverinfo: "skip"}];
+      const known = row !== undefined && this.chart.source.re[row] !== null;
+      if (known) {
+        const angle = t.deg[row] * Math.PI / 180, device = {b: [this.chart.source.re[row], this.chart.source.im[row]], s: [s.re[row], s.im[row]], t: [t.r[row] * Math.cos(angle), t.r[row] * Math.sin(angle)]};
+        const most = delivered(device, best.re[row], best.im[row]);
+        const z = side.map((y) => side.map((x) => x * x + y * y < 1 ? 10 * Math.log10(delivered(device, x, y) / most) : null));
+        traces.push({type: "contour", x: side, y: side, z, showscale: false, contours: {coloring: "none", showlabels: true, start: -3, end: -0.5, size: 0.5, labelfont: {size: 11, color: INK}}, line: {color: SERIES[0], width: 1.3},
+          hovertemplate: "load %{x:.2f} %{y:+.2f} j<br>%{z:.2f} dB<extra></extra>"});
+        traces.push({type: "scatter", x: [best.re[row]], y: [best.im[row]], mode: "markers", marker: {size: 10, symbol: "diamond-open", color: INK, line: {width: 2}},
+          hovertemplate: "optimum load (extrapolated)<br>%{x:.3f} %{y:+.3f} j<extra></extra>"});
+      }
+      draw(figure, traces, layout(title, {xaxis: axis(`real part of the load; at ${where}${known ? "" : ": no optimum load"}`, range), yaxis: axis("imaginary part", {...range, scaleanchor: "x"})}));
     }
     polar(figure, view) {
       const t = this.chart.polar, pick = (rows) => ({r: rows.map((row) => t.r[row]), theta: rows.map((row) => t.deg[row])});
