@@ -50,7 +50,27 @@ def hot_reflection(
     crosstalk. The phase of T22' means something only where the tones were captured coherently; its magnitude does
     always. Raises DataSetError where the image is as strong as the probe.
     """
-    upper, lower = _waves(terms, raw)
+    shape = np.broadcast_shapes(*(np.shape(wave) for wave in raw))
+    waves = [np.broadcast_to(wave, shape) for wave in raw]
+    found = HotReflection(np.empty(shape, np.complex128), np.empty(shape, np.complex128), _empty(2, shape))
+    noise = None if readings is None else Spread(*(np.broadcast_to(part, (4, 4, *shape)) for part in readings))
+    for at in np.ndindex(shape[:-1]):  # drive by drive, because one drive fits in a cache
+        here = RawSidebands(*(wave[at] for wave in waves))
+        own = None if noise is None else Spread(*(part[(slice(None), slice(None), *at)] for part in noise))
+        found.s22[at], found.t22[at], spread = _one_drive(terms, here, term_spread, own)
+        for whole, part in zip(found.spread, spread, strict=True):
+            whole[(slice(None), slice(None), *at)] = part
+    return found
+
+
+def _empty(n: int, shape: tuple[int, ...]) -> Spread:
+    return Spread(*(np.empty((n, n, *shape), np.complex128) for _ in range(2)))
+
+
+def _one_drive(terms: ErrorTerms, raw: RawSidebands, term_spread: Spread, readings: Spread | None) -> HotReflection:
+    """Return what hot_reflection does for waves (F,)."""
+    upper = _wave(terms, raw.measured_upper, raw.reference_upper, 3)
+    lower = _wave(terms, raw.measured_lower, raw.reference_lower, 5)
     s22, t22 = two_sidebands(upper.a, upper.b, lower.a, lower.b)
     det = np.abs(upper.a) ** 2 - np.abs(lower.a) ** 2
     weights = np.array([[np.conj(upper.a), -np.conj(lower.a)], [-lower.a, upper.a]]) / det
@@ -70,12 +90,6 @@ class _Wave(NamedTuple):
     a: ComplexArray
     b_by: ComplexArray
     a_by: ComplexArray
-
-
-def _waves(terms: ErrorTerms, raw: RawSidebands) -> tuple[_Wave, _Wave]:
-    """Return the upper and the lower sideband."""
-    upper = _wave(terms, raw.measured_upper, raw.reference_upper, 3)
-    return upper, _wave(terms, raw.measured_lower, raw.reference_lower, 5)
 
 
 def _wave(terms: ErrorTerms, m: ComplexArray, r: ComplexArray, place: int) -> _Wave:

@@ -12,8 +12,8 @@ import numpy as np
 
 from benchrun.contract.capture import ComplexArray, FloatArray
 
-#: Frequencies solved at once: so many that numpy's own time does not count, so few that all fits in a cache.
-BLOCK = 400
+#: Numbers worked on at once: so many that numpy's own time does not count, so few that they fit in a cache.
+BLOCK_NUMBERS = 50_000
 
 
 class Solution(NamedTuple):
@@ -40,10 +40,11 @@ def least_squares(columns: ComplexArray, right: ComplexArray) -> Solution:
     shape = columns.shape
     columns, right = columns.reshape(*shape[:2], -1), right.reshape(shape[1], -1)
     found = Solution(np.empty((shape[0], columns.shape[-1]), np.complex128), np.empty(columns.shape[-1]))
-    memory = np.empty((2, shape[0] + 1, shape[1], min(BLOCK, columns.shape[-1])), np.complex128)
+    at_once = max(1, min(BLOCK_NUMBERS // ((shape[0] + 1) * shape[1]), columns.shape[-1]))
+    memory = np.empty((2, shape[0] + 1, shape[1], at_once), np.complex128)
     with np.errstate(divide="ignore", invalid="ignore"):
-        for first in range(0, columns.shape[-1], BLOCK):
-            block = slice(first, first + BLOCK)
+        for first in range(0, columns.shape[-1], at_once):
+            block = slice(first, first + at_once)
             found.x[:, block], found.independence[block] = _block(columns[..., block], right[:, block], memory)
     return Solution(found.x.reshape(shape[0], *shape[2:]), np.nan_to_num(found.independence.reshape(shape[2:])))
 

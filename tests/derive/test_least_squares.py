@@ -40,3 +40,13 @@ def test_independence_is_a_sine():
     angle = np.array([0.3, 1e-4, np.pi / 2])
     columns = np.stack([np.stack([np.ones(3), np.zeros(3)]), np.stack([np.cos(angle), np.sin(angle)])]) + 0j
     np.testing.assert_allclose(least_squares(columns, columns[0]).independence, np.sin(angle), rtol=1e-9)
+
+
+def test_many_frequencies_are_solved_in_pieces_and_none_is_lost():
+    """4000 systems of 5 by 9, over drives and frequencies: more than fit into one piece; and none at all."""
+    rng = np.random.default_rng(4)
+    columns = rng.normal(size=(5, 9, 2, 2000)) + 1j * rng.normal(size=(5, 9, 2, 2000))
+    x = rng.normal(size=(5, 2, 2000)) + 1j * rng.normal(size=(5, 2, 2000))
+    found = least_squares(columns, np.sum(columns * x[:, None], axis=0))
+    np.testing.assert_allclose(found.x, x, rtol=0, atol=1e-11)
+    assert least_squares(columns[..., :0], columns[0, ..., :0]).x.shape == (5, 2, 0)
