@@ -22,7 +22,7 @@ from benchrun.flow.folders import require_run
 from benchrun.flow.inputs import Inputs, load_inputs
 from benchrun.flow.known import of_run, require_names
 from benchrun.flow.result import RunResult
-from benchrun.flow.subject import free_name, subject_of, wanted, write_page
+from benchrun.flow.subject import Held, free_name, hold, subject_of, wanted, write_page
 from benchrun.recipe.model import Entry
 from benchrun.save import save_results
 from benchrun.save.report import FILE_NAME, require_libraries
@@ -46,7 +46,8 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
     if wanted(inputs):
         require_libraries()
     with open_archive(run) as archive:
-        results = derived(inputs, archive, known)
+        held = hold(archive)
+    results = derived(inputs, held, known)
     folder = save_results(results, run, _kinds(inputs.recipe.save))
     with ArchiveWriter.append(run) as writer:
         for (kind, name), document in results.documents.items():
@@ -54,20 +55,20 @@ def produce(inputs: Inputs, run: Path, known: Mapping[str, Calibration | Levelli
         keep_used(writer, known, folder.name)
     if wanted(inputs):
         with open_archive(run) as archive:
-            subject = subject_of(archive, inputs.bench, known, results)
+            subject = subject_of(archive, held, inputs.bench, known, results)
         write_page(subject, free_name(folder / FILE_NAME))
     return Produced(results, folder)
 
 
-def derived(inputs: Inputs, archive: ArchiveReader, known: Mapping[str, Calibration | Levelling]) -> Results:
+def derived(inputs: Inputs, held: Held, known: Mapping[str, Calibration | Levelling]) -> Results:
     """Return the results of an archive's readings; nothing is written. Raises CalibrationError, DataSetError."""
     return derive(
         [Step(entry.kind, values_of(entry.model)) for entry in inputs.recipe.derive],
-        {name: list(archive.readings(name)) for name in archive.names},
+        held.readings,
         facts_of(inputs.bench, inputs.kit),
         known,
         definitions_of(inputs.kit),
-        provenance_of(archive.meta, archive.digest()),
+        provenance_of(held.meta, held.digest),
         inputs.kit.title if inputs.kit is not None else "",
     )
 

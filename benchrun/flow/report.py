@@ -12,7 +12,7 @@ from benchrun.derive.results import Results
 from benchrun.errors import BenchrunError, FolderError
 from benchrun.flow.folders import require_run
 from benchrun.flow.produce import derived, restored, used
-from benchrun.flow.subject import free_name, subject_of, write_page
+from benchrun.flow.subject import Held, free_name, hold, subject_of, write_page
 from benchrun.save.report import FILE_NAME, Subject, require_libraries
 
 
@@ -26,12 +26,12 @@ def report(run: Path, to: Path | None = None) -> Path:
     folder = require_run(run)
     path = free_name(folder / FILE_NAME) if to is None else _absent(to)
     with open_archive(folder) as archive, tempfile.TemporaryDirectory() as place:
-        subject = _subject(archive, Path(place))
+        subject = _subject(archive, hold(archive), Path(place))
     write_page(subject, path)
     return path
 
 
-def _subject(archive: ArchiveReader, place: Path) -> Subject:
+def _subject(archive: ArchiveReader, held: Held, place: Path) -> Subject:
     """Return what the report tells; where no result can be derived, the reason stands in its place."""
     known: dict[str, Calibration | Levelling] = {}
     bench, results, refusal = None, Results(), ""
@@ -39,10 +39,10 @@ def _subject(archive: ArchiveReader, place: Path) -> Subject:
         known = used(archive)
         inputs = restored(archive.meta, place)
         bench = inputs.bench
-        results = derived(inputs, archive, known) if archive.count else results
+        results = derived(inputs, held, known) if held.readings else results
     except BenchrunError as error:
         refusal = str(error).replace(f"{place}/", "")
-    return subject_of(archive, bench, known, results, refusal)
+    return subject_of(archive, held, bench, known, results, refusal)
 
 
 def _absent(to: Path) -> Path:

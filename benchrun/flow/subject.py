@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
-from benchrun.archive import ArchiveReader
+from benchrun.archive import ArchiveReader, Meta
 from benchrun.archive.meta import utc_now
 from benchrun.bench import Bench
+from benchrun.contract.reading import Reading
 from benchrun.derive.calibration import Calibration
 from benchrun.derive.levelling import Levelling
 from benchrun.derive.results import Results
@@ -19,6 +21,20 @@ from benchrun.save.report.libraries import ADVICE
 
 KIND = "report"
 Known = Mapping[str, Calibration | Levelling]
+
+
+@dataclass(frozen=True, slots=True)
+class Held:
+    """An archive's final readings by name, read once, with what says where they come from."""
+
+    meta: Meta
+    readings: Mapping[str, Sequence[Reading]]
+    digest: str
+
+
+def hold(archive: ArchiveReader) -> Held:
+    """Read an archive's readings. Raises FolderError."""
+    return Held(archive.meta, {name: list(archive.readings(name)) for name in archive.names}, archive.digest())
 
 
 def wanted(inputs: Inputs) -> bool:
@@ -36,14 +52,14 @@ def require_report(inputs: Inputs) -> None:
 
 
 def subject_of(
-    archive: ArchiveReader, bench: Bench | None, known: Known, results: Results, refusal: str = ""
+    archive: ArchiveReader, held: Held, bench: Bench | None, known: Known, results: Results, refusal: str = ""
 ) -> Subject:
     """Return everything that a report tells of an archive; `refusal` says why there are no results."""
     made = {one.name: one for document in results.documents.values() if (one := _understood(document)) is not None}
     return Subject(
-        meta=archive.meta,
-        readings={name: list(archive.readings(name)) for name in archive.names},
-        digest=archive.digest(),
+        meta=held.meta,
+        readings=held.readings,
+        digest=held.digest,
         events=archive.log(),
         repeated=archive.count_all - archive.count,
         bench=bench,

@@ -13,9 +13,9 @@ from benchrun.save.report.figures import Heading, cells, heading, named
 
 FREQUENCY = "frequency_hz"
 #: More rows than this are not printed: a page must open, and summary.csv has them all.
-MOST_ROWS = 6_000
+MOST_ROWS = 4_000
 #: More points than this are not drawn.
-MOST_POINTS = 20_000
+MOST_POINTS = 12_000
 #: What key figures do without, by the end of the column's name: it stands in the table of all points.
 NO_KEY_FIGURE = (
     "pump_frequency_hz",
