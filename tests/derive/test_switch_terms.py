@@ -32,10 +32,14 @@ def test_any_two_independent_excitations_give_the_ratios(seed):
     make.assert_equal(from_excitations(first, second), ratios.matrices(), 1e-11)
 
 
-def test_equal_excitations_are_refused_with_the_frequency():
+@pytest.mark.parametrize("apart", [0.0, 5e-4])
+def test_excitations_that_are_alike_are_refused_with_the_frequency(apart):
     rng = np.random.default_rng(1)
     ratios, a = make.device(rng, 5), np.ones(5, complex)
-    first, second = make.excite(ratios, a, 0.2 * a), make.excite(ratios, a, np.array([-1, -1, 0.2, -1, -1]) + 0j)
+    first, second = (
+        make.excite(ratios, a, 0.2 * a),
+        make.excite(ratios, a, np.array([-1, -1, 0.2 + apart, -1, -1]) + 0j),
+    )
     with pytest.raises(DataSetError, match=r"excitations are alike at 2\.29 GHz"):
         from_excitations(first, second, frequency_hz=F)
 
