@@ -59,7 +59,7 @@ def report(error: BaseException) -> int:
 
 def _run_folder(error: BaseException) -> Path | None:
     """Return the run folder in which everything is that was committed before the error; None where there is none."""
-    folder = getattr(error, "folder", None)
+    folder = getattr(error, "folder", None) or getattr(error.__cause__, "folder", None)  # click's Abort has a cause
     return folder if isinstance(folder, Path) else None
 
 

@@ -12,21 +12,21 @@ from typing import cast
 
 from benchrun.bench.model import Bench
 from benchrun.contract.roles import DcSupply, Instrument
-from benchrun.errors import BenchError, BenchrunError
+from benchrun.errors import BenchrunError
 
 RADIATING = ("signal-source", "wave-receiver")
 
 
-def abandon(bench: Bench, drivers: Mapping[str, Callable[[], Instrument]], error: BaseException) -> None:
-    """Switch off what radiates, then drains; a BenchError is told what is confirmed to be off.
+def abandon(bench: Bench, drivers: Mapping[str, Callable[[], Instrument]]) -> str:
+    """Switch off what radiates, then drains; return in words what is confirmed to be off.
 
     `drivers` open what answers at each instrument's address: they raise BenchError where that is not whom the bench
     file means. Nothing that fails keeps the others from being tried.
     """
-    confirmed = list(_switched_off(bench, drivers))
-    if isinstance(error, BenchError):
-        off = f"Confirmed off: {', '.join(confirmed)}" if confirmed else "Nothing is confirmed to be off"
-        error.args = (f"{str(error).rstrip('.')}. Nothing was switched on. {off}.",)
+    confirmed = ", ".join(_switched_off(bench, drivers))
+    return (
+        f"Nothing was switched on. {f'Confirmed off: {confirmed}' if confirmed else 'Nothing is confirmed to be off'}."
+    )
 
 
 def _switched_off(bench: Bench, drivers: Mapping[str, Callable[[], Instrument]]) -> Iterator[str]:

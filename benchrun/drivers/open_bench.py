@@ -17,7 +17,7 @@ from benchrun.contract.roles import DcSupply, Identity, Instrument, InstrumentSe
 from benchrun.drivers.abandon import abandon
 from benchrun.drivers.dialects import dialect_for
 from benchrun.drivers.registry import Registry
-from benchrun.errors import BenchError, FileProblemsError, IdentityError, InstrumentError, Problem
+from benchrun.errors import BenchError, FileProblemsError, IdentityError, InstrumentError, Problem, StoppedError
 from benchrun.quantities import show
 from benchrun.visa.dialect import Dialect
 from benchrun.visa.session import Bus, Session
@@ -185,9 +185,13 @@ def open_bench(
         identities = {name: _identified(bench, registry, name, session) for name, session in sessions.items()}
     except BaseException as error:
         there = {name: partial(_identified_driver, bench, registry, name, link) for name in dialects if name != absent}
-        abandon(bench, there, error)
+        off = abandon(bench, there)
         for session in sessions.values():
             session.close()
+        if isinstance(error, KeyboardInterrupt):
+            raise StoppedError(f"Stopped while the bench was opened. {off}") from error
+        if isinstance(error, BenchError):
+            error.args = (f"{str(error).rstrip('.')}. {off}",)
         raise
     drivers = {name: _driver(bench, registry, name, session) for name, session in sessions.items()}
     return OpenBench(bench, drivers, sessions, identities)

@@ -16,7 +16,7 @@ from benchrun.archive import ArchiveWriter, Event, Meta, operator_name, software
 from benchrun.archive.meta import State
 from benchrun.contract.clock import Clock
 from benchrun.drivers.registry import Registry
-from benchrun.errors import DiskError, IdentityError, UnsafeError
+from benchrun.errors import DiskError, IdentityError, StoppedError, UnsafeError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
@@ -129,6 +129,9 @@ def carry_out(
         produced = produce(inputs, folder, known)
     except DiskError as error:
         raise DiskError(f"{str(error).rstrip('.')}. Then `benchrun derive {folder}` makes the results.") from error
+    except KeyboardInterrupt as error:
+        text = f"Stopped while results were made. All readings are safe; `benchrun derive {folder}` makes the results."
+        raise StoppedError(text) from error
     return RunResult(folder, state, 0, rows_of(produced.results), produced.results.notes)
 
 
@@ -161,7 +164,7 @@ def _broken_off(writer: ArchiveWriter, error: BaseException) -> None:
     try:
         writer.log(Event("failure", str(error) or type(error).__name__, {"error": type(error).__name__}))
     finally:
-        writer.close("stopped" if isinstance(error, KeyboardInterrupt) else "failed")
+        writer.close("stopped" if isinstance(error, KeyboardInterrupt | StoppedError) else "failed")
 
 
 def _copy_files(inputs: Inputs, folder: Path) -> None:

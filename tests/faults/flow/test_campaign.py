@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import os
 import re
+import signal
 from collections.abc import Callable
 from pathlib import Path
 from typing import NamedTuple
@@ -152,3 +153,38 @@ def test_an_instrument_dies_for_good(bench: Bench, instrument: str, n: int) -> N
     else:
         assert story.ended.code in (0, 5)
         assert "Nothing was switched on." in story.message or story.ended.code == 0
+
+
+@pytest.mark.skipif(os.name != "posix", reason="POSIX signals")
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+@pytest.mark.parametrize("n", range(1, MOST, 1 if EVERY else 23))
+def test_a_signal_at_exchange_n(bench: Bench, n: int, number: int) -> None:
+    """A signal that comes while an exchange is under way: the run stops at a safe point, or has ended already."""
+
+    def plan(world: InProcessRehearsal) -> None:
+        draw = world.faults.draw
+
+        def interrupted(instrument: str) -> Fault | None:
+            fault = draw(instrument)
+            if world.faults.exchanges == n:
+                os.kill(os.getpid(), number)
+            return fault
+
+        world.faults.draw = interrupted  # type: ignore[method-assign]
+
+    story = bench.run("run", plan)
+    story.require_harmless()
+    if story.ended.code == 0:
+        with story.archive as archive:
+            assert archive.count == READINGS
+        return
+    assert story.ended.code == 4, story.message
+    first, *rest = story.message.strip().splitlines()
+    name = "Ctrl-C" if number == signal.SIGINT else "SIGTERM"
+    if rest:
+        assert re.fullmatch(rf"\d\d:\d\d:\d\d  stopped by {name}\.", first), story.message
+        assert rest[0].startswith("Made safe: sources off, drain off (")
+    elif "bring-down sources off" in story.ended.err:  # everything was read: only the links were not closed yet
+        assert first == "Stopped."
+    else:
+        assert first.startswith("Stopped while the bench was opened. Nothing was switched on. Confirmed off: RF of ")
