@@ -204,7 +204,7 @@ def test_probe_states_that_do_not_suffice_are_refused():
     upper, lower = states(device, device, (0, 0, 0.01, 0), (0, 0, 0.02j, 0))
     with pytest.raises(DataSetError, match=r"too alike at 2\.2 GHz"):
         from_probe_states(upper, lower, frequency_hz=F)
-    nearly = states(device, device, (0, 0, 0.01, 0), (4e-7, 0, 0.02j, 0))
+    nearly = states(device, device, (0, 0, 0.01, 0), (1e-7, 0, 0.02j, 0))
     with pytest.raises(DataSetError, match=r"too alike at 2\.2 GHz"):
         from_probe_states(*nearly, frequency_hz=F)
     with pytest.raises(DataSetError, match="1 probe states do not solve both ports: two or more"):
