@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from benchrun.contract.capture import ComplexArray, FloatArray
+from benchrun.derive.least_squares import least_squares
 from benchrun.errors import DataSetError
 from benchrun.quantities import show
 
@@ -102,16 +103,8 @@ def solve(
     _require_span(reflections, np.ones(ratios.shape[1]), labels, frequency_hz, alike, "by their definitions reflect")
     span = np.ptp(ratios.real, axis=0) + np.ptp(ratios.imag, axis=0)
     _require_span(ratios, span / 2.0, labels, frequency_hz, alike, "were read")
-    rows = np.stack([np.ones_like(ratios), reflections, reflections * ratios], axis=-1).transpose(1, 0, 2)
-    a, b, c = _least_squares(rows, ratios.T).T
-    return ErrorTerms(np.ascontiguousarray(a), np.ascontiguousarray(c), np.ascontiguousarray(b + a * c))
-
-
-def _least_squares(rows: ComplexArray, right: ComplexArray) -> ComplexArray:
-    """Return x (F, 3) that minimises |rows x - right| for rows (F, N, 3) and right (F, N), through Q R."""
-    q, r = np.linalg.qr(rows)
-    projected = np.conj(q.transpose(0, 2, 1)) @ right[..., None]
-    return np.asarray(np.linalg.solve(r, projected)[..., 0])
+    a, b, c = least_squares(np.stack([np.ones_like(ratios), reflections, reflections * ratios]), ratios).x
+    return ErrorTerms(a, c, b + a * c)
 
 
 def _checked(ratios: ComplexArray, reflections: ComplexArray) -> tuple[ComplexArray, ComplexArray]:
