@@ -23,6 +23,7 @@ TRIES = 2
 PATIENCE_S = 10.0
 LOOK_S = 0.1
 CHECK = "Check it before you touch the bench"
+BY_HAND = "By hand: RF off first, then the drain, the gate last"
 #: Says what a receiver still sees, "" for nothing, None where it cannot tell.
 Look = Callable[[], str | None]
 
@@ -89,7 +90,7 @@ class _Bringing:
                     self._reopen(instrument)
                 confirmed = self._done(step, instrument)
             except (Exception, KeyboardInterrupt) as error:  # whatever it is, the steps behind it must be tried
-                self._because(f"{step.name}: {str(error) or type(error).__name__}")
+                self._because(_named(step.name, str(error) or type(error).__name__))
                 self.failed.add(instrument)
             else:
                 self.failed.discard(instrument)
@@ -180,7 +181,8 @@ class _Bringing:
         parts = [f"{words} confirmed" for words in confirmed]
         parts += [self._held(gate) for gate in descent.untouched]
         parts += [f"{name.upper()} NOT CONFIRMED" for name in unconfirmed]
-        return f"Made safe: {', '.join(parts)}. {CHECK}"
+        by_hand = f". {BY_HAND}" if descent.untouched else ""
+        return f"Made safe: {', '.join(parts)}. {CHECK}{by_hand}"
 
     def _held(self, gate: str) -> str:
         """Say where a gate was left, as far as its supply says so."""
@@ -188,6 +190,11 @@ class _Bringing:
             return f"{gate} not touched (still at {self.bench.read(f'{gate}.voltage'):.1f} V)"
         except (Exception, KeyboardInterrupt):
             return f"{gate} not touched"
+
+
+def _named(name: str, reason: str) -> str:
+    """Return a reason that begins with what it is about; a message of a link of that name does already."""
+    return reason if reason.startswith(f"{name} (") else f"{name}: {reason}"
 
 
 def _sources(bench: OpenBench, outputs: Outputs) -> dict[str, str]:

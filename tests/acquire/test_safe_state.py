@@ -101,7 +101,7 @@ def test_a_supply_that_is_gone_is_told_without_its_help() -> None:
     assert report.unconfirmed == ("drain",)
     assert (
         report.text == "Made safe: pump off confirmed, probe off confirmed, gate not touched, DRAIN NOT CONFIRMED. "
-        "Check it before you touch the bench"
+        "Check it before you touch the bench. By hand: RF off first, then the drain, the gate last"
     )
     assert not bench.rf
 

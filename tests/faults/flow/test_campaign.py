@@ -148,7 +148,10 @@ def test_an_instrument_dies_for_good(bench: Bench, instrument: str, n: int) -> N
     if story.ended.code == 6:
         name = {"pump": "PUMP", "analyser": "PROBE", "supply": "DRAIN"}[instrument]
         assert f"{name} NOT CONFIRMED" in story.message
-        assert "Check it before you touch the bench" in story.message
+        assert (
+            "Check it before you touch the bench. By hand: RF off first, then the drain, the gate last."
+            in story.message
+        )
         assert "gate released" not in story.message
     else:
         assert story.ended.code in (0, 5)
