@@ -227,12 +227,16 @@ def test_an_empty_run_says_so_and_shows_its_log() -> None:
     [
         ("stopped", "The run was stopped before its end. drain current 1.31 A above 1.20 A. 3 of 9 readings"),
         ("failed", "The run failed. drain current 1.31 A above 1.20 A. 3 of 9 readings"),
-        ("unsafe", "The safe state was not confirmed: look at the bench before you touch it."),
+        (
+            "unsafe",
+            "look at the bench before you touch it. drain current 1.31 A above 1.20 A. PUMP NOT CONFIRMED. 3 of 9",
+        ),
         ("running", "had not ended when this report was made"),
     ],
 )
 def test_how_the_run_ended_comes_first(state: str, told: str) -> None:
-    of = subject(events=[Event("failure", "drain current 1.31 A above 1.20 A.")])
+    events = [Event("failure", "drain current 1.31 A above 1.20 A."), Event("safe-state", "PUMP NOT CONFIRMED")]
+    of = subject(events=events)
     meta = dataclasses.replace(of.meta, state=state, readings_planned=9)
     text = page(dataclasses.replace(of, meta=meta)).text
     assert told in text

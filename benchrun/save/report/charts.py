@@ -87,7 +87,7 @@ def level_chart(reading: str, traces: Sequence[Trace], key: str, linear_dbm: Seq
     size = unit.size if unit else 1.0
     lines = [_line(t.name, t.x / size, t.level_dbm) for t in traces if not t.name.endswith(TOGETHER)]
     marks = [{"name": "linear limit", "y": limit} for limit in sorted(set(linear_dbm))]
-    title = f"Highest level at the receivers, {reading}"
+    title = f"Highest level at the receivers, {reading}{_left_out(max((t.x.size for t in traces), default=0))}"
     return _lines(title, _axis(heading(key).name, unit.name if unit else ""), "dBm", lines, marks)
 
 
@@ -97,7 +97,8 @@ def scalar_chart(scalar: Scalar, then: float | None) -> dict[str, Any] | None:
     size = unit.size if unit else 1.0
     marks = [] if then is None else [{"name": "at the calibration", "y": then / size}]
     line = _line(scalar.heading.name, scalar.time_s / 60.0, scalar.values / size)
-    return _lines(scalar.heading.name, "time on the bench, min", scalar.heading.unit, [line], marks)
+    title = scalar.heading.name + _left_out(scalar.values.size)
+    return _lines(title, "time on the bench, min", scalar.heading.unit, [line], marks)
 
 
 def embedded(charts: dict[str, Any]) -> str:
@@ -176,8 +177,17 @@ def _lines(
 
 
 def _line(name: str, x: FloatArray, y: FloatArray) -> dict[str, Any]:
-    step = -(-x.size // MOST_IN_LINE) or 1
+    step = _step(x.size)
     return {"name": name, "x": _numbers(x[::step]), "y": _numbers(y[::step])}
+
+
+def _step(size: int) -> int:
+    return -(-size // MOST_IN_LINE) or 1
+
+
+def _left_out(size: int) -> str:
+    """Return what a line of so many points leaves out, "" where it shows them all."""
+    return f" (every {step}th point)" if (step := _step(size)) > 1 else ""
 
 
 def _axis(name: str, unit: str) -> str:

@@ -37,20 +37,23 @@ class LogLine:
     exchanges: tuple[tuple[str, str, str, str], ...]
 
 
+#: How a run is said to have ended, by its state; what ended it and how many readings there are follow.
+SENTENCES = {
+    "complete": "The run went to its end.",
+    "running": "The run had not ended when this report was made, or it broke off without a word.",
+    "stopped": "The run was stopped before its end.",
+    "failed": "The run failed.",
+    "unsafe": "The safe state was not confirmed: look at the bench before you touch it.",
+}
+
+
 def state(subject: Subject) -> State:
-    """Return how the run ended."""
-    meta, count = subject.meta, f"{subject.count} of {subject.meta.readings_planned} readings are in the archive"
-    why = "; ".join(event.text for event in subject.events if event.kind in ENDED_BY)
-    because = f" {why.rstrip('.')}." if why else ""
-    sentences = {
-        "complete": f"The run went to its end: {count}.",
-        "running": f"The run had not ended when this report was made, or it broke off without a word: {count}.",
-        "stopped": f"The run was stopped before its end.{because} {count[0].upper()}{count[1:]}.",
-        "failed": f"The run failed.{because} {count[0].upper()}{count[1:]}.",
-        "unsafe": f"The safe state was not confirmed: look at the bench before you touch it.{because} "
-        f"{count[0].upper()}{count[1:]}.",
-    }
-    return State(meta.state, sentences.get(meta.state, count), meta.state != "complete")
+    """Return how the run ended: what ended it early, and what is not safe where something is not."""
+    meta, alarm = subject.meta, subject.meta.state != "complete"
+    kinds = [*ENDED_BY, "safe-state"] if meta.state == "unsafe" else ENDED_BY
+    why = [f"{event.text.rstrip('.')}." for event in subject.events if event.kind in kinds and alarm]
+    count = f"{subject.count} of {meta.readings_planned} readings are in the archive."
+    return State(meta.state, " ".join([SENTENCES.get(meta.state, ""), *why, count]).strip(), alarm)
 
 
 def facts(subject: Subject) -> Facts:
@@ -126,7 +129,7 @@ def _line(event: Event) -> LogLine:
     said = event.detail.get("exchanges", ())
     exchanges = tuple(_exchange(one) for one in said) if isinstance(said, list) else ()
     return LogLine(
-        event.at_utc[11:19] or UNKNOWN,
+        event.at_utc[:19].replace("T", " ") or UNKNOWN,
         duration_text(event.at_ns * 1e-9),
         event.kind.replace("-", " "),
         event.text,

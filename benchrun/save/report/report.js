@@ -24,9 +24,9 @@
 
   function layout(title, more) {
     return {
-      title: {text: plain(title), x: 0, xref: "paper", xanchor: "left", yref: "container", y: .97, font: {size: 13.5, color: INK}},
+      title: {text: plain(title).replaceAll("\n", "<br>"), x: 0, xref: "paper", xanchor: "left", yref: "container", y: .97, font: {size: 13.5, color: INK}},
       font: {family: getComputedStyle(document.body).fontFamily, size: 12, color: INK}, paper_bgcolor: "#ffffff", plot_bgcolor: "#ffffff",
-      margin: {l: 62, r: 14, t: 40, b: 48}, showlegend: false, hovermode: "closest", autosize: true,
+      margin: {l: 62, r: 14, t: 40, b: 48}, separators: ".", showlegend: false, hovermode: "closest", autosize: true,
       legend: {orientation: "h", x: 0, xref: "paper", y: 0, yref: "container", yanchor: "bottom", font: {size: 11.5}}, ...more,
     };
   }
@@ -89,6 +89,8 @@
       const frequency = chart.keys.findIndex((key) => key.unit === "MHz");
       if (frequency >= 0) this.chosen[frequency] = Math.floor((chart.keys[frequency].values.length - 1) / 2);
       this.count = chart.keys[0].of.length;
+      const there = this.rows(this.chosen).map((row) => chart.keys[this.along].of[row]);
+      if (there.length && !there.includes(this.chosen[this.along])) this.chosen[this.along] = there[Math.floor((there.length - 1) / 2)];
       this.controls();
       this.draw();
     }
@@ -201,7 +203,7 @@
         traces.push({type: "scatter", x: [best.re[row]], y: [best.im[row]], mode: "markers", marker: {size: 10, symbol: "diamond-open", color: INK, line: {width: 2}},
           hovertemplate: "optimum load (extrapolated)<br>%{x:.3f} %{y:+.3f} j<extra></extra>"});
       }
-      draw(figure, traces, layout(title, {xaxis: axis(`real part of the load; at ${where}${known ? "" : ": no optimum load"}`, range), yaxis: axis("imaginary part", {...range, scaleanchor: "x"})}));
+      draw(figure, traces, layout(`${title}\n${where}${known ? "" : row === undefined ? ": not read" : ": no optimum load"}`, {margin: {l: 62, r: 14, t: 58, b: 48}, xaxis: axis("real part of the load", range), yaxis: axis("imaginary part", {...range, scaleanchor: "x"})}));
     }
     polar(figure, view) {
       const t = this.chart.polar, pick = (rows) => ({r: rows.map((row) => t.r[row]), theta: rows.map((row) => t.deg[row])});
