@@ -48,13 +48,18 @@ def report(error: BaseException) -> int:
             report_problems(error.problems, talk)
             code = error.exit_code
         case BenchrunError():
-            talk(str(error), alarm=isinstance(error, UnsafeError))
+            talk(_sentence(str(error)), alarm=isinstance(error, UnsafeError))
             code = error.exit_code
         case _:  # whatever is none of these is our own defect
             report_defect(error)
     if (folder := _run_folder(error)) is not None:
         say_path(folder)
     return code
+
+
+def _sentence(text: str) -> str:
+    """Return a message with the full stop that it may lack: rooms below put messages together without."""
+    return text if text.endswith((".", "?", ":")) else f"{text}."
 
 
 def _run_folder(error: BaseException) -> Path | None:

@@ -32,7 +32,7 @@ def subclasses(kind):
 def test_each_of_our_errors_is_its_message_and_its_exit_code(flow, benchrun_command, kind):
     flow.show = fail_with(kind("the pump did not answer"))
     ended = benchrun_command("show", "runs/x")
-    assert (ended.code, ended.out, ended.err) == (kind.exit_code, "", "the pump did not answer\n")
+    assert (ended.code, ended.out, ended.err) == (kind.exit_code, "", "the pump did not answer.\n")
 
 
 def test_each_exit_code_is_documented():
