@@ -36,6 +36,8 @@ class StepNode:
     reads: tuple[ReadSite, ...] = ()
     following: tuple[str, ...] = ()
     """Signals of the next reading in the same list."""
+    apart: bool = False
+    """Whether anything stands between this step and that reading: what is in force there need not be in force here."""
     prompts: int = 0
     """How often the operator is asked each time."""
     changes: frozenset[str] = frozenset()

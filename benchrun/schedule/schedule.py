@@ -141,7 +141,7 @@ class Schedule:
                 yield self._table.columns(site, rounds)
 
     def moments(self, chunk: int = CHUNK) -> Iterator[Columns]:
-        """Yield what is in force between readings, after each set of a source. Raises InputError."""
+        """Yield what is in force between readings: after each set of a source, and where RF goes on before one."""
         for site in self._sites:
             for rounds in all_rounds(site, chunk):
                 yield from self._table.moments(site, rounds)

@@ -76,10 +76,12 @@ class Survey:
             else:
                 self._step(node, first=pick == 0)
         coming: tuple[str, ...] = ()
+        at_once = False
         for node in reversed(body):
             if isinstance(node, StepNode):
-                node.following = coming
+                node.following, node.apart = coming, not at_once
                 coming = node.reads[0].signals if node.reads else coming
+            at_once = isinstance(node, StepNode) and bool(node.reads)
 
     def _sweep(self, node: SweepNode, pick: int) -> None:
         name, value = node.axis.name, node.axis.values[min(pick, len(node.axis) - 1)]

@@ -122,7 +122,7 @@ class Table:
         self, node: StepNode, block: Block, rows: Rows, *, watch: bool, before_reading: int | None = None
     ) -> None:
         if not (node.changes or node.unbiases):
-            self._only_signals(node, block, rows, before_reading)
+            self._only_signals(node, block, rows, before_reading, watch=watch)
             return
         expansions, which = self._expansions(node, block, rows)
         for position, action in enumerate(expansions[0]):
@@ -132,13 +132,17 @@ class Table:
                 before_reading = None if before_reading is None else before_reading - 1
             self._effect(action, [expansion[position] for expansion in expansions], which, block, rows, watch=watch)
 
-    def _only_signals(self, node: StepNode, block: Block, rows: Rows, before_reading: int | None) -> None:
+    def _only_signals(
+        self, node: StepNode, block: Block, rows: Rows, before_reading: int | None, *, watch: bool
+    ) -> None:
         """A step that changes no condition leaves on what its last reading has on, or the one that it waits for."""
         reads = node.reads if before_reading is None else node.reads[:before_reading]
         if reads:
             self._on(reads[-1].signals, block, rows)
         elif not node.reads:
             self._on(node.following, block, rows)
+            if watch and node.apart and node.following:
+                self._keep_moment(block, rows)
 
     def _effect(
         self, action: Action, every: Sequence[Action], which: Codes, block: Block, rows: Rows, *, watch: bool
@@ -149,6 +153,8 @@ class Table:
             self._set([name for name, _ in action.values], tuple(table[which].T), block, rows, watch=watch)
         elif isinstance(action, ReadAction | SettleAction):
             self._on(action.signals, block, rows)
+            if watch and isinstance(action, SettleAction):
+                self._keep_moment(block, rows)
         elif isinstance(action, AskAction | ProcedureAction):
             block.forget(self._bias, rows)
             self._on((), block, rows)
@@ -168,8 +174,11 @@ class Table:
             if self._driver is not None:
                 self._follow_drive(self._driver, name, block, rows)
             if watch and self._at_sources(name):
-                there = self._distinct if rows is None else self._distinct & rows
-                self._moments.append((block.taken(there), there))
+                self._keep_moment(block, rows)
+
+    def _keep_moment(self, block: Block, rows: Rows) -> None:
+        there = self._distinct if rows is None else self._distinct & rows
+        self._moments.append((block.taken(there), there))
 
     @staticmethod
     def _at_sources(name: str) -> bool:
