@@ -37,8 +37,8 @@ def rows_of(folder: Path) -> list[dict[str, str]]:
         return list(csv.DictReader(file))
 
 
-def column_name(key: str, *, text: bool = False) -> str:
-    above = heading(key, number=not text)
+def column_name(key: str) -> str:
+    above = heading(key)
     return f"{above.name}, {above.unit}" if above.unit else above.name
 
 
@@ -46,6 +46,7 @@ def assert_same(page: Page, caption: str, rows: list[dict[str, str]]) -> None:
     """Every number of summary.csv stands in the table, to the printed digit."""
     table = page.table(caption)
     assert len(table.rows) == len(rows)
+    assert len(set(table.headings)) == len(table.headings)
     for key in rows[0]:
         if key in ("drive_dbm", "pump_level_dbm"):
             continue
@@ -54,11 +55,7 @@ def assert_same(page: Page, caption: str, rows: list[dict[str, str]]) -> None:
             continue
         size = unit_of(key).size if unit_of(key) else 1.0
         values = [float(row[key]) / size if row[key] else math.nan for row in rows]
-        cells = [cells[table.headings.index(column_name(key))] for cells in table.rows]
-        if table.headings.count(column_name(key)) > 1:
-            places = [n for n, name in enumerate(table.headings) if name == column_name(key)]
-            twins = [k for k in rows[0] if column_name(k) == column_name(key)]
-            cells = [row[places[twins.index(key)]] for row in table.rows]
+        cells = table.column(column_name(key))
         assert all(map(same_to_the_printed_digit, cells, values)), key
 
 

@@ -43,14 +43,14 @@ UNITS = {
 #: Names for people where the key alone would not do.
 NAMES = {
     "output_reflection_magnitude_ratio": "output reflection",
-    "output_reflection_phase_deg": "its phase",
-    "output_reflection_bound_ratio": "within, of S22",
+    "output_reflection_phase_deg": "phase of the reflection",
+    "output_reflection_bound_ratio": "S22 within",
     "t22_magnitude_ratio": "|T22|",
     "t22_phase_from_twice_b2_pump_deg": "phase of T22 from twice b2",
-    "t22_bound_ratio": "within, of T22",
+    "t22_bound_ratio": "T22 within",
     "optimum_load_extrapolated_magnitude_ratio": "optimum load, extrapolated",
-    "optimum_load_extrapolated_phase_deg": "its phase",
-    "optimum_load_extrapolated_power_dbm": "its power, extrapolated",
+    "optimum_load_extrapolated_phase_deg": "phase of the load",
+    "optimum_load_extrapolated_power_dbm": "power into it, extrapolated",
 }
 
 

@@ -232,6 +232,7 @@
   }
 
   function drawAll() {
+    document.documentElement.classList.add("drawn");
     for (const [name, chart] of Object.entries(charts)) {
       if (chart.kind === "lines") drawLines(document.getElementById(name), chart);
       else new Explorer(document.querySelector(`[data-chart="${name}"]`), chart);
