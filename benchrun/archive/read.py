@@ -18,7 +18,7 @@ from benchrun.archive.meta import Event, Meta, Product
 from benchrun.archive.rows import Layout, Row, canonical, decode
 from benchrun.archive.stack import Stack, stack
 from benchrun.contract.reading import Reading
-from benchrun.errors import FolderError
+from benchrun.errors import DiskError, FolderError
 
 PATIENCE_MS = 5000
 _IN_ORDER = "ORDER BY schedule_index, name, attempt"
@@ -113,6 +113,13 @@ class ArchiveReader:
             sha.update(part)
         return sha.hexdigest()
 
+    def copy_to(self, path: Path) -> None:
+        """Write this archive as it stands to a new file that is whole by itself. Raises FolderError, DiskError."""
+        with contextlib.closing(_new(path)) as copy, _readable(self.path):
+            with copy.backup("main", self._connection, "main") as backup:
+                backup.step()
+            copy.execute("PRAGMA journal_mode = DELETE").fetchall()
+
     def check(self) -> list[str]:
         """Return everything that is wrong with this archive, in words; [] for a sound one."""
         return check(self._connection)
@@ -158,6 +165,13 @@ def open_archive(path: Path) -> ArchiveReader:
         connection.close(force=True)
         raise
     return ArchiveReader(file, connection)
+
+
+def _new(path: Path) -> apsw.Connection:
+    try:
+        return apsw.Connection(str(path), flags=apsw.SQLITE_OPEN_READWRITE | apsw.SQLITE_OPEN_CREATE)
+    except apsw.Error as error:
+        raise DiskError(f"{path}: cannot be made ({error}). Make room") from error
 
 
 def _connect(file: Path) -> apsw.Connection:

@@ -19,6 +19,7 @@ COMMANDS = (
     "derive",
     "export",
     "report",
+    "archive",
     "calibrations",
     "simulate",
     "identify",

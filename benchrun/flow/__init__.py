@@ -8,9 +8,11 @@ produce.py     archive -> results -> files, from the archive alone
 rehearse.py    the same on simulated instruments;   run.py on real ones
 resume.py      a run that was cut off, taken up;    unchanged.py what must be as it was
 report.py, subject.py   an archive -> one page that opens offline
+archives.py    archives checked, recovered, packed
 simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way
 """
 
+from benchrun.flow.archives import check_archive, pack_run, repair_archive
 from benchrun.flow.check import check_files
 from benchrun.flow.inventory import drivers, identify, schema
 from benchrun.flow.known import calibrations
@@ -29,13 +31,16 @@ __all__ = [
     "RunResult",
     "ServedBench",
     "calibrations",
+    "check_archive",
     "check_files",
     "derive_again",
     "drivers",
     "export",
     "identify",
+    "pack_run",
     "plan_levels",
     "rehearse",
+    "repair_archive",
     "report",
     "resume",
     "run",

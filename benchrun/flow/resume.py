@@ -124,7 +124,10 @@ def _inputs(archive: ArchiveReader, place: Path, bench: Path | None, folder: Pat
 
 def _nothing(archive: ArchiveReader) -> str:
     there = f"{archive.count} of {archive.meta.readings_planned} readings"
-    return f"There is nothing to resume: this run is complete, with {there}."
+    return (
+        f"There is nothing to resume: this run is complete, with {there}. "
+        f"`benchrun derive {archive.path.parent}` makes results of it again."
+    )
 
 
 def _first_missing(archive: ArchiveReader) -> int:

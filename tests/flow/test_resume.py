@@ -1,4 +1,4 @@
-"""A run that was cut off anywhere ends as one that ran through; what has changed since is refused, and nothing mixed."""
+"""A run that was cut off anywhere ends as one that ran through; what has changed since is refused, nothing mixed."""
 
 from __future__ import annotations
 
@@ -30,9 +30,9 @@ from tests.flow.stage import BENCH, CALIBRATE, HOT, LEVEL, SMALL, Silence, chang
 
 KINDS = "every-kind.recipe.yaml"
 FORGETFUL = ("rehearsal: {world: R1", "rehearsal: {thermal-memory: false, world: R1")
-#: In R1, as far as a device that had cooled down and was let settle again comes from one that never had: the largest
-#: difference of the output reflection. The seam's own part of it was measured at 2e-4 for this recipe; noise is of 1e-4.
-MOST_APART = 1e-3
+#: How far the output reflection of a resumed run may be from that of one that ran through, where the device remembers:
+#: in R1, for this recipe cut at every second reading, the largest difference was measured at 1.4e-4.
+MOST_APART = 5e-4
 
 
 class CutError(Exception):
@@ -81,9 +81,10 @@ def cut_at(index: int, start: Callable[[], RunResult]) -> Path:
             raise CutError
         commit(self, reading)
 
-    with pytest.MonkeyPatch.context() as patch, pytest.raises(CutError) as caught:
+    with pytest.MonkeyPatch.context() as patch:
         patch.setattr(ArchiveWriter, "commit", cut)
-        start()
+        with pytest.raises(CutError) as caught:
+            start()
     folder = caught.value.__dict__["folder"]
     assert isinstance(folder, Path)
     return folder
