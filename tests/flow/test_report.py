@@ -298,17 +298,42 @@ def test_without_the_extra_deriving_a_recipe_that_asks_for_it_leaves_nothing_hal
 # In a browser
 
 
+def drawn(path: Path, profile: Path) -> Page:
+    """Open a page in a browser and return what it has become."""
+    options = "--headless --no-sandbox --disable-gpu --virtual-time-budget=20000 --disable-background-networking"
+    options += f" --disable-component-update --disable-sync --no-first-run --user-data-dir={profile}"
+    command = [str(CHROMIUM), *options.split(), "--dump-dom", path.as_uri()]
+    return Page(subprocess.run(command, capture_output=True, timeout=120, check=True).stdout.decode())
+
+
 @pytest.mark.skipif(CHROMIUM is None, reason="no Chromium here")
 def test_a_browser_unpacks_the_script_and_draws_every_chart(shared: Way, tmp_path: Path) -> None:
-    path = report(shared.hot, tmp_path / "r.html")
-    options = "--headless --no-sandbox --disable-gpu --virtual-time-budget=20000 --disable-background-networking"
-    options += f" --disable-component-update --disable-sync --no-first-run --user-data-dir={tmp_path / 'profile'}"
-    drawn = subprocess.run(
-        [str(CHROMIUM), *options.split(), "--dump-dom", path.as_uri()], capture_output=True, timeout=120, check=True
-    ).stdout.decode()
-    page = Page(drawn)
+    page = drawn(report(shared.hot, tmp_path / "r.html"), tmp_path / "profile")
     assert "could not be drawn" not in page.text
     figures = [attributes for tag, attributes in page.elements if tag == "figure"]
     assert len(figures) >= 10
     assert all("js-plotly-plot" in str(attributes.get("class")) for attributes in figures)
     assert sum(tag == "select" for tag, _ in page.elements) == 3
+    assert "Thick: drive +30.00 dBm. Ring: frequency 2300 MHz." in page.text
+
+
+#: Choose, once everything is drawn, to show against drive at the first frequency; common practice, no source.
+CHOOSE = """<script>
+const wait = setInterval(() => {
+  if (document.querySelectorAll("figure:not(.js-plotly-plot)").length) return;
+  clearInterval(wait);
+  const choose = (n, value) => { const s = document.querySelectorAll(".controls select")[n];
+    s.value = value; s.dispatchEvent(new Event("change")); };
+  choose(0, "0"); choose(2, "0");
+}, 50);
+</script></body>"""
+
+
+@pytest.mark.skipif(CHROMIUM is None, reason="no Chromium here")
+def test_a_reader_chooses_what_the_charts_show(shared: Way, tmp_path: Path) -> None:
+    path = report(shared.hot, tmp_path / "r.html")
+    path.write_text(path.read_text("utf-8").replace("</body>", CHOOSE), "utf-8")
+    page = drawn(path, tmp_path / "profile")
+    assert "Thick: frequency 2200 MHz. Ring: drive +30.00 dBm." in page.text
+    assert "Output power against drive (AM-AM)" in page.text
+    assert "with a ring at drive" in page.text

@@ -373,6 +373,18 @@ def test_key_figures_are_at_the_middle_of_the_band() -> None:
     assert key_names(table()) == ["drive_dbm", "frequency_hz"]
 
 
+def test_key_figures_of_many_conditions_are_few_and_say_so() -> None:
+    shown = key_figures(table(150, 2))
+    assert len(shown.rows) == 50
+    assert shown.caption == "at the middle of the band, one condition in 3"
+
+
+def test_a_long_line_says_what_it_leaves_out() -> None:
+    readings = [reading(index, scalars={"drain.current_a": 1.0}) for index in range(8_001)]
+    titles = [chart["title"] for chart in page(Subject(META, {"hot": readings}, "")).charts.values()]
+    assert "drain current (one point in 3)" in titles
+
+
 def test_what_is_absent_is_named_with_what_to_install(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(libraries, "find_spec", lambda name: None)
     with pytest.raises(InputError, match=r"a report needs jinja2 and plotly.*pip install 'benchrun\[report\]'"):

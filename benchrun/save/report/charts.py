@@ -187,7 +187,7 @@ def _step(size: int) -> int:
 
 def _left_out(size: int) -> str:
     """Return what a line of so many points leaves out, "" where it shows them all."""
-    return f" (every {step}th point)" if (step := _step(size)) > 1 else ""
+    return f" (one point in {step})" if (step := _step(size)) > 1 else ""
 
 
 def _axis(name: str, unit: str) -> str:

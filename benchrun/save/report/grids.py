@@ -70,8 +70,9 @@ def key_figures(table: Table) -> Grid:
         chosen = np.unique(np.linspace(0, len(table) - 1, min(len(table), 9)).astype(np.int64))
         return _grid(table, _short(table), chosen, "at a few frequencies of the band")
     middle = [_middle(table, rows) for rows, _ in _groups(table, keys, everything)]
-    few = middle[:: -(-len(middle) // MOST_KEY_ROWS)]
-    return _grid(table, _short(table), np.array(few, dtype=np.int64), "at the middle of the band")
+    step = -(-len(middle) // MOST_KEY_ROWS)
+    caption = "at the middle of the band" + (f", one condition in {step}" if step > 1 else "")
+    return _grid(table, _short(table), np.array(middle[::step], dtype=np.int64), caption)
 
 
 def _short(table: Table) -> list[str]:
@@ -93,7 +94,7 @@ def thinned(table: Table, most: int, verb: str) -> Thinned:
         rows = rows[np.isin(table.columns[longest][rows], kept)]
         if steps[longest] > len(axes[longest]):
             break
-    told = [f"every {step}th value of {heading(key).name}" for key, step in steps.items() if step > 1]
+    told = [f"one value in {step} of {heading(key).name}" for key, step in steps.items() if step > 1]
     note = f"Of {len(table)} points, {rows.size} are {verb}: {' and '.join(told)}. The archive has all." if told else ""
     return Thinned(rows[:most], note)
 
