@@ -40,7 +40,7 @@ Exit codes:
 
 \b
 Results go to standard output, progress and talk to standard error. The last
-line of standard output of rehearse and run is the run folder.
+line of standard output of rehearse, run and resume is the run folder.
 NO_COLOR=1 turns colour off. `benchrun completion SHELL` prints what the shell
 needs to complete commands and options."""
 

@@ -13,7 +13,7 @@ from pathlib import Path
 import click
 
 from benchrun.cli.application import application
-from benchrun.cli.streams import OutputError, guard_standard_streams, say, say_path, talk
+from benchrun.cli.streams import OutputError, columns, guard_standard_streams, say, say_path, talk
 from benchrun.errors import BenchrunError, DiskError, FileProblemsError, InputError, Problem, StoppedError, UnsafeError
 
 DEBUG_VARIABLE = "BENCHRUN_DEBUG"
@@ -53,6 +53,8 @@ def report(error: BaseException) -> int:
         case _:  # whatever is none of these is our own defect
             report_defect(error)
     if (folder := _run_folder(error)) is not None:
+        if columns(err=True) and _can_be_taken_up(error):  # advice for a person; scripts have the exit code
+            talk(f"`benchrun resume {folder}` goes on with it.")
         say_path(folder)
     return code
 
@@ -66,6 +68,12 @@ def _run_folder(error: BaseException) -> Path | None:
     """Return the run folder in which everything is that was committed before the error; None where there is none."""
     folder = getattr(error, "folder", None) or getattr(error.__cause__, "folder", None)  # click's Abort has a cause
     return folder if isinstance(folder, Path) else None
+
+
+def _can_be_taken_up(error: BaseException) -> bool:
+    """Whether a run ended early, and safe: how it ended is known, and its readings are not all there."""
+    outcome = getattr(error, "outcome", None)
+    return outcome is not None and outcome.state in ("stopped", "failed")
 
 
 def report_problems(problems: Sequence[Problem], line: Callable[[str], None] = say) -> None:

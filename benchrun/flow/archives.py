@@ -52,7 +52,7 @@ def pack_run(run: Path, to: Path) -> Path:
 
 def _free(folder: Path) -> Path:
     """Return the first of RUN-repaired, RUN-repaired-2, ... that is not there."""
-    whole = folder.resolve()
+    whole = folder if folder.name not in ("", "..") else folder.resolve()
     stem = whole.with_name(f"{whole.name}-repaired")
     names = (stem if number == 1 else stem.with_name(f"{stem.name}-{number}") for number in range(1, 10_000))
     return next(name for name in names if not name.exists())

@@ -80,11 +80,11 @@ class SeamWriter(ArchiveWriter):
         """Write one reading: on the seam as a further attempt where it is read again, and flagged."""
         seam = self.seam
         if reading.index == seam.again:
-            reading = replace(reading, attempt=seam.attempt)
+            reading = replace(reading, attempt=seam.attempt + reading.attempt)
         if seam.marked and reading.index in (seam.again, seam.first):
             reading = replace(reading, flags=(*reading.flags, RESUMED))
         super().commit(reading)
-        if reading.index == seam.again and seam.before is not None:
+        if seam.before is not None and (reading.index, reading.attempt) == (seam.again, seam.attempt):
             apart = apart_db(seam.before, reading)
             text = f"reading {reading.index} was read again: at most {apart:.3f} dB from what it was"
             self.log(Event("seam", text, {"index": reading.index, "largest_db": apart}, reading.ended_ns))

@@ -5,12 +5,15 @@ from __future__ import annotations
 import re
 import tempfile
 from pathlib import Path
+from types import SimpleNamespace
 
 import click
 import pytest
 
 from benchrun import errors
 from benchrun.cli.application import COMMANDS, EXIT_CODES
+from benchrun.cli.ending import report
+from benchrun.errors import StoppedError
 
 
 def fail_with(error):
@@ -110,3 +113,23 @@ def test_every_command_is_listed_and_has_help(benchrun_command):
     assert "..." not in re.sub(r"Usage.*", "", listed)  # no summary is cut
     modules = {path.stem for path in (Path(__file__).parents[2] / "benchrun/cli").glob("*.py")}
     assert set(COMMANDS) <= modules
+
+
+@pytest.mark.parametrize(
+    ("state", "terminal", "told"),
+    [("stopped", 80, True), ("failed", 80, True), ("unsafe", 80, False), ("failed", None, False), (None, 80, False)],
+)
+def test_on_a_terminal_a_run_that_ended_early_is_told_how_to_go_on(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch, state: str | None,
+    terminal: int | None, told: bool,
+) -> None:  # fmt: skip
+    """Not where the bench must be looked at first, and not in a script's way."""
+    error = StoppedError("stopped by Ctrl-C.")
+    error.__dict__["folder"] = tmp_path
+    if state is not None:
+        error.__dict__["outcome"] = SimpleNamespace(state=state)
+    monkeypatch.setattr("benchrun.cli.ending.columns", lambda **_how: terminal)
+    assert report(error) == StoppedError.exit_code
+    said = capsys.readouterr()
+    assert (f"`benchrun resume {tmp_path}` goes on with it." in said.err) is told
+    assert said.out == f"{tmp_path}\n"
