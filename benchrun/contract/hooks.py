@@ -111,9 +111,11 @@ class BenchAccess(Protocol):
 class StepSpec:
     """One kind of step: the key that recipes use, its pydantic model, and how it expands to actions.
 
-    `expand(model, scope)` yields actions, pure. `execute(parameters, access)` is needed only where it yields a
-    ProcedureAction for itself; it returns what it found, for the archive's log. `duration_s(action)` is the
-    modelled time of that procedure.
+    `expand(model, scope)` yields actions, pure: the same kinds of actions in the same order at any conditions, the
+    same readings, the same names set. Values may follow the conditions, but no set may follow what an earlier round of
+    a sweep left behind. `execute(parameters, access)` is needed only where it yields a ProcedureAction for itself; it
+    returns what it found, for the archive's log. It leaves frequencies and levels as it found them; bias counts as
+    unknown after it. `duration_s(action)` is the modelled time of that procedure.
     """
 
     key: str

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+from benchrun.contract.actions import Action, AskAction, SetAction
 from benchrun.contract.hooks import StepSpec
 from benchrun.recipe import Step, Sweep
 from benchrun.recipe.axis import Axis
@@ -36,6 +37,8 @@ class StepNode:
     reads: tuple[ReadSite, ...] = ()
     following: tuple[str, ...] = ()
     """Signals of the next reading in the same list."""
+    shape: tuple[str, ...] = ()
+    """What kinds of actions it does, with the names that they set: the same at any conditions."""
     apart: bool = False
     """Whether anything stands between this step and that reading: what is in force there need not be in force here."""
     prompts: int = 0
@@ -102,6 +105,19 @@ class Site:
     def swept(self) -> tuple[str, ...]:
         """Names of what is swept around."""
         return tuple(sweep.axis.name for sweep in self.sweeps)
+
+
+def shape_of(actions: Iterable[Action]) -> tuple[str, ...]:
+    """Return the kinds of some actions, with the names that they set and the planes that they connect to."""
+    return tuple(_kind_of(action) for action in actions)
+
+
+def _kind_of(action: Action) -> str:
+    if isinstance(action, SetAction):
+        return f"sets {', '.join(name for name, _ in action.values)}"
+    if isinstance(action, AskAction):
+        return f"asks{f' to connect to {action.connect[0]}' if action.connect else ''}"
+    return type(action).__name__.removesuffix("Action").lower() + "s"
 
 
 def compiled(items: Sequence[Step | Sweep], steps: Mapping[str, StepSpec]) -> tuple[Node, ...]:

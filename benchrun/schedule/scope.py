@@ -11,7 +11,7 @@ import numpy as np
 from benchrun.bench import Bench
 from benchrun.contract.actions import Action, SetAction
 from benchrun.contract.kinds import Kind, Settable
-from benchrun.errors import InputError
+from benchrun.errors import InputError, PluginError
 from benchrun.quantities import parse, show
 from benchrun.recipe import Recipe
 from benchrun.recipe.references import DIFFERENCE, parse_sum, substitute
@@ -71,11 +71,20 @@ class Scope:
         values = dict(numbers)
         self.stand(values, words)
         self.begin(node.following)
-        for action in node.spec.expand(node.model, self):
+        for action in self.actions(node):
             yield action
             if isinstance(action, SetAction):
                 values.update(action.values)
                 self.has_set(action)
+
+    def actions(self, node: StepNode) -> Iterator[Action]:
+        """Yield what a step expands to. Raises InputError; whatever else a step raises is a mistake in the step."""
+        try:
+            yield from node.spec.expand(node.model, self)
+        except (InputError, GeneratorExit):
+            raise
+        except Exception as error:
+            raise PluginError(f"step '{node.spec.key}' broke ({error!r}). Tell whoever wrote that step.") from error
 
     @property
     def noted(self) -> frozenset[str]:

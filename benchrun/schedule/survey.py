@@ -13,12 +13,12 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from benchrun.bench import Bench, Kit
 from benchrun.contract.actions import Action, AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.kinds import Kind
-from benchrun.errors import FileProblemsError, InputError, Problem
+from benchrun.errors import FileProblemsError, InputError, PluginError, Problem
 from benchrun.quantities import show
 from benchrun.recipe.axis import Evenly
 from benchrun.recipe.model import Place
 from benchrun.schedule.drive import DRIVE, Driver
-from benchrun.schedule.program import Node, ReadSite, StepNode, SweepNode, count_readings
+from benchrun.schedule.program import Node, ReadSite, StepNode, SweepNode, count_readings, shape_of
 from benchrun.schedule.scope import Scope, in_range
 from benchrun.schedule.state import CONNECTED, PROBE_FREQUENCY, State
 
@@ -125,22 +125,24 @@ class Survey:
             self._at_extremes(node, *before)
 
     def _expand(self, node: StepNode) -> None:
-        reads, prompts = list[ReadSite](), 0
+        reads, done = list[ReadSite](), list[Action]()
         self._scope.begin(node.following)
-        for action in node.spec.expand(node.model, self._scope):
+        for action in self._scope.actions(node):
             self._check(action)
             self._remember(node, action)
             if isinstance(action, ReadAction):
                 reads.append(_site(action))
-            prompts += isinstance(action, AskAction)
+            done.append(action)
             self._state.apply(action)
             self._scope.has_set(action)
         node.uses |= self._scope.noted
-        if node.reads and node.reads != tuple(reads):
-            raise InputError(
-                f"step '{node.spec.key}' reads other things at other conditions; a step always reads the same."
+        known, node.shape = node.shape or shape_of(done), shape_of(done)
+        if known != node.shape or (node.reads and node.reads != tuple(reads)):
+            raise PluginError(
+                f"step '{node.spec.key}' does other things here than at other conditions: it {'; '.join(node.shape)}. "
+                "A step always does and reads the same; only values may follow the conditions."
             )
-        node.reads, node.prompts = tuple(reads), prompts
+        node.reads, node.prompts = tuple(reads), sum(isinstance(action, AskAction) for action in done)
 
     def _remember(self, node: StepNode, action: Action) -> None:
         if isinstance(action, SetAction):

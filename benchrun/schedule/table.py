@@ -16,10 +16,11 @@ import numpy.typing as npt
 from benchrun.contract.actions import Action, AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.capture import FloatArray
 from benchrun.contract.kinds import Settable
+from benchrun.errors import PluginError
 from benchrun.recipe.axis import Evenly
 from benchrun.schedule.columns import ON, Block, Codes, Columns, Rows, begins, in_force, index_of
 from benchrun.schedule.drive import DRIVE, Driver
-from benchrun.schedule.program import Node, Site, StepNode, SweepNode
+from benchrun.schedule.program import Node, Site, StepNode, SweepNode, shape_of
 from benchrun.schedule.scope import Scope, in_range
 from benchrun.schedule.state import CONNECTED
 
@@ -220,6 +221,11 @@ class Table:
             there = in_force(block.values, block.words, self._vocabulary, row)
             known = self._remembered[key] = tuple(self._scope.expanded(node, *there))
             node.uses |= self._scope.noted
+            if shape_of(known) != node.shape:
+                raise PluginError(
+                    f"{node.place.file}:{node.place.line}: step '{node.spec.key}' does other things at some conditions "
+                    f"than at others: it {'; '.join(shape_of(known))}. Only values may follow the conditions."
+                )
         return known
 
     def _code(self, word: str) -> int:

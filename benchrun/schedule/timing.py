@@ -245,7 +245,7 @@ class Timetable:
     def _step(self, node: StepNode) -> _TimedStep:
         at_ns, starts = 0, []
         self._scope.begin(node.following)
-        for planned in node.spec.expand(node.model, self._scope):
+        for planned in self._scope.actions(node):
             action = self._state.apply(planned)
             if action is not None:
                 at_ns += self._times.before_ns(action)
@@ -284,7 +284,7 @@ class Timetable:
                     self._state.leave(inner.axis.name)
             else:
                 self._scope.begin(inner.following)
-                for planned in inner.spec.expand(inner.model, self._scope):
+                for planned in self._scope.actions(inner):
                     self._pass(self._state.apply(planned))
 
     def _pass(self, action: Action | None) -> None:

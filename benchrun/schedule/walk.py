@@ -88,7 +88,7 @@ class Walk:
     def _expanded(self, node: StepNode) -> Iterator[Action]:
         """Expand a step as its actions are carried out, so that each sees what the one before it brought into force."""
         self._scope.begin(node.following)
-        return node.spec.expand(node.model, self._scope)
+        return self._scope.actions(node)
 
     def _step(self, node: StepNode) -> Iterator[PlannedAction]:
         yield from self._carried_out(self._expanded(node), node.place)

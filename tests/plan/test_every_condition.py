@@ -17,7 +17,6 @@ from benchrun.schedule import Schedule
 from tests.schedule.made import example_bench, schedule_from
 from tests.schedule.programs import acquires
 
-
 #: Two tones together are at most so much above the louder one.
 TOGETHER_DB = 6.03
 

@@ -23,7 +23,7 @@ SOURCES = ("probe.level", "probe.frequency", "pump.level", "pump.frequency")
 
 
 #: Mistakes that recipes at random may make.
-CONTRADICTIONS = ("later in the same sweep", "is swept around this step")
+CONTRADICTIONS = ("later in the same sweep", "is swept around this step", "IF bandwidth")
 
 
 def schedule_unless_refused(acquire: str, bench: BenchFile | None = None) -> Schedule:

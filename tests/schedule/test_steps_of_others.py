@@ -11,11 +11,12 @@ from benchrun_plugins.steps import STEPS
 from benchrun.contract.actions import Action, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.capture import Capture
 from benchrun.contract.hooks import StepScope, StepSpec
-from benchrun.errors import FileProblemsError
+from benchrun.errors import FileProblemsError, PluginError
+from benchrun.plan.levels import check_levels
 from benchrun.schedule import Schedule
 from benchrun.yaml_source import Strict
 
-from .made import schedule_from
+from .made import example_bench, schedule_from
 
 START = """
   - set: {probe.level: 0 dBm, pump.level: -20 dBm, pump.frequency: 2 GHz}
@@ -105,8 +106,31 @@ def test_a_step_that_reads_other_things_at_other_conditions_is_refused() -> None
     def expand(_model: Any, scope: StepScope) -> Iterator[Action]:
         yield ReadAction("low" if scope.conditions["frequency"] < 2.2e9 else "high", None, ("probe",))
 
-    with pytest.raises(FileProblemsError, match="a step always reads the same"):
+    with pytest.raises(FileProblemsError, match="A step always does and reads the same"):
         with_step(expand)
+
+
+def test_a_step_that_sets_other_things_at_other_conditions_is_refused() -> None:
+    def expand(_model: Any, scope: StepScope) -> Iterator[Action]:
+        name = "probe.level" if scope.conditions["frequency"] > 2.25e9 else "pump.level"
+        yield SetAction(((name, -20.0),))
+        yield ReadAction("own", None, ("probe",))
+
+    with pytest.raises(FileProblemsError, match=r"it sets probe\.level; reads\."):
+        with_step(expand)
+
+
+def test_and_where_only_the_level_check_comes_by() -> None:
+    def expand(_model: Any, scope: StepScope) -> Iterator[Action]:
+        name = "probe.level" if scope.conditions["frequency"] > 2.35e9 else "pump.level"
+        yield SetAction(((name, -20.0),))
+        yield ReadAction("own", None, ("probe",))
+
+    acquire = START.replace("2.1 GHz, 2.2 GHz, 2.3 GHz", "2.1 GHz, 2.2 GHz, 2.4 GHz, 2.3 GHz")
+    with pytest.raises(PluginError, match=r"recipe\.yaml:11: step 'own' does other things at some conditions"):
+        check_levels(
+            with_step(expand, acquire.replace("2.4 GHz, 2.3 GHz", "2.4 GHz, 2.11 GHz, 2.12 GHz")), example_bench()
+        )
 
 
 @pytest.mark.parametrize(
@@ -124,6 +148,16 @@ def test_what_no_step_may_yield(action: Action, says: str) -> None:
         yield ReadAction("own", None, ("probe",))
 
     with pytest.raises(FileProblemsError, match=says):
+        with_step(expand)
+
+
+def test_a_step_that_breaks_is_told_as_such() -> None:
+    def expand(_model: Any, scope: StepScope) -> Iterator[Action]:
+        yield SetAction((("probe.level", scope.conditions["no such thing"]),))
+
+    with pytest.raises(
+        FileProblemsError, match=r"step 'own' broke \(KeyError\('no such thing'\)\)\. Tell whoever wrote"
+    ):
         with_step(expand)
 
 
