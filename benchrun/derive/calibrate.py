@@ -36,7 +36,7 @@ def calibrate(
     """Calibrate `facts.plane` and return the calibration with its residuals (N, F), standards in the order of reading.
 
     `standards` are points of at least three standards, told apart by the condition connected.<plane>, all on one
-    grid; `power` (or None) are points with the power meter connected, carrying meter.power_dbm. Raises DataSetError
+    grid; `power` (or None) are points with the power meter connected, carrying one meter's power. Raises DataSetError
     where a standard is unknown, where grids differ, where the standards do not span, or where one is plainly not what
     it is said to be.
     """
@@ -62,7 +62,7 @@ def calibrate(
 
 
 def level(name: str, signal: str, plane: str, points: Points, circumstances: Circumstances) -> Levelling:
-    """Return the levelling of `signal` at `plane` from points that carry <signal>.level_dbm and meter.power_dbm.
+    """Return the levelling of `signal` at `plane` from points that carry <signal>.level_dbm and one meter's power.
 
     Raises DataSetError where the points do not fill a table of levels by frequencies, or power does not rise with
     level.
@@ -70,7 +70,7 @@ def level(name: str, signal: str, plane: str, points: Points, circumstances: Cir
     levels, row = np.unique(points.number(f"{signal}.level_dbm"), return_inverse=True)
     frequencies, column = np.unique(points.number(_frequency_key(points, signal)), return_inverse=True)
     table = np.full((levels.size, frequencies.size), np.nan)
-    table[row, column] = points.number("meter.power_dbm")
+    table[row, column] = points.power_dbm()
     if np.any(np.isnan(table)):
         at = np.argwhere(np.isnan(table))[0]
         raise DataSetError(
@@ -135,6 +135,6 @@ def _scale(points: Points, calibration: Calibration, facts: BenchFacts) -> Float
         )
     measured = restore(points, facts.reflected, facts).tones[PROBE][order]
     reference = restore(points, facts.incident, facts).tones[PROBE][order]
-    power_w = 1e-3 * 10.0 ** (points.number("meter.power_dbm")[order] / 10.0)
+    power_w = 1e-3 * 10.0 ** (points.power_dbm()[order] / 10.0)
     scale = scale_from_incident(calibration.at(f), measured, reference, power_w)
     return interpolate(f, scale, calibration.frequency_hz)

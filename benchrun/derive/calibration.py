@@ -25,6 +25,7 @@ class Circumstances:
 
     Times are UTC as ISO 8601 text. `origin` is "real" or "simulated, seed N". `part_hash` covers the parts between the
     plane and the receivers and `parts` describes them (name to text), so that a difference can be named.
+    `reference_ohm` is the kit's impedance: what a plane's corrected reflections refer to.
     """
 
     made_utc: str
@@ -37,6 +38,7 @@ class Circumstances:
     power_meter: str = ""
     readings_hash: str = ""
     version: str = ""
+    reference_ohm: float = 50.0
 
     def require(
         self, who: str, part_hash: str, date_utc: str, origin: str, parts: Mapping[str, str] | None = None

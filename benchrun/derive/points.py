@@ -14,6 +14,8 @@ from benchrun.errors import DataSetError
 from benchrun.quantities import show
 
 FREQUENCY = "frequency_hz"
+#: What a power meter read is kept under its own name and this.
+POWER = ".power_dbm"
 Values = npt.NDArray[np.float64] | npt.NDArray[np.str_]
 
 
@@ -64,6 +66,18 @@ class Points:
         if np.any(np.isnan(numbers)):
             raise DataSetError(f"readings '{self.name}' have no {key} at some points, and it is needed at all of them.")
         return numbers
+
+    def meters(self) -> tuple[str, ...]:
+        """Return the names of the power meters that were read."""
+        return tuple(key.removesuffix(POWER) for key in self.scalars if key.endswith(POWER))
+
+    def power_dbm(self) -> FloatArray:
+        """Return what the power meter read (N,) in dBm. Raises DataSetError for none, several, or a gap."""
+        meters = self.meters()
+        if len(meters) != 1:
+            read = f"hold the power of {' and '.join(meters)}" if meters else "were taken without a power meter"
+            raise DataSetError(f"readings '{self.name}' {read}; that of one is needed here: also: [METER.power].")
+        return self.number(f"{meters[0]}{POWER}")
 
     def place(self, index: int) -> str:
         """Return where point `index` was taken, for a message: "readings 'hot' at 2.3 GHz, drive_dbm = 14"."""

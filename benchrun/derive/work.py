@@ -64,7 +64,8 @@ class Work:
             parts=dict(facts.parts),
             temperature_degc=None if temperature is None else float(np.nanmean(temperature)),
             kit=self.kit_name,
-            power_meter=self.provenance.identities.get("meter", ""),
+            power_meter=", ".join(self.provenance.identities.get(meter, meter) for meter in points.meters()),
+            reference_ohm=facts.reference_ohm,
             readings_hash=self.provenance.readings_hash,
             version=self.provenance.version,
         )
@@ -81,7 +82,7 @@ class Work:
         """Return the `chosen` (N,) of `values` (N,) as one-port data by rising frequency, with `lines` as comments."""
         frequency_hz = corrected.points.frequency_hz[chosen]
         order = np.argsort(frequency_hz, kind="stable")
-        ohm = self.facts(corrected.calibration.plane).reference_ohm
+        ohm = corrected.calibration.circumstances.reference_ohm
         serial = self.provenance.serial
         return OnePortData(quantity, serial, conditions, frequency_hz[order], values[chosen][order], lines, ohm)
 

@@ -103,9 +103,8 @@ class Inspector:
     def _at_plane(self, plane: str, toward_dbm: float, away_dbm: float) -> Iterator[Overload]:
         """Overloads of what is connected to a plane."""
         limits, what = self._wiring.get("device", {}), self._bench.connected[plane]
-        if what == "meter":
-            for name, limit_dbm in self._sensors.items():
-                yield from above(name, "input level", toward_dbm, limit_dbm)
+        if what in self._sensors:
+            yield from above(what, "input level", toward_dbm, self._sensors[what])
         elif what == DEVICE and plane == INPUT:
             yield from above("device", "input level", toward_dbm, limits.get("maximum_input_dbm"))
         elif what == DEVICE:

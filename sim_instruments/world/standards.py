@@ -40,19 +40,19 @@ class Standards:
         self._specs: Mapping[str, Mapping[str, Any]] = wiring.get("standards", {})
         self._constants, self._seed = constants, seed
         self._size = 1.0 if definition_errors else 0.0
-        meters = [spec for spec in wiring["instruments"].values() if spec["role"] == "power-meter"]
-        self._sensor_size = meters[0].get("sensor", {}).get("reflection", 0.0) if meters else 0.0
+        meters = {name: one for name, one in wiring["instruments"].items() if one["role"] == "power-meter"}
+        self._sensor_sizes = {name: one.get("sensor", {}).get("reflection", 0.0) for name, one in meters.items()}
 
     def names(self) -> tuple[str, ...]:
         """Everything that `reflection` knows."""
-        return (*self._specs, "meter", "nothing")
+        return (*self._specs, *self._sensor_sizes, "nothing")
 
     def reflection(self, what: str, frequency_hz: FloatArray) -> ComplexArray:
         """True reflection; raises ValueError for something that nobody has."""
         if what == "nothing":
             return self._empty(frequency_hz)
-        if what == "meter":
-            return np.full(len(frequency_hz), self._sensor_size * phasor(self._seed, "sensor"))
+        if what in self._sensor_sizes:
+            return np.full(len(frequency_hz), self._sensor_sizes[what] * phasor(self._seed, "sensor"))
         if what not in self._specs:
             raise ValueError(f"nothing called {what!r} can be connected; there is: {', '.join(self.names())}, device")
         spec = self._specs[what]

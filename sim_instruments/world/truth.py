@@ -130,7 +130,7 @@ class Truth:
         return self._hot(off, probe_hz, DeviceState(bias, 0.0)).reflection
 
     def standard(self, what: str, frequency_hz: Sequence[float] | FloatArray) -> ComplexArray:
-        """True reflection of a standard, of "meter" or of "nothing"."""
+        """True reflection of a standard, of a power meter or of "nothing"."""
         return self._world.bench.standards.reflection(what, np.asarray(frequency_hz, dtype=np.float64))
 
     def error_terms(

@@ -114,7 +114,7 @@ class World:
         self._inspect_rf()
 
     def connect(self, plane: str, what: str) -> None:
-        """Connect a standard, "meter", "device" or "nothing" to a plane: each time a new mating.
+        """Connect a standard, a power meter by its name, "device" or "nothing" to a plane: each time a new mating.
 
         Raises ValueError for a plane or a thing that is not there.
         """
@@ -185,7 +185,7 @@ class World:
     def measure_power(self, instrument: str, frequency_hz: float, start_ns: int) -> float:
         """Reading of a power meter, dBm: incident power, its calibration factor applied."""
         own = self.constants["power_meter"]
-        power_w = sum(self._incident_w(plane) for plane, what in self.bench.connected.items() if what == "meter")
+        power_w = sum(self._incident_w(plane) for plane, what in self.bench.connected.items() if what == instrument)
         error_db = own["error_db"] * normal(self.seed, "power meter") if self.imperfections.meter_error else 0.0
         floor_w, noise = power_ratio(own["floor_dbm"] - 30.0), 0.0
         if self.imperfections.noise:

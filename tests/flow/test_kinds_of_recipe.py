@@ -18,7 +18,7 @@ from benchrun.flow.known import made_in
 from benchrun.flow.planning import plan
 from tests.faults.flow.worlds import Worlds, complaints
 from tests.flow.conftest import Way
-from tests.flow.stage import COLD, HOT, change
+from tests.flow.stage import CALIBRATE, COLD, HOT, LEVEL, change
 
 SWEPT = """\
       - sweep: {frequency: {from: 2.2 GHz, to: 2.4 GHz, points: 9}}
@@ -181,3 +181,31 @@ def test_a_retuned_receiver_gives_the_magnitude_of_t22_and_says_why(
     np.testing.assert_allclose(
         column(rows, "t22_magnitude_ratio"), column(table(small.hot), "t22_magnitude_ratio"), atol=0.005
     )
+
+
+def test_a_power_meter_has_the_name_that_the_bench_file_gives_it(small: Way, rehearse: Callable[..., RunResult]):
+    for old, new in (("  meter:", "  watt-meter:"), ("what: meter", "what: watt-meter"), (" meter.", " watt-meter.")):
+        change(small.recipes, old, new)
+    change(small.recipes, "[meter.power", "[watt-meter.power")
+    runs = small.recipes / "runs"
+    calibration = rehearse(CALIBRATE, to=runs).folder
+    levelling = rehearse(LEVEL, to=runs).folder
+    (made,), (levelled,) = made_in(calibration), made_in(levelling)
+    assert made.known.circumstances.power_meter == levelled.known.circumstances.power_meter != ""
+    assert 25.0 < levelled.known.power_dbm.max() < 36.0
+
+
+@pytest.mark.parametrize("distance", ["0 Hz", "200 Hz", "2.9 kHz"])
+def test_a_pump_that_the_if_filter_cannot_tell_from_the_probe_is_refused_before_rf(small: Way, distance: str):
+    change(small.recipes, "- 7 MHz", f"- {distance}")
+    (problem,) = check_files([small.recipes / HOT])
+    assert f"probe and pump are {'2900 Hz' if 'k' in distance else distance} apart" in problem.message
+    assert "IF bandwidth is 300 Hz" in problem.message
+
+
+def test_reflections_refer_to_the_impedance_of_the_kit_that_calibrated(small: Way, rehearse: Callable[..., RunResult]):
+    """Not to that of the recipe that measures: it names no kit."""
+    change(small.recipes, "impedance: 50 ohm", "impedance: 75 ohm")
+    run = rehearse(COLD, to=small.recipes / "runs").folder
+    (file,) = run.glob("touchstone/*.s1p")
+    assert skrf.Network(str(file)).z0[0, 0] == 75.0
