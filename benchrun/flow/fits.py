@@ -24,14 +24,30 @@ def require_fit(inputs: Inputs, schedule: Schedule, known: Mapping[str, Calibrat
     try:
         for entry in inputs.recipe.derive:
             match entry.model:
-                case Correct(readings=readings, calibration=name) if isinstance(one := known.get(name), Calibration):
+                case Correct(readings=readings, calibration=name):
+                    one = _calibration(name, known)
                     parts = inputs.bench.part_hash(one.plane), one.plane, ends_utc, origin
                     one.check_fits(tones_hz[readings], *parts, inputs.bench.part_summaries(one.plane))
-                case HotMatch(drive=str(name)) if isinstance(one := known.get(name), Levelling):
-                    parts_hash, summaries = inputs.bench.part_hash(one.plane), inputs.bench.part_summaries(one.plane)
-                    one.check_fits(parts_hash, ends_utc, origin, summaries)
+                case HotMatch(drive=str(name)):
+                    drive = _levelling(name, known)
+                    hashed, parts_there = inputs.bench.part_hash(drive.plane), inputs.bench.part_summaries(drive.plane)
+                    drive.check_fits(hashed, ends_utc, origin, parts_there)
     except CalibrationError as error:
         raise CalibrationError(f"{error} Nothing was switched on.") from error
+
+
+def _calibration(name: str, known: Mapping[str, Calibration | Levelling]) -> Calibration:
+    one = known[name]
+    if isinstance(one, Calibration):
+        return one
+    raise CalibrationError(f"'{name}' is the levelling of a drive; `correct` needs the calibration of a plane.")
+
+
+def _levelling(name: str, known: Mapping[str, Calibration | Levelling]) -> Levelling:
+    one = known[name]
+    if isinstance(one, Levelling):
+        return one
+    raise CalibrationError(f"'{name}' is the calibration of a plane; the drive of `hot-match` needs a levelling.")
 
 
 def tuned_hz(schedule: Schedule) -> dict[str, FloatArray]:

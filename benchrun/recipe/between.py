@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Collection, Iterator, Sequence
 
 from benchrun.bench import Bench
+from benchrun.bench.hashing import receivers_at
 from benchrun.errors import Problem
 from benchrun.recipe.entries import OF_READINGS, Calibrate, Correct, HotMatch, LevelChain, OnePort
 from benchrun.recipe.messages import no_such
@@ -66,5 +67,16 @@ def _made(source: Source, file: RecipeFile, derive: Sequence[Entry], bench: Benc
         if isinstance(entry.model, Calibrate) and file.kit is None:
             message = "no kit is named that says what the standards are: write `kit: FILE.kit.yaml` at the top."
             yield source.problem(entry.path, message, at_key=True)
+        if isinstance(entry.model, Calibrate) and bench and not _seen_both_ways(bench, entry.model.plane):
+            message = (
+                f"no coupler's two arms are read at the {entry.model.plane} plane; a calibration needs an incident and "
+                "a reflected receiver there."
+            )
+            yield source.problem((*entry.path, "plane"), message)
         if isinstance(entry.model, LevelChain) and bench and entry.model.signal not in bench.signals:
             yield source.problem((*entry.path, "signal"), no_such("signal", entry.model.signal, bench.signals))
+
+
+def _seen_both_ways(bench: Bench, plane: str) -> bool:
+    """Whether receivers read both arms of a coupler on the way to a plane."""
+    return {"incident", "reflected"} <= {receiver.arm for receiver in receivers_at(bench, plane).values()}

@@ -127,6 +127,24 @@ def test_a_simulated_one_never_corrects_a_real_run(small: Way) -> None:
         assert "Nothing was switched on" in str(error)
 
 
+@pytest.mark.parametrize(
+    ("old", "new", "said"),
+    [
+        ("drive: drive}", "drive: output-plane}", "'output-plane' is the calibration of a plane; the drive of"),
+        ("calibration: output-plane}", "calibration: drive}", "'drive' is the levelling of a drive; `correct` needs"),
+    ],
+)
+def test_one_of_the_other_kind_is_refused_before_any_reading(
+    small: Way, rehearse: Callable[..., RunResult], old: str, new: str, said: str
+) -> None:
+    change(small.recipes, old, new)
+    before = sorted(small.runs.iterdir())
+    with pytest.raises(CalibrationError, match="Nothing was switched on") as refused:
+        rehearse(HOT)
+    assert said in str(refused.value)
+    assert sorted(small.runs.iterdir()) == before
+
+
 def as_real(document: dict[str, Any]) -> None:
     document["circumstances"]["origin"] = "real"
 
