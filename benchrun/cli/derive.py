@@ -11,7 +11,7 @@ from benchrun.cli.options import calibration_option, run_argument
 
 @click.command()
 @run_argument
-@calibration_option
+@calibration_option("the one of its newest result stays")
 def command(run: Path, calibrations: dict[str, Path]) -> int:
     """Derive and save the results of a run again.
 

@@ -50,11 +50,13 @@ def _named_runs(_context: click.Context, _parameter: click.Parameter, texts: Seq
     return runs
 
 
-calibration_option = click.option(
-    "--calibration",
-    "calibrations",
-    multiple=True,
-    metavar="NAME=RUN",
-    callback=_named_runs,
-    help="Take the calibration NAME from this run folder. May be repeated. Otherwise the newest that fits is taken.",
-)
+def calibration_option(otherwise: str) -> Callable[[Function], Function]:
+    """Return the option --calibration NAME=RUN; `otherwise` says what is taken where it is not given."""
+    return click.option(
+        "--calibration",
+        "calibrations",
+        multiple=True,
+        metavar="NAME=RUN",
+        callback=_named_runs,
+        help=f"Take the calibration NAME from this run folder. May be repeated. Otherwise {otherwise}.",
+    )

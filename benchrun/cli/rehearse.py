@@ -15,7 +15,7 @@ from benchrun.cli.options import bench_option, calibration_option, recipe_argume
 @bench_option
 @seed_option(None, "that of a served bench, else 1")
 @click.option("--real-time", is_flag=True, help="Let bench time run at the speed of the clock on the wall.")
-@calibration_option
+@calibration_option("the newest that fits is taken")
 def command(
     recipe: Path, to: Path, bench: Path | None, seed: int | None, real_time: bool, calibrations: dict[str, Path]
 ) -> int:

@@ -17,7 +17,7 @@ at a safe point: sources off, then the drain, and the gate last."""
 @recipe_argument
 @to_option("Make the run folder in this folder.")
 @bench_option
-@calibration_option
+@calibration_option("the newest that fits is taken")
 def command(recipe: Path, to: Path, bench: Path | None, calibrations: dict[str, Path]) -> int:
     """Run a recipe on the real bench.
 
