@@ -85,7 +85,7 @@ def test_levels_refused_ends_with_3_and_does_not_say_that_all_is_well(flow, benc
     flow.plan_levels = lambda recipe, bench=None: level_report(refused=True)
     ended = benchrun_command("levels", "hot.recipe.yaml")
     assert ended.code == LevelError.exit_code == 3
-    assert ended.err == "1 level is over the limit\n"
+    assert ended.err == "1 level is over the limit.\n"
     assert "device input" in ended.out
     assert "inside its limit" not in ended.out
     assert benchrun_command("levels", "hot.recipe.yaml", "--json").code == 3

@@ -69,7 +69,8 @@ def require_told(story: Story, message: str, readings: int, code: int = 5) -> No
     """The message and nothing else, the bench as it should be, and the readings before it there, once each."""
     assert story.ended.code == code, story.message
     safe = rf"{readings} of {READINGS} readings are safe in {re.escape(str(story.folder))}/archive\.sqlite\."
-    assert re.fullmatch(rf"{CLOCK}{message}\n{SAFE}\n{safe}", story.message), story.message
+    resume = rf"(\n`benchrun resume {re.escape(str(story.folder))}` goes on with it\.)?"
+    assert re.fullmatch(rf"{CLOCK}{message}\n{SAFE}\n{safe}{resume}", story.message), story.message
     story.require_harmless()
     with story.archive as archive:
         assert [reading.index for reading in archive.readings()] == list(range(readings))
