@@ -18,6 +18,8 @@ from .quantity import Frequency, FullName, Name
 PROBE, PUMP, IMAGE = "probe", "pump", "image"
 #: Most points of a receiver's own sweep; beyond that, sweep in the recipe.
 MOST_POINTS = 20001
+#: Tones nearer than this many IF bandwidths stand in each other's filter.
+LEAST_DISTANCE = 10
 #: Offsets are rounded to 1 mHz, so that the same distance is the same number at every frequency.
 OFFSET_DIGITS = 3
 
@@ -57,7 +59,10 @@ class ReadModel(Strict):
             if twice:
                 raise ValueError(f"{key} names {twice[0]} twice; name it once.")
         if IMAGE in self.tones and not {PROBE, PUMP} <= set(self.tones):
-            raise ValueError("the image lies where probe and pump are both on: tones: [probe, pump, image].")
+            raise ValueError(
+                "the image lies where probe and pump are both on: tones: [probe, pump, image]. "
+                f"Here stands [{', '.join(self.tones)}]."
+            )
         if self.follow and self.over is None:
             raise ValueError("`follow` needs a sweep of the receiver to follow: give `over` as well.")
         if self.follow and self.follow not in self.tones:
@@ -68,6 +73,8 @@ class ReadModel(Strict):
 def expand(model: ReadModel, scope: StepScope) -> Iterator[Action]:
     """Yield one ReadAction. Raises InputError where a tone, a wave or a frequency is not known here."""
     _known("tones", model.tones, (*scope.signals, IMAGE))
+    if IMAGE in model.tones:
+        _require_distance(scope)
     waves = scope.receivers if model.waves is None else model.waves
     _known("waves", waves, scope.receivers)
     if model.follow is not None:
@@ -75,6 +82,16 @@ def expand(model: ReadModel, scope: StepScope) -> Iterator[Action]:
     signals = tuple(name for name in scope.signals if name in model.tones)
     capture = _capture(model, waves, scope) if waves and model.tones else None
     yield ReadAction(model.name, capture, signals, model.also)
+
+
+def _require_distance(scope: StepScope) -> None:
+    """The image is a tone of its own only beside a probe and a pump that the IF filter tells apart."""
+    distance_hz = abs(_frequency(PUMP, scope) - _frequency(PROBE, scope))
+    if distance_hz < LEAST_DISTANCE * scope.if_bandwidth_hz:
+        raise InputError(
+            f"probe and pump are {distance_hz:g} Hz apart, and the IF bandwidth is {scope.if_bandwidth_hz:g} Hz: it "
+            f"does not tell them apart. Put {LEAST_DISTANCE} IF bandwidths or more between them, best 5 to 10 MHz."
+        )
 
 
 def _known(key: str, names: tuple[str, ...], there: tuple[str, ...]) -> None:

@@ -327,6 +327,20 @@ def test_the_recipe_is_right(told: Told) -> None:
             "'outptu' is not known here; expected: input, output. Did you mean 'output'?",
         ),
         (
+            "plane: output, standards",
+            "plane: input, standards",
+            "input",
+            "no coupler's two arms are read at the input plane; a calibration needs an incident and a reflected "
+            "receiver there.",
+        ),
+        (
+            "tones: [probe, pump, image]",
+            "tones: [probe, pmp, image]",
+            "{name: hot",
+            "the image lies where probe and pump are both on: tones: [probe, pump, image]. "
+            "Here stands [probe, pmp, image].",
+        ),
+        (
             "- calibrate: {name: output-plane, plane: output, standards: standards}",
             "- level: {name: x, signal: pmup, plane: input, readings: hot, valid-for: 2 d}",
             "2 d",

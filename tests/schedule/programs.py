@@ -48,8 +48,9 @@ def _line(draw: st.DrawFn, around: tuple[str, ...]) -> str:
     if kind == "read":
         return draw(st.sampled_from(READS))
     if kind == "follow" and own:
-        name, target = draw(st.sampled_from(own)), draw(st.sampled_from(("probe.frequency", "pump.frequency")))
-        return f'set: {{{target}: "{{{name}}} - {draw(st.integers(1, 9))} MHz"}}'
+        name = draw(st.sampled_from(own))
+        signal, least = draw(st.sampled_from((("probe", 1), ("pump", 11))))  # never both at one frequency
+        return f'set: {{{signal}.frequency: "{{{name}}} - {draw(st.integers(least, least + 8))} MHz"}}'
     if kind == "word" and "standard" in around:
         return 'connect: {plane: output, what: "{standard}"}'
     if kind == "set":

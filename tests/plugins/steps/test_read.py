@@ -118,7 +118,7 @@ def test_readings_that_make_no_sense_are_refused_as_they_are_read(asked: dict[st
         read.ReadModel.model_validate({"name": "hot", **asked})
 
 
-@given(st.floats(1e7, 8e9), st.integers(-20_000_000_000, 20_000_000_000))
+@given(st.floats(1e8, 8e9), st.integers(4_000_000, 20_000_000_000).flatmap(lambda n: st.sampled_from([n, -n])))
 def test_the_same_distance_is_the_same_number_at_every_frequency(probe_hz: float, millihertz: int) -> None:
     """Else the receiver would be set up anew at every point for nothing."""
     distance_hz = millihertz / 1000.0
@@ -126,3 +126,10 @@ def test_the_same_distance_is_the_same_number_at_every_frequency(probe_hz: float
     found = action({"name": "hot", "tones": ["probe", "pump", "image"]}, conditions=conditions)
     assert found.capture is not None
     assert found.capture.offsets_hz == (0.0, distance_hz, 2.0 * distance_hz)
+
+
+@pytest.mark.parametrize("distance_hz", [0.0, 200.0, -2999.0])
+def test_an_image_within_the_if_filter_is_refused(distance_hz: float) -> None:
+    conditions = {"probe.frequency": 2.3e9, "pump.frequency": 2.3e9 + distance_hz}
+    with pytest.raises(InputError, match=f"{abs(distance_hz):g} Hz apart, and the IF bandwidth is 300 Hz"):
+        action({"name": "hot", "tones": ["probe", "pump", "image"]}, conditions=conditions)
