@@ -35,7 +35,7 @@ PANELS: Sequence[tuple[str, str, tuple[tuple[str, str, str], ...]]] = (
     ("Gain", "dB", (("gain_db", "gain", ""),)),
     ("Compression", "dB", (("compression_db", "compression", ""),)),
     (
-        "Output reflection, magnitude",
+        "|Output reflection|",
         "",
         (("output_reflection_magnitude_ratio", "output reflection", "output_reflection_bound_ratio"),),
     ),

@@ -9,7 +9,7 @@
   const SIGNS = ["circle", "diamond", "square", "triangle-up", "cross", "x"];
   const MOST_BEHIND = 24, FEW = 30, CIRCLES = 7, MANY = 4;
   // The library would offer to send a chart to its maker's server: never from here; the page's policy forbids it too.
-  const CONFIG = {responsive: true, displaylogo: false, displayModeBar: "hover", showSendToCloud: false, showEditInChartStudio: false, plotlyServerURL: "",
+  const CONFIG = {responsive: true, displaylogo: false, displayModeBar: matchMedia("(hover: none), (max-width: 40rem)").matches ? false : "hover", showSendToCloud: false, showEditInChartStudio: false, plotlyServerURL: "",
     modeBarButtonsToRemove: ["sendChartToCloud", "sendDataToCloud", "lasso2d", "select2d", "autoScale2d", "zoomIn2d", "zoomOut2d"]};
 
   const ramp = (share) => {
@@ -211,7 +211,7 @@
       traces.push({type: "scatterpolar", ...pick(view.rows), mode: mode(view.rows.length), line: {color: ACCENT, width: 2.6}, marker: {size: 6},
         text: view.rows.map((row) => this.place(view, row)), hovertemplate: "T22 %{r:.4f} at %{theta:.1f} deg<br>%{text}<extra></extra>"});
       const quietAxis = {gridcolor: LINE, linecolor: QUIET, tickfont: {size: 10, color: QUIET}};
-      draw(figure, traces, layout(`T22 against ${view.key.name}`, {margin: {l: 24, r: 24, t: 62, b: 34},
+      draw(figure, traces, layout(`T22 against ${view.key.name}`, {margin: {l: 44, r: 44, t: 62, b: 34},
         polar: {bgcolor: "#ffffff", radialaxis: {...quietAxis, rangemode: "tozero", angle: 90, tickangle: 90, nticks: 5}, angularaxis: {...quietAxis, ticksuffix: " deg", dtick: 45}}}));
     }
     panel(figure, panel, view) {
