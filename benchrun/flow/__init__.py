@@ -6,7 +6,7 @@ known.py       calibrations and levellings in a folder of runs: which there are,
 measure.py     -> readings in an archive, committed before anything else; then produce.py
 produce.py     archive -> results -> files, from the archive alone
 rehearse.py    the same on simulated instruments;   run.py on real ones
-resume.py      a run that was cut off, taken up;    unchanged.py what must be as it was
+resume.py      a run that was cut off, taken up; unchanged.py: what must be as it was; seam.py: where the new begins
 report.py, subject.py   an archive -> one page that opens offline
 archives.py    archives checked, recovered, packed
 simulate.py, show.py, inventory.py, check.py, folders.py, result.py, summary.py: what stands beside the way

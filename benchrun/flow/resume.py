@@ -1,11 +1,6 @@
-"""Taking up a run that was cut off, at its first missing reading: what must be the same, the bench, and the seam.
+"""Taking up a run that was cut off, at its first missing reading, with the inputs and calibrations in its archive.
 
-Inputs and calibrations are those in the archive. A device that remembers (every real one; a simulated one with thermal
-memory) is not where it was: with what the last committed reading asked for in force it is let settle as the recipe
-says, and that reading is taken again, as a further attempt, before the first missing one; both are flagged. The
-attempt is the final one, because it belongs to what comes after it; the one before stays in the archive, and how far
-apart they are is logged. Where the operator is asked between the two, RF and drain were down there anyway, and nothing
-is read again.
+unchanged.py says what must be as it was, seam.py what happens where the old readings end and the new ones begin.
 """
 
 from __future__ import annotations
@@ -13,18 +8,14 @@ from __future__ import annotations
 import tempfile
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
 from benchrun.acquire.clock import RealClock
 from benchrun.acquire.progress import Progress
 from benchrun.acquire.prompts import Prompter, RehearsalPrompter, require_somebody
-from benchrun.archive import ArchiveReader, ArchiveWriter, Event, Meta, open_archive
-from benchrun.contract.actions import AskAction
+from benchrun.archive import ArchiveReader, Event, Meta, open_archive
 from benchrun.contract.clock import Clock
 from benchrun.contract.reading import Reading
 from benchrun.errors import FolderError, InputError
@@ -36,6 +27,7 @@ from benchrun.flow.produce import restored
 from benchrun.flow.rehearse import NOTE, Shifted, rehearsal_of
 from benchrun.flow.result import RunResult
 from benchrun.flow.run import REAL
+from benchrun.flow.seam import Seam, SeamWriter, connected_before, seam_of
 from benchrun.flow.unchanged import (
     begun_with,
     planned_again,
@@ -45,49 +37,6 @@ from benchrun.flow.unchanged import (
     require_unchanged,
 )
 from benchrun.schedule import Schedule
-
-#: Flags the readings on both sides of a seam.
-RESUMED = "resumed"
-
-
-@dataclass(frozen=True, slots=True)
-class Seam:
-    """Where a run is taken up: the first missing reading, what is read again before it (None: nothing), as which try.
-
-    `before` is the last committed reading, None where there is none; `marked` says whether readings are flagged;
-    `committed` attempts there are.
-    """
-
-    first: int
-    again: int | None
-    attempt: int
-    before: Reading | None
-    marked: bool
-    committed: int
-
-    @property
-    def start(self) -> int:
-        """The reading that the bench is brought to."""
-        return self.first if self.again is None else self.again
-
-
-class SeamWriter(ArchiveWriter):
-    """An archive that is added to, and marks the seam in what is committed on both of its sides."""
-
-    seam: Seam
-
-    def commit(self, reading: Reading) -> None:
-        """Write one reading: on the seam as a further attempt where it is read again, and flagged."""
-        seam = self.seam
-        if reading.index == seam.again:
-            reading = replace(reading, attempt=seam.attempt + reading.attempt)
-        if seam.marked and reading.index in (seam.again, seam.first):
-            reading = replace(reading, flags=(*reading.flags, RESUMED))
-        super().commit(reading)
-        if seam.before is not None and (reading.index, reading.attempt) == (seam.again, seam.attempt):
-            apart = apart_db(seam.before, reading)
-            text = f"reading {reading.index} was read again: at most {apart:.3f} dB from what it was"
-            self.log(Event("seam", text, {"index": reading.index, "largest_db": apart}, reading.ended_ns))
 
 
 def resume(run: Path, *, bench: Path | None = None, listener: Progress, prompter: Prompter) -> RunResult:
@@ -105,7 +54,7 @@ def resume(run: Path, *, bench: Path | None = None, listener: Progress, prompter
         require_software(meta, folder)
         inputs, known = _inputs(archive, Path(place), bench, folder)
         schedule = planned_again(meta, inputs, known, folder)
-        seam, start_ns = _seam(archive, inputs, schedule), _start_ns(archive)
+        seam, start_ns = seam_of(archive, schedule, remembers=_remembers(inputs, meta)), _start_ns(archive)
         archive.close()
         with _setting(inputs, meta, schedule, seam, start_ns, listener, prompter) as setting:
             return _taken_up(inputs, schedule, known, setting, folder, meta, seam)
@@ -118,8 +67,17 @@ def _inputs(archive: ArchiveReader, place: Path, bench: Path | None, folder: Pat
     if bench is not None:
         before, inputs = inputs, restored(archive.meta, place, bench)
         require_same_bench(before, inputs, folder)
+        _require_real(archive.meta, inputs)
     require_unchanged(archive.meta, inputs, folder)
     return inputs, known
+
+
+def _require_real(meta: Meta, inputs: Inputs) -> None:
+    if meta.origin == REAL and inputs.bench.simulated:
+        raise InputError(
+            f"{inputs.bench.path}: this bench is marked simulated, and the run was made on the real one. "
+            "They are never mixed. Nothing was switched on."
+        )
 
 
 def _nothing(archive: ArchiveReader) -> str:
@@ -130,38 +88,15 @@ def _nothing(archive: ArchiveReader) -> str:
     )
 
 
-def _first_missing(archive: ArchiveReader) -> int:
-    """Return the first reading behind all that were committed, or passed over because the operator said so."""
-    skipped = [int(event.detail["last"]) for event in archive.log("skipped")]
-    return 1 + max(archive.last_index, *skipped, -1)
+def _remembers(inputs: Inputs, meta: Meta) -> bool:
+    """Whether the device remembers what was done to it: every real one does."""
+    rehearsal = inputs.bench.rehearsal
+    return meta.origin == REAL or rehearsal is None or rehearsal.thermal_memory
 
 
 def _start_ns(archive: ArchiveReader) -> int:
     """Return where in the bench's time the run began."""
     return next((int(event.detail.get("start_ns", 0)) for event in archive.log("bench-time")), 0)
-
-
-def _seam(archive: ArchiveReader, inputs: Inputs, schedule: Schedule) -> Seam:
-    """Return the seam; nothing is read again where nothing is missing, or nothing remembers."""
-    first = _first_missing(archive)
-    before = archive.attempts(first - 1)
-    rehearsal, real = inputs.bench.rehearsal, archive.meta.origin == REAL
-    marked = 0 < first < len(schedule) and (real or rehearsal is None or rehearsal.thermal_memory)
-    again = first - 1 if marked and before and not _asked_between(schedule, first - 1, first) else None
-    attempt = before[-1].attempt + 1 if before else 0
-    return Seam(first, again, attempt, before[-1] if before else None, marked, archive.count_all)
-
-
-def _asked_between(schedule: Schedule, index: int, following: int) -> bool:
-    """Whether the operator is asked for something between two readings."""
-    passed = False
-    for planned in schedule.walk(index):
-        if planned.reading_index == following:
-            return False
-        passed = passed or planned.reading_index == index
-        if passed and isinstance(planned.action, AskAction):
-            return True
-    return False
 
 
 @contextmanager
@@ -200,28 +135,6 @@ def _require_seed(meta: Meta, seed: int, inputs: Inputs) -> None:
             f"with seed {meta.seed}. Serve it again: `benchrun simulate --seed {meta.seed} --write-bench FILE`, and "
             "resume with --bench FILE."
         )
-
-
-def connected_before(schedule: Schedule, start: int) -> list[tuple[str, str]]:
-    """Return the connections (plane, what) that had been made before a reading, but for those that are asked again.
-
-    Each mating differs a little from the one before: the simulated bench must have seen as many.
-    """
-    made, again = _connections(schedule, 0, start), _connections(schedule, start, start)
-    for plane, _ in again:
-        made.pop(max(n for n, (other, _) in enumerate(made) if other == plane))
-    return made
-
-
-def _connections(schedule: Schedule, begin: int, end: int) -> list[tuple[str, str]]:
-    """Return what is to be connected on the way from one reading up to another."""
-    found = []
-    for planned in schedule.walk(begin):
-        if planned.reading_index is not None and planned.reading_index >= end:
-            break
-        if isinstance(planned.action, AskAction) and planned.action.connect is not None:
-            found.append(planned.action.connect)
-    return found
 
 
 def _continued(clock: Clock, before: Reading | None) -> Clock:
@@ -267,17 +180,3 @@ def _said(seam: Seam, planned: int) -> str:
 
 def _detail(seam: Seam, meta: Meta) -> Mapping[str, Any]:
     return {"index": seam.first, "again": seam.again, "state_before": meta.state, "began_with": dict(meta.versions)}
-
-
-def apart_db(one: Reading, other: Reading) -> float:
-    """Return how far apart two readings of one condition are: largest difference of a wave to the largest wave, dB.
-
-    Of readings without waves it is the scalars' largest relative difference. 0 where nothing can be compared.
-    """
-    before, after = one.data.ravel(), other.data.ravel()
-    if before.size == 0 or before.shape != after.shape:
-        before, after = (np.array([r.scalars[key] for key in sorted(one.scalars)]) for r in (one, other))
-    scale = float(np.max(np.abs(before), initial=0.0))
-    if scale == 0.0:
-        return 0.0
-    return float(20.0 * np.log10(1.0 + np.max(np.abs(after - before)) / scale))

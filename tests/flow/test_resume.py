@@ -22,7 +22,7 @@ from benchrun.cli.ending import run_to_end
 from benchrun.contract.reading import Reading
 from benchrun.errors import BenchrunError, CalibrationError, FolderError, IdentityError, InputError
 from benchrun.flow import RunResult, ServedBench, rehearse, resume, run, simulate
-from benchrun.flow.resume import apart_db, connected_before
+from benchrun.flow.seam import apart_db, connected_before
 from tests.archive.readings import reading
 from tests.faults.flow.runs import READINGS, RECIPE
 from tests.faults.flow.worlds import Worlds, complaints
@@ -316,10 +316,16 @@ def test_there_is_no_run(tmp_path: Path) -> None:
 # What has changed since is refused
 
 
+@pytest.fixture(scope="module")
+def hot_cut(whole: Whole, tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A hot run that was cut off at reading 3, beside those that made its calibrations. Change nothing in it."""
+    return cut_rehearsal(whole, HOT, 3, tmp_path_factory.mktemp("hot"))
+
+
 @pytest.fixture
-def hot(whole: Whole, tmp_path: Path) -> Path:
-    """A hot run that was cut off at reading 3."""
-    return cut_rehearsal(whole, HOT, 3, tmp_path)
+def hot(hot_cut: Path, tmp_path: Path) -> Path:
+    """A copy of it, to be changed."""
+    return Path(shutil.copytree(hot_cut, tmp_path / "hot"))
 
 
 def require_refused(folder: Path, error: type[BenchrunError], *words: str, **how: Any) -> None:
@@ -367,15 +373,15 @@ def test_another_schedule(hot: Path, worlds: Worlds) -> None:
 
 def test_a_calibration_that_was_made_anew_in_its_run(hot: Path, worlds: Worlds) -> None:
     with open_archive(hot) as archive:
-        used = {event.text: Path(str(event.detail["run"])) for event in archive.log("calibration")}
-    made_in = next(path for text, path in used.items() if "output-plane" in text)
+        used = {event.text: str(event.detail["run"]) for event in archive.log("calibration")}
+    first = next(path for text, path in used.items() if "output-plane" in text)
+    made_in = Path(shutil.copytree(first, hot.with_name("calibrated")))
+    with ArchiveWriter.append(hot) as writer:
+        writer._connection.execute("UPDATE event SET detail = replace(detail, ?, ?)", (first, str(made_in)))
     with ArchiveWriter.append(made_in) as writer, open_archive(made_in) as archive:
         (product,) = archive.products("calibration")
-        document = {**product.document, "made_utc": "2030-01-01T00:00:00+00:00"}
-        circumstances = dict(document["circumstances"]) if "circumstances" in document else None
-        if circumstances is not None:
-            document["circumstances"] = {**circumstances, "made_utc": "2026-01-01T00:00:00+00:00"}
-        writer.product("calibration", product.name, document)
+        circumstances = {**product.document["circumstances"], "made_utc": "2026-01-01T00:00:00+00:00"}
+        writer.product("calibration", product.name, {**product.document, "circumstances": circumstances})
     require_refused(hot, CalibrationError, "calibration 'output-plane' of", "is another than the run began with")
     assert worlds.opened == []
 
@@ -470,7 +476,11 @@ def test_a_real_bench(whole: Whole, served: tuple[ServedBench, Path], tmp_path: 
     lines = served[1].read_text("utf-8").splitlines(keepends=True)
     real.write_text("".join(x for x in lines if not x.startswith(("simulated:", "rehearsal-channel:"))), "utf-8")
     first, second = Obliging(), Obliging()
-    started = cut_at(3, lambda: run(whole.recipes / KINDS, tmp_path, bench=real, listener=Silence(), prompter=first))
+    quick = tmp_path / "quick.recipe.yaml"  # without the search for the quiescent current, which waits in real time
+    quick.write_text(RECIPE.replace(", quiescent: 350 mA, within: 10 mA, gate-range: [-3.4 V, -2.2 V]", ""), "utf-8")
+    started = cut_at(3, lambda: run(quick, tmp_path, bench=real, listener=Silence(), prompter=first))
+    with pytest.raises(InputError, match="this bench is marked simulated, and the run was made on the real one"):
+        resume(started, bench=served[1], listener=Silence(), prompter=second)
     result = resume(started, listener=Silence(), prompter=second)
     assert (result.state, first.asked) == ("complete", [("output", "device")])
     assert second.asked == [("output", "device"), ("input", "meter"), ("input", "device")]
