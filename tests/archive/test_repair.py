@@ -15,7 +15,7 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from benchrun.archive import ArchiveWriter, Event, open_archive
-from benchrun.archive.repair import Repaired, repair, spans
+from benchrun.archive.repair import Repaired, gaps_between, repair
 from benchrun.contract.reading import Reading
 from benchrun.errors import BenchrunError, FolderError
 from tests.archive.readings import META, reading, same
@@ -244,10 +244,39 @@ def test_whatever_is_written_over_it_only_what_was_read_comes_back(
         assert "Look for a copy" in str(error)  # noqa: PT017  it need not fail
 
 
-def test_spans() -> None:
-    assert spans([]) == ""
-    assert spans([4]) == "4"
-    assert spans([1, 2, 3, 7, 9, 10]) == "1-3, 7, 9-10"
+def test_gaps() -> None:
+    assert gaps_between([]) == ([], 0)
+    assert gaps_between([(0, 0), (2, 2), (1, 1)]) == ([], 3)
+    assert gaps_between([(4, 4), (1, 2), (9, 9), (2, 5)]) == ([(0, 0), (6, 8)], 10)
+
+
+def test_an_earlier_attempt_that_is_lost_is_said(sound: Path, tmp_path: Path) -> None:
+    def change(content: bytearray) -> None:
+        flag = b'["over-limit:reflected"]'
+        assert content.count(flag) == 1
+        content[content.index(flag) + 3] ^= 1
+
+    file = damaged(sound, tmp_path, change)
+    with sqlite3.connect(file) as connection:  # so that it is not the last row
+        connection.execute("UPDATE reading SET rowid = 1000 WHERE schedule_index = 39")
+        connection.execute("UPDATE reading SET rowid = 40 WHERE attempt = 1")
+        connection.execute("UPDATE reading SET rowid = 41 WHERE schedule_index = 39")
+    connection.close()
+    repaired = recovered(file)
+    assert (repaired.readings, repaired.lost) == (READINGS, ("1 attempts at readings that were tried again",))
+
+
+@pytest.mark.parametrize("detail", ['{"first": 2}', '{"first": "x", "last": 3}', '{"first": 0, "last": null}'])
+def test_events_and_words_about_the_run_that_make_no_sense(sound: Path, tmp_path: Path, detail: str) -> None:
+    file = damaged(sound, tmp_path, lambda _content: None)
+    with sqlite3.connect(file) as connection:
+        connection.execute("UPDATE event SET kind = 'skipped', detail = ?", (detail,))
+        connection.execute("""UPDATE meta SET value = '"many"' WHERE key = 'readings_planned'""")
+        connection.execute("UPDATE meta SET value = '[1, 2]' WHERE key = 'title'")
+    connection.close()
+    repaired = recovered(file)
+    assert (repaired.readings, repaired.planned) == (READINGS + 1, READINGS)
+    assert sorted(repaired.lost) == ["what the run says of its readings planned", "what the run says of its title"]
 
 
 def test_the_page_size_is_that_of_the_archives(sound: Path) -> None:
