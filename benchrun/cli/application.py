@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from importlib import import_module
+from typing import Any
 
 import click
 
@@ -58,6 +59,16 @@ class LazyGroup(click.Group):
             return None
         command: click.Command = import_module(f"benchrun.cli.{cmd_name}").command
         return command
+
+    def invoke(self, ctx: click.Context) -> Any:
+        """Carry the command out. A broken pipe is kept from click, which takes it for standard output's and is silent.
+
+        That of standard output never comes here (cli.streams). Raises RuntimeError for one that does.
+        """
+        try:
+            return super().invoke(ctx)
+        except OSError as error:
+            raise RuntimeError(f"{type(error).__name__}: {error}") from error
 
 
 @click.group(cls=LazyGroup, epilog=EXIT_CODES, context_settings={"help_option_names": ["-h", "--help"]})

@@ -14,6 +14,7 @@ from benchrun.archive import open_archive
 from benchrun.contract.clock import Clock
 from benchrun.contract.rehearsal import ENTRY_POINT_GROUP, Rehearsal, RehearsalPlugin
 from benchrun.errors import CalibrationError, FileProblemsError, InputError, LinkError, PluginError, Problem
+from benchrun.flow.channel import ServedElsewhere
 from benchrun.flow.inputs import Inputs, absent_recipes, load_inputs
 from benchrun.flow.known import Made, newest
 from benchrun.flow.measure import Setting, find_calibrations, given_calibrations, measure, prepare
@@ -161,7 +162,7 @@ def rehearsal_of(inputs: Inputs, seed: int | None, real_time: bool) -> Iterator[
 
 def _open(plugin: RehearsalPlugin, inputs: Inputs, channel: str | None, seed: int | None, real_time: bool) -> Rehearsal:
     if channel is not None:
-        return plugin.open_channel(channel, real_time=real_time)
+        return ServedElsewhere(plugin.open_channel(channel, real_time=real_time), channel)
     wiring = inputs.bench.wiring(inputs.kit)
     return plugin.open_in_process(wiring, seed=DEFAULT_SEED if seed is None else seed, real_time=real_time)
 

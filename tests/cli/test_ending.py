@@ -133,3 +133,11 @@ def test_on_a_terminal_a_run_that_ended_early_is_told_how_to_go_on(
     said = capsys.readouterr()
     assert (f"`benchrun resume {tmp_path}` goes on with it." in said.err) is told
     assert said.out == f"{tmp_path}\n"
+
+
+def test_a_broken_pipe_that_is_not_standard_output_is_a_defect_and_said(flow, benchrun_command, monkeypatch, tmp_path):
+    monkeypatch.setattr(tempfile, "tempdir", str(tmp_path))
+    flow.show = fail_with(BrokenPipeError(32, "Broken pipe"))
+    ended = benchrun_command("show", "runs/x")
+    assert ended.code == 1
+    assert "A defect of benchrun itself: RuntimeError: BrokenPipeError: [Errno 32] Broken pipe" in ended.err

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import gc
+import logging
+import warnings
 from collections.abc import Iterator
 from contextlib import closing
 from pathlib import Path
@@ -11,11 +14,12 @@ import pytest
 
 from benchrun.archive import open_archive
 from benchrun.cli.ending import run_to_end
-from benchrun.errors import IdentityError, InputError, LinkError
+from benchrun.errors import IdentityError, InputError, LinkError, UnsafeError
 from benchrun.flow import RunResult, ServedBench, rehearse, simulate
+from benchrun.flow.channel import ServedTime
 from tests.benchmarks.transports import Found, by_every_way, to_sockets
 from tests.flow.conftest import Way
-from tests.flow.stage import BENCH, COLD, SMALL, Silence, recipes_in
+from tests.flow.stage import BENCH, COLD, HOT, SMALL, Silence, recipes_in
 
 
 @pytest.fixture(scope="module")
@@ -130,3 +134,65 @@ def test_tones_that_are_not_what_the_bench_file_says_are_refused(
     other.write_text(other.read_text("utf-8").replace("tones: coherent", "tones: retuned"), "utf-8")
     with pytest.raises(IdentityError, match="the bench file says `tones: retuned`, the instrument says coherent"):
         cold(recipes, tmp_path / "runs", other)
+
+
+class Unplugs(Silence):
+    """Takes a served bench away as soon as the device is at its bias."""
+
+    def __init__(self, bench: ServedBench) -> None:
+        super().__init__()
+        self._bench = bench
+
+    def phase(self, *told: Any) -> None:
+        """Stop serving."""
+        self._bench.close()
+
+
+@pytest.fixture
+def refused() -> Iterator[None]:
+    """pyvisa-py leaves a socket that was refused to the garbage collector, which complains; log records hold it."""
+    logging.disable()
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", ResourceWarning)
+        yield
+        gc.collect()
+    logging.disable(logging.NOTSET)
+
+
+@pytest.mark.usefixtures("refused")
+def test_a_served_bench_that_goes_away_is_a_fault_and_nothing_is_said_to_be_off(small: Way, tmp_path: Path) -> None:
+    bench = tmp_path / "served.bench.yaml"
+    with closing(simulate(small.recipes / BENCH, 1, bench)) as serving, pytest.raises(UnsafeError) as ended:
+        rehearse(small.recipes / HOT, small.runs, bench=bench, listener=Unplugs(serving))
+    for said in ("PUMP NOT CONFIRMED", "DRAIN NOT CONFIRMED", "gate not touched", "readings are safe in"):
+        assert said in str(ended.value)
+
+
+class Gone:
+    """A clock whose channel breaks after the first answer."""
+
+    virtual = True
+
+    def __init__(self) -> None:
+        self._left = 1
+
+    def now_ns(self) -> int:
+        """Answer once."""
+        self._left -= 1
+        if self._left < 0:
+            raise BrokenPipeError(32, "Broken pipe")
+        return 7
+
+    def sleep(self, duration_s: float) -> None:
+        """Break."""
+        raise BrokenPipeError(32, "Broken pipe")
+
+    align = sleep
+
+
+def test_the_time_of_a_bench_that_is_gone_stands_still_and_waiting_for_it_is_told() -> None:
+    clock = ServedTime(Gone(), "127.0.0.1:1")
+    assert [clock.now_ns(), clock.now_ns()] == [7, 7]
+    for wait in (clock.sleep, clock.align):
+        with pytest.raises(LinkError, match=r"127\.0\.0\.1:1: the simulated bench has gone away"):
+            wait(1)
