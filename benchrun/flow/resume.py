@@ -96,7 +96,10 @@ def _remembers(inputs: Inputs, meta: Meta) -> bool:
 
 def _start_ns(archive: ArchiveReader) -> int:
     """Return where in the bench's time the run began."""
-    return next((int(event.detail.get("start_ns", 0)) for event in archive.log("bench-time")), 0)
+    found = next((event.detail.get("start_ns", 0) for event in archive.log("bench-time")), 0)
+    if type(found) is not int or found < 0:
+        raise FolderError(f"{archive.path}: where the run began in the bench's time makes no sense ({found!r:.40}).")
+    return found
 
 
 @contextmanager

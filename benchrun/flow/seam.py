@@ -16,6 +16,7 @@ import numpy as np
 from benchrun.archive import ArchiveReader, ArchiveWriter, Event
 from benchrun.contract.actions import AskAction
 from benchrun.contract.reading import Reading
+from benchrun.errors import FolderError
 from benchrun.schedule import Schedule
 
 #: Flags the readings on both sides of a seam.
@@ -64,7 +65,12 @@ class SeamWriter(ArchiveWriter):
 
 def _first_missing(archive: ArchiveReader) -> int:
     """Return the first reading behind all that were committed, or passed over because the operator said so."""
-    skipped = [int(event.detail["last"]) for event in archive.log("skipped")]
+    try:
+        skipped = [int(event.detail["last"]) for event in archive.log("skipped")]
+    except (KeyError, TypeError, ValueError) as error:
+        raise FolderError(
+            f"{archive.path}: its log of readings that were passed over makes no sense ({error})."
+        ) from error
     return 1 + max(archive.last_index, *skipped, -1)
 
 

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from benchrun.acquire.prompts import Answer, Prompt, RefusingPrompter
+from benchrun.acquire.prompts import Answer, Prompt, RefusingPrompter, RehearsalPrompter
 from benchrun.archive import ArchiveWriter, open_archive
 from benchrun.cli.ending import run_to_end
 from benchrun.contract.reading import Reading
@@ -218,6 +218,54 @@ def test_a_killed_process(whole: Whole, tmp_path: Path, index: int, before: str,
     assert resumed(folder).state == "complete"
     assert digest(folder) == digest(whole.run(KINDS))
     require_once(folder, READINGS)
+
+
+PASSED_OVER = """\
+benchrun: 1
+title: Something that is passed over
+bench: balloon-driver.bench.yaml
+receiver: {if-bandwidth: 1 kHz, averages: 1}
+acquire:
+  - set: {probe.level: 0 dBm, probe.frequency: 2.3 GHz}
+  - read: {name: before, tones: [probe]}
+  - connect: {plane: output, what: open}
+  - read: {name: open, tones: [probe]}
+  - read: {name: again, tones: [probe]}
+  - connect: {plane: output, what: short}
+  - read: {name: short, tones: [probe]}
+  - read: {name: after, tones: [probe]}
+"""
+
+
+@pytest.mark.parametrize("index", [3, 4])
+def test_what_the_operator_passed_over_stays_passed_over(
+    whole: Whole, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, index: int
+) -> None:
+    recipe = whole.recipes / "passed-over.recipe.yaml"
+    kit = "kit: field-kit.kit.yaml\n"
+    recipe.write_text(PASSED_OVER.replace("receiver:", f"{kit}receiver:"), "utf-8")
+    ask = RehearsalPrompter.ask
+    skipping = lambda self, prompt: "skip" if prompt.connect == ("output", "open") else ask(self, prompt)  # noqa: E731
+    with monkeypatch.context() as patch:
+        patch.setattr(RehearsalPrompter, "ask", skipping)
+        folder = cut_at(index, lambda: rehearse(recipe, tmp_path, seed=1, listener=Silence()))
+    resumed(folder)
+    assert [one.name for one in readings(folder)] == ["before", "short", "after"]
+    with open_archive(folder) as archive:
+        (event,) = archive.log("resumed")
+        assert event.detail["index"] == index
+
+
+@pytest.mark.parametrize(
+    ("kind", "detail"), [("skipped", "{}"), ("skipped", '{"last": []}'), ("bench-time", '{"start_ns": "soon"}')]
+)
+def test_a_log_that_makes_no_sense(whole: Whole, hot: Path, kind: str, detail: str) -> None:
+    with ArchiveWriter.append(hot) as writer:
+        writer._connection.execute("DELETE FROM event WHERE kind = ?", (kind,))
+        writer._connection.execute(
+            "INSERT INTO event (kind, text, detail, at_ns, at_utc) VALUES (?, '', ?, 0, '')", (kind, detail)
+        )
+    require_refused(hot, FolderError, "makes no sense")
 
 
 # With thermal memory: the seam
