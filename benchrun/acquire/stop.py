@@ -14,7 +14,7 @@ from collections.abc import Iterator
 from types import FrameType
 
 _NAMES = ("SIGINT", "SIGTERM", "SIGHUP", "SIGBREAK")
-_WORDS = {"SIGINT": "Ctrl-C", "SIGBREAK": "Ctrl-Break", "SIGHUP": "the terminal went away (SIGHUP)"}
+_WORDS = {"SIGINT": "Ctrl-C", "SIGBREAK": "Ctrl-Break", "SIGHUP": "SIGHUP (the terminal went away)"}
 
 
 class StopRequest:

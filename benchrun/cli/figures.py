@@ -55,8 +55,8 @@ def named_figure(key: str, value: object) -> tuple[str, str]:
     name, _, suffix = key.rpartition("_")
     kind = _KIND_OF.get(suffix) if name else None
     match value:
-        case str() if suffix == "utc" and value:
-            return f"{name} (UTC)".replace("_", " "), value[:19].replace("T", " ")
+        case str() if suffix == "utc":
+            return f"{name} (UTC)".replace("_", " "), plain_text(value[:19].replace("T", " "))
         case int() | float() if kind == "level":
             return name.replace("_", " "), level_text(value)
         case int() | float() if kind == "ratio":

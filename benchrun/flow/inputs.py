@@ -15,6 +15,9 @@ from benchrun.recipe import Recipe, files_named, load_recipe, recipe_source
 from benchrun.visa.address import address_fault
 from benchrun.yaml_source import Path_, Source, read_source
 
+#: How the names of files end that are no recipes.
+OTHERS = (".bench.yaml", ".kit.yaml", ".dialect.yaml")
+
 
 @dataclass(frozen=True, slots=True)
 class Inputs:
@@ -52,6 +55,9 @@ def load_inputs(recipe_path: Path, bench_path: Path | None = None, kit_path: Pat
 
     Raises FileProblemsError with the mistakes of all files.
     """
+    if other := next((kind for kind in OTHERS if recipe_path.name.endswith(kind)), None):
+        message = f"this is a {other[1:-5]} file by its name; a recipe is expected here: *.recipe.yaml."
+        raise FileProblemsError([Problem(str(recipe_path), 0, 0, message)])
     registry, folder = load_registry(), recipe_path.parent
     _, source, problems = recipe_source(recipe_path)
     bench_name, kit_name = files_named(source)

@@ -397,3 +397,15 @@ def test_a_folder_that_may_not_be_written(
     )
     assert (ended.code, ended.out) == (2, "")
     assert worlds.untouched
+
+
+@pytest.mark.parametrize(("file", "kind"), [(BENCH, "bench"), (KIT, "kit"), (DIALECT, "dialect")])
+@pytest.mark.parametrize("command", ["levels", "rehearse"])
+def test_another_kind_of_file_in_place_of_a_recipe_is_one_mistake(
+    benchrun_command: Command, recipes: Path, worlds: Worlds, tmp_path: Path, command: str, file: str, kind: str
+) -> None:
+    path = recipes / file
+    ended = benchrun_command(command, path, *(["--to", tmp_path / "runs"] if command == "rehearse" else []))
+    message = f"this is a {kind} file by its name; a recipe is expected here: *.recipe.yaml."
+    assert (ended.code, ended.err) == (2, f"{path}: {message}\n{NOTHING}")
+    assert not worlds.opened

@@ -4,7 +4,15 @@ from __future__ import annotations
 
 import pytest
 
-from benchrun.cli.figures import clock_text, condition_text, count_text, duration_text, level_text, ratio_text
+from benchrun.cli.figures import (
+    clock_text,
+    condition_text,
+    count_text,
+    duration_text,
+    level_text,
+    named_figure,
+    ratio_text,
+)
 
 
 @pytest.mark.parametrize(
@@ -53,3 +61,8 @@ def test_what_is_not_there_is_a_hyphen():
 
 def test_counts():
     assert [count_text(n, "condition") for n in (0, 1, 1377)] == ["no condition", "1 condition", "1377 conditions"]
+
+
+def test_a_time_that_is_not_there_has_the_heading_of_one_that_is():
+    assert named_figure("ended_utc", "") == ("ended (UTC)", "-")
+    assert named_figure("ended_utc", "2026-12-01T13:46:36.658+00:00") == ("ended (UTC)", "2026-12-01 13:46:36")

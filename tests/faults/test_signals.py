@@ -61,7 +61,7 @@ except BaseException as error:
     print(type(error).__name__, outcome.cause, bench.dark, bench.supply_.on, bench.harm, outcome.unconfirmed, sep="|")
     sys.exit(error.exit_code)
 """
-SIGNALS = {"SIGINT": "Ctrl-C", "SIGTERM": "SIGTERM", "SIGHUP": "the terminal went away (SIGHUP)"}
+SIGNALS = {"SIGINT": "Ctrl-C", "SIGTERM": "SIGTERM", "SIGHUP": "SIGHUP (the terminal went away)"}
 pytestmark = pytest.mark.skipif(os.name == "nt", reason="POSIX signals")
 
 
