@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from functools import cached_property
 
 from benchrun.acquire.opened import OpenBench
 from benchrun.contract.actions import SetAction
 from benchrun.contract.capture import Capture
-from benchrun.contract.roles import SignalSource
+from benchrun.contract.roles import SignalSource, WaveReceiver
 from benchrun.errors import InstrumentError
 
 
@@ -16,42 +17,63 @@ class Grid:
     """What was set last. Knows which signals a change moves in frequency, so that they can be blanked for it."""
 
     def __init__(self, bench: OpenBench, signals: Mapping[str, str]) -> None:
+        self.sources = {name: bench.signal(name) for name in signals}
         self._bench = bench
+        self._own = tuple(name for name, source in self.sources.items() if isinstance(source, WaveReceiver))
         self._frequency = {f"{name}.frequency": name for name in signals}
         self._stands: dict[str, float] = {}
         self._capture: Capture | None = None
         self._listed: tuple[str, ...] = ()
-        self._signals = signals
 
-    def hopping(self, action: SetAction) -> list[str]:
+    @cached_property
+    def receiver(self) -> WaveReceiver:
+        """The wave receiver, looked up once. Raises BenchError where the bench has none."""
+        return self._bench.receiver
+
+    def hopping(self, action: SetAction) -> tuple[str, ...]:
         """Return the signals whose frequency `action` changes."""
         frequency, stands = self._frequency, self._stands
-        return [frequency[name] for name, value in action.values if name in frequency and stands.get(name) != value]
+        moving = [frequency[name] for name, value in action.values if name in frequency and stands.get(name) != value]
+        return tuple(moving)
 
     def set(self, action: SetAction) -> None:
         """Set everything, frequencies before the rest. Raises BenchError."""
-        for name, value in sorted(action.values, key=lambda one: one[0] not in self._frequency):
-            self._bench.set(name, value)
-            self._stands[name] = value
+        frequency, later = self._frequency, []
+        for one in action.values:
+            if one[0] in frequency:
+                self._set(*one)
+                if frequency[one[0]] in self._own:
+                    self._capture = None
+            else:
+                later.append(one)
+        for one in later:
+            self._set(*one)
+
+    def _set(self, name: str, value: float) -> None:
+        self._bench.set(name, value)
+        self._stands[name] = value
 
     def stands(self, capture: Capture) -> bool:
         """Whether the receiver is set up for this already."""
-        return capture == self._capture and self._at(capture)
+        return capture is self._capture or capture == self._capture
 
-    def moving(self, capture: Capture) -> list[str]:
+    def moving(self, capture: Capture) -> tuple[str, ...]:
         """Return the signals that setting up for `capture` moves."""
-        moved = [] if self._at(capture) and len(capture.frequencies_hz) == 1 else self._receivers_own()
-        return [*moved, *self._followers(capture), *self._listed]
+        grid, stands = capture.frequencies_hz, self._stands
+        moved = tuple(name for name in self._own if len(grid) > 1 or stands.get(f"{name}.frequency") != grid[0])
+        return moved + self._followers(capture) + self._listed if capture.follow or self._listed else moved
 
     def set_up(self, capture: Capture) -> None:
         """Set up the receiver, and the lists of sources that follow it. Raises BenchError."""
         self._capture = None
-        self._leave_lists()
-        for name in self._followers(capture):
-            self._load_list(name, capture)
-        self._bench.receiver.configure(capture)
+        if self._listed:
+            self._leave_lists()
+        if capture.follow:
+            for name in self._followers(capture):
+                self._load_list(name, capture)
+        self.receiver.configure(capture)
         grid = capture.frequencies_hz
-        for name in self._receivers_own():
+        for name in self._own:
             self._stands[f"{name}.frequency"] = grid[0] if len(grid) == 1 else math.nan
         self._capture = capture
 
@@ -59,21 +81,13 @@ class Grid:
         """Believe nothing of the receiver's grid: somebody else had the bench."""
         self._capture = None
 
-    def _at(self, capture: Capture) -> bool:
-        """Whether the receiver's own signal is at the one point of the grid (a sweep is where it was set up)."""
-        grid = capture.frequencies_hz
-        return len(grid) > 1 or all(self._stands.get(f"{name}.frequency") == grid[0] for name in self._receivers_own())
-
-    def _receivers_own(self) -> list[str]:
-        receiver = self._bench.receiver
-        return [name for name in self._signals if self._bench.signal(name) is receiver]
-
-    def _followers(self, capture: Capture) -> list[str]:
-        own = self._receivers_own()
-        return [name for name in capture.tones if name in self._signals and name not in own] if capture.follow else []
+    def _followers(self, capture: Capture) -> tuple[str, ...]:
+        """Return the signals that follow the receiver's sweep."""
+        tones = capture.tones if capture.follow else ()
+        return tuple(name for name in tones if name in self.sources and name not in self._own)
 
     def _load_list(self, name: str, capture: Capture) -> None:
-        source = self._bench.signal(name)
+        source = self.sources[name]
         if not isinstance(source, SignalSource):
             raise InstrumentError(
                 f"{name} cannot follow the receiver: its instrument has no list. Step it point by point"
@@ -84,7 +98,7 @@ class Grid:
 
     def _leave_lists(self) -> None:
         for name in self._listed:
-            source = self._bench.signal(name)
+            source = self.sources[name]
             if isinstance(source, SignalSource):
                 source.leave_list()
         self._listed = ()

@@ -10,12 +10,13 @@ Rules kept here, whatever the runner, the instruments or the operator do:
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from enum import Enum, auto
+from collections.abc import Mapping
+from enum import IntEnum, auto
+from functools import lru_cache
 from typing import NamedTuple
 
 
-class State(Enum):
+class State(IntEnum):
     """Where an acquisition is."""
 
     RESTING = auto()  # RF off, drain off
@@ -31,7 +32,7 @@ class State(Enum):
     UNSAFE = auto()
 
 
-class Event(Enum):
+class Event(IntEnum):
     """What the runner wants, or tells of what it did."""
 
     RADIATE = auto()
@@ -52,7 +53,7 @@ class Event(Enum):
     UNCONFIRMED = auto()
 
 
-class Verb(Enum):
+class Verb(IntEnum):
     """What the runner is to do."""
 
     RF_OFF = auto()
@@ -72,6 +73,7 @@ class Command(NamedTuple):
     signal: str = ""
 
 
+Signals = tuple[str, ...] | frozenset[str]
 #: Stands for RESTING or BIASED, whichever holds.
 _REST = State.RESTING
 _OUT = {Event.FAIL: State.MAKING_SAFE}
@@ -108,8 +110,30 @@ COMMANDS: Mapping[Event, tuple[Command, ...]] = {
     Event.STOP: (Command(Verb.MAKE_SAFE),),
     Event.FAIL: (Command(Verb.MAKE_SAFE),),
 }
-#: After these no signal is on.
-_DARK = frozenset({Event.REST, Event.WORK, Event.ASK})
+#: After HOP the signals named are off, after RADIATE they alone are on, after the others none is.
+_SWITCHES = frozenset({Event.RADIATE, Event.HOP, Event.REST, Event.WORK, Event.ASK})
+#: After these it is known whether a drain is up.
+_BIAS = frozenset({Event.WORKED, Event.LOWERED})
+#: What these mean depends on what is on.
+_UNRESOLVED = frozenset({State.RADIATING, State.RESTING, State.DONE})
+
+
+class _Way(NamedTuple):
+    """What an event leads to, and whether that is all: no switching, no bias, no state to resolve."""
+
+    state: State
+    commands: tuple[Command, ...]
+    plain: bool
+
+
+def _way(event: Event, state: State) -> _Way:
+    plain = event not in _SWITCHES | _BIAS and state not in _UNRESOLVED
+    return _Way(state, COMMANDS.get(event, ()), plain)
+
+
+_WAYS = {
+    state: {event: _way(event, target) for event, target in events.items()} for state, events in TRANSITIONS.items()
+}
 
 
 class Machine:
@@ -120,39 +144,26 @@ class Machine:
         self.rf: frozenset[str] = frozenset()
         self.bias_up = False
 
-    def feed(self, event: Event, signals: Iterable[str] = (), *, bias_up: bool = False) -> tuple[Command, ...]:
+    def feed(self, event: Event, signals: Signals = (), *, bias_up: bool = False) -> tuple[Command, ...]:
         """Take an event and return what is to be done now, in order.
 
         `signals` are those wanted on (RADIATE) or about to change frequency (HOP); `bias_up` says after WORKED whether
         the procedure left a drain on. Raises RuntimeError for an event that is not allowed here: a defect of ours.
         """
-        state = TRANSITIONS[self.state].get(event)
-        if state is None:
+        way = _WAYS[self.state].get(event)
+        if way is None:
             raise RuntimeError(f"{event.name} while {self.state.name}: the runner broke the order of an acquisition")
-        rf = self._switched(event, frozenset(signals))
-        if event is Event.WORKED:
-            self.bias_up = bias_up
-        elif event is Event.LOWERED:
-            self.bias_up = False
+        state, commands, plain = way
+        if plain:
+            self.state = state
+            return commands
+        if event in _SWITCHES:
+            self.rf, switching = _switched(self.rf, event, signals)
+            commands = switching + commands
+        elif event in _BIAS:
+            self.bias_up = bias_up and event is Event.WORKED
         self.state = self._resolved(state)
-        return (*rf, *COMMANDS.get(event, ()))
-
-    def _switched(self, event: Event, signals: frozenset[str]) -> tuple[Command, ...]:
-        """Return the switching of RF that an event asks for, off before on, and remember it."""
-        if event is Event.RADIATE:
-            wanted = signals
-        elif event is Event.HOP:
-            wanted = self.rf - signals
-        elif event in _DARK:
-            wanted = frozenset()
-        else:
-            return ()
-        if wanted == self.rf:
-            return ()
-        off = tuple(Command(Verb.RF_OFF, name) for name in sorted(self.rf - wanted))
-        on = tuple(Command(Verb.RF_ON, name) for name in sorted(wanted - self.rf))
-        self.rf = wanted
-        return off + on
+        return commands
 
     def _resolved(self, state: State) -> State:
         """Return the state that a transition means: at rest or biased where no signal is on."""
@@ -163,3 +174,16 @@ class Machine:
         if state is State.DONE:
             self.rf, self.bias_up = frozenset(), False
         return state
+
+
+@lru_cache(maxsize=256)
+def _switched(rf: frozenset[str], event: Event, signals: Signals) -> tuple[frozenset[str], tuple[Command, ...]]:
+    """Return the signals that are on after an event, and the switching that leads there, off before on."""
+    wanted: frozenset[str] = frozenset()
+    if event is Event.RADIATE:
+        wanted = frozenset(signals)
+    elif event is Event.HOP:
+        wanted = rf.difference(signals)
+    off = [Command(Verb.RF_OFF, name) for name in sorted(rf - wanted)]
+    on = [Command(Verb.RF_ON, name) for name in sorted(wanted - rf)]
+    return wanted, (*off, *on)

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from typing import Any, Protocol
+from typing import Any
 
 from benchrun.acquire.access import Access
+from benchrun.acquire.ahead import Ahead, Planned, Timetable
 from benchrun.acquire.grid import Grid
-from benchrun.acquire.machine import Event, Machine, Verb
+from benchrun.acquire.machine import Event, Machine, Signals, Verb
 from benchrun.acquire.opened import OpenBench
 from benchrun.acquire.outputs import Outputs
 from benchrun.acquire.progress import Progress
@@ -17,10 +18,11 @@ from benchrun.acquire.prompts import Prompt, Prompter
 from benchrun.acquire.safe_state import lower
 from benchrun.acquire.stop import StopRequest
 from benchrun.acquire.take import TRIPPED, Taker
+from benchrun.acquire.telling import Teller
 from benchrun.acquire.witness import Witness
 from benchrun.archive.meta import Event as Happening
 from benchrun.archive.write import ArchiveWriter
-from benchrun.contract.actions import Action, AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
+from benchrun.contract.actions import AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.clock import Clock
 from benchrun.contract.hooks import StepSpec
 from benchrun.contract.reading import Reading
@@ -28,39 +30,8 @@ from benchrun.errors import InstrumentError, StoppedError
 
 #: In virtual time the timetable begins at the next whole multiple of this: opening and preparing a bench takes less.
 LEAD_NS = 5_000_000_000
-
-
-class Planned(Protocol):
-    """An action of the schedule, what is in force when it is done, and the number of the reading that it takes."""
-
-    @property
-    def action(self) -> Action:
-        """What is to be done."""
-
-    @property
-    def conditions(self) -> Mapping[str, float | str]:
-        """What is in force."""
-
-    @property
-    def reading_index(self) -> int | None:
-        """The reading's number, None where it takes none."""
-
-
-class Timetable(Protocol):
-    """The schedule, as far as the acquisition goes."""
-
-    @property
-    def duration_s(self) -> float:
-        """How long all of it is expected to take."""
-
-    def __len__(self) -> int:
-        """Return the number of readings."""
-
-    def walk(self, start: int = 0) -> Iterator[Planned]:
-        """Yield the actions, from a reading on."""
-
-    def start_ns(self, index: int) -> int:
-        """Return when a reading is planned to start."""
+#: A wait of this length is ended at once by a request to stop; a shorter one is soon over.
+LONG_S = 0.2
 
 
 @dataclass(frozen=True, slots=True)
@@ -82,20 +53,17 @@ class Performer:
     """Does what a schedule says. Raises BenchError, StoppedError, KeyboardInterrupt: the runner makes safe."""
 
     def __init__(self, around: Surroundings, machine: Machine, witness: Witness) -> None:
-        self.flagged = 0
         self.skipped = 0
         self._around = around
         self._machine = machine
         self._witness = witness
-        self._bench = around.bench
         self._grid = Grid(around.bench, around.outputs.signals)
-        self._taker = Taker(around.bench, around.outputs, around.clock, witness)
+        self._taker = Taker(around.bench, around.outputs, around.clock, witness, self._grid)
+        self._teller = Teller(around.progress, around.schedule)
         self._skipping: list[int] | None = None
+        self._radiating: tuple[str, ...] = ()
         self._origin_ns = 0
-        self._started_s = 0.0
-        self._asked_s = 0.0
-        self._phase = ""
-        self._does: Mapping[type, Callable[[Any, Planned], None]] = {
+        self._does: Mapping[type, Callable[[Any, Ahead], None]] = {
             SetAction: self._set,
             SettleAction: self._settle,
             ReadAction: self._read,
@@ -103,22 +71,25 @@ class Performer:
             ProcedureAction: self._work,
         }
 
+    @property
+    def flagged(self) -> int:
+        """How many readings were flagged."""
+        return self._teller.flagged
+
     def begin(self) -> None:
         """Start the timetable now; in virtual time always at the same moment, so that a rehearsal can be done again."""
         clock = self._around.clock
         clock.align((clock.now_ns() // LEAD_NS + 1) * LEAD_NS)
         self._origin_ns = clock.now_ns()
-        self._started_s = time.monotonic()
+        self._teller.begin()
 
-    def perform(self, planned: Planned, following: Action | None) -> None:
-        """Carry out one action; for a reading `following` it the receiver is set up before RF settles."""
-        action = planned.action
-        if self._skipping is not None and not isinstance(action, AskAction):
-            self._skip(planned)
-            return
-        if isinstance(action, SettleAction) and isinstance(following, ReadAction):
-            self._set_up(following)
-        self._does[type(action)](action, planned)
+    def perform(self, ahead: Ahead) -> None:
+        """Carry out one action."""
+        action = ahead.planned.action
+        if self._skipping is None or isinstance(action, AskAction):
+            self._does[type(action)](action, ahead)
+        else:
+            self._skip(ahead.planned)
 
     def finish(self) -> None:
         """Write down what is not written yet."""
@@ -126,18 +97,22 @@ class Performer:
 
     # RF
 
-    def _feed(self, event: Event, signals: Iterable[str] = ()) -> None:
+    def _feed(self, event: Event, signals: Signals = ()) -> None:
         """Tell the machine, and switch RF as it says."""
         for verb, signal in self._machine.feed(event, signals):
-            if verb is Verb.RF_OFF:
-                self._bench.signal(signal).output(False)
-            elif verb is Verb.RF_ON:
-                self._bench.signal(signal).output(True)
+            if signal:
+                self._grid.sources[signal].output(verb is Verb.RF_ON)
 
-    def _blanked(self, moving: Iterable[str], change: Callable[[], None]) -> None:
+    def _radiate(self, signals: tuple[str, ...]) -> None:
+        """Have exactly these signals on; nothing is done where that is so already."""
+        if signals != self._radiating or not signals:
+            self._feed(Event.RADIATE if signals else Event.REST, signals)
+            self._radiating = signals
+
+    def _blanked(self, moving: Signals, change: Callable[[], None]) -> None:
         """Do something that moves signals in frequency, with those off; afterwards what was on is on again."""
         radiating = self._machine.rf
-        if radiating.isdisjoint(moving := tuple(moving)):
+        if radiating.isdisjoint(moving):
             change()
             return
         self._feed(Event.HOP, moving)
@@ -146,13 +121,16 @@ class Performer:
 
     # Actions
 
-    def _set(self, action: SetAction, _planned: Planned) -> None:
+    def _set(self, action: SetAction, _ahead: Ahead) -> None:
         self._blanked(self._grid.hopping(action), lambda: self._grid.set(action))
 
-    def _settle(self, action: SettleAction, _planned: Planned) -> None:
-        self._feed(Event.RADIATE if action.signals else Event.REST, action.signals)
+    def _settle(self, action: SettleAction, ahead: Ahead) -> None:
+        """Let RF settle, with the receiver set up before for the reading that follows."""
+        if isinstance(ahead.following, ReadAction):
+            self._set_up(ahead.following)
+        self._radiate(action.signals)
         clock = self._around.clock
-        if clock.virtual:
+        if clock.virtual or action.duration_s < LONG_S:
             clock.sleep(action.duration_s)
             return
         with self._around.stop.waiting():
@@ -164,21 +142,22 @@ class Performer:
         if capture is not None and capture.waves and not self._grid.stands(capture):
             self._blanked(self._grid.moving(capture), lambda: self._grid.set_up(capture))
 
-    def _read(self, action: ReadAction, planned: Planned) -> None:
-        around, index = self._around, planned.reading_index
-        if index is None:
+    def _read(self, action: ReadAction, ahead: Ahead) -> None:
+        planned, machine = ahead.planned, self._machine
+        if planned.reading_index is None:
             raise RuntimeError("a reading without a number in the schedule")
         self._set_up(action)
-        self._feed(Event.RADIATE if action.signals else Event.REST, action.signals)
-        self._feed(Event.READ)
-        drains = around.outputs.drains_below_v if self._machine.bias_up else ()
-        start_ns = self._origin_ns + around.schedule.start_ns(index)
-        reading = self._taker.take(index, action, planned.conditions, start_ns, drains)
-        self._feed(Event.TAKEN)
-        around.writer.commit(reading)
-        self._feed(Event.COMMITTED)
-        self._tell(reading)
-        self._require_untripped(reading)
+        self._radiate(action.signals)
+        machine.feed(Event.READ)
+        drains = self._around.outputs.drains_below_v if machine.bias_up else ()
+        start_ns = self._origin_ns + ahead.start_ns
+        reading = self._taker.take(planned.reading_index, action, planned.conditions, start_ns, drains)
+        machine.feed(Event.TAKEN)
+        self._around.writer.commit(reading)
+        machine.feed(Event.COMMITTED)
+        self._teller.committed(reading, ahead.start_ns)
+        if reading.flags:
+            self._require_untripped(reading)
 
     @staticmethod
     def _require_untripped(reading: Reading) -> None:
@@ -189,26 +168,32 @@ class Performer:
                 "Find out why before the trip is cleared"
             )
 
-    def _work(self, action: ProcedureAction, _planned: Planned) -> None:
+    def _work(self, action: ProcedureAction, _ahead: Ahead) -> None:
         around = self._around
         execute = around.steps[action.step].execute
         if execute is None:
             raise RuntimeError(f"step {action.step} has a procedure in the schedule and no way to execute it")
         said: list[str] = []
-        access = Access(around.bench, around.outputs, around.clock, around.stop, said.append)
+
+        def say(text: str) -> None:
+            said.append(text)
+            around.progress.phase(action.step, text)
+
+        access = Access(around.bench, around.outputs, around.clock, around.stop, say)
         self._feed(Event.WORK)
+        self._radiating = ()
         found = execute(action.parameters, access)
         self._machine.feed(Event.WORKED, bias_up=access.used_bias or self._machine.bias_up)
         self._grid.forget()
-        around.progress.phase(action.step, ". ".join(said))
         self._log(
             "procedure", ". ".join(said) or action.step, step=action.step, parameters=action.parameters, found=found
         )
 
-    def _ask(self, action: AskAction, _planned: Planned) -> None:
+    def _ask(self, action: AskAction, _ahead: Ahead) -> None:
         self._end_skipping()
         around = self._around
         self._feed(Event.ASK)
+        self._radiating = ()
         self._grid.forget()
         report = lower(around.bench, around.outputs, around.clock, self._witness.look)
         if not report.safe:
@@ -218,7 +203,7 @@ class Performer:
         since_s = time.monotonic()
         with around.stop.waiting():
             answer = around.prompter.ask(Prompt(action.text, action.cautions, self._confirmed(), action.connect))
-        self._asked_s += time.monotonic() - since_s
+        self._teller.leave_out(time.monotonic() - since_s)
         self._log("operator", action.text, answer=answer, read_back=report.text, connect=action.connect)
         if answer == "stop":
             raise StoppedError(f"the operator stopped at: {action.text}")
@@ -251,21 +236,6 @@ class Performer:
             self._log(
                 "skipped", f"{len(skipped)} readings were skipped by the operator", first=skipped[0], last=skipped[-1]
             )
-
-    # Telling
-
-    def _tell(self, reading: Reading) -> None:
-        progress, schedule = self._around.progress, self._around.schedule
-        self.flagged += bool(reading.flags)
-        if reading.name != self._phase:
-            self._phase = reading.name
-            progress.phase(reading.name, "")
-        elapsed_s = time.monotonic() - self._started_s - self._asked_s
-        done = min(max(schedule.start_ns(reading.index) * 1e-9 / (schedule.duration_s or 1.0), 1e-9), 1.0)
-        left_s, bench_left_s = elapsed_s * (1.0 - done) / done, schedule.duration_s * (1.0 - done)
-        progress.reading(
-            reading.index, len(schedule), reading.conditions, elapsed_s, left_s, bench_left_s, reading.flags
-        )
 
     def _log(self, kind: str, text: str, **detail: Any) -> None:
         self._around.writer.log(Happening(kind, text, detail, self._around.clock.now_ns()))

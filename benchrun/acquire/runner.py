@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-import contextlib
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Mapping
 from typing import TYPE_CHECKING
 
 from benchrun.acquire import ending
+from benchrun.acquire.ahead import Timetable, look_ahead
 from benchrun.acquire.machine import Event, Machine
 from benchrun.acquire.opened import OpenBench
 from benchrun.acquire.outcome import Outcome, attach
 from benchrun.acquire.outputs import outputs_of
-from benchrun.acquire.performer import Performer, Planned, Surroundings, Timetable
+from benchrun.acquire.performer import Performer, Surroundings
 from benchrun.acquire.progress import Progress
 from benchrun.acquire.prompts import Prompter, require_somebody
 from benchrun.acquire.safe_state import SafeReport, make_safe
@@ -19,7 +19,6 @@ from benchrun.acquire.stop import StopRequest
 from benchrun.acquire.witness import Witness
 from benchrun.archive.meta import Event as Happening
 from benchrun.archive.write import ArchiveWriter
-from benchrun.contract.actions import Action, AskAction
 from benchrun.contract.clock import Clock
 from benchrun.contract.hooks import StepSpec
 from benchrun.errors import DiskError, InstrumentError
@@ -49,18 +48,12 @@ def acquire(
     nobody is there; nothing was switched on. All committed readings are in the archive in each case. Bench and archive
     are opened and closed by the caller.
     """
-    _require_somebody(schedule, prompter)
+    require_somebody(schedule.prompts, prompter)
     around = Surroundings(
         schedule, open_bench, outputs_of(bench), steps, writer, clock, prompter, progress, stop or StopRequest()
     )
     with around.stop.listening():
         return _Run(around, start).to_end()
-
-
-def _require_somebody(schedule: Timetable, prompter: Prompter) -> None:
-    """Refuse prompts that nobody can answer, before anything is switched on."""
-    if not prompter.available:
-        require_somebody(sum(isinstance(planned.action, AskAction) for planned in schedule.walk()), prompter)
 
 
 class _Run:
@@ -98,10 +91,10 @@ class _Run:
         try:
             self._begin()
             self._performer.begin()
-            for planned, following in _with_next(self._around.schedule.walk(self._start)):
-                if stop.requested:
+            for ahead in look_ahead(self._around.schedule, self._start, timed=self._around.clock.virtual):
+                if stop.reason:
                     break
-                self._performer.perform(planned, following)
+                self._performer.perform(ahead)
             stopped = KeyboardInterrupt() if stop.requested else None
             self._machine.feed(Event.STOP if stopped else Event.END)
             stop.deaf = True
@@ -156,13 +149,3 @@ class _Run:
         except DiskError as disk:
             return error or disk
         return error
-
-
-def _with_next(walk: Iterator[Planned]) -> Iterator[tuple[Planned, Action | None]]:
-    """Yield each planned action with the action behind it."""
-    with contextlib.suppress(StopIteration):
-        here = next(walk)
-        for ahead in walk:
-            yield here, ahead.action
-            here = ahead
-        yield here, None

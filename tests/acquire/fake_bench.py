@@ -17,7 +17,7 @@ import numpy as np
 from benchrun.acquire.outputs import outputs_of
 from benchrun.archive import Meta
 from benchrun.bench import load_bench
-from benchrun.contract.actions import Action, ReadAction
+from benchrun.contract.actions import Action, AskAction, ReadAction
 from benchrun.contract.capture import Capture, WaveData
 from benchrun.contract.reading import Reading
 from benchrun.errors import InstrumentError, LinkError, NoAnswerError
@@ -319,6 +319,10 @@ class FakeSchedule:
     actions: list[Action]
     slot_s: float = 1.0
     conditions: dict[int, dict[str, float | str]] = field(default_factory=dict)
+
+    @property
+    def prompts(self) -> int:
+        return sum(isinstance(action, AskAction) for action in self.actions)
 
     @property
     def duration_s(self) -> float:

@@ -621,7 +621,13 @@ def test_time_left_shrinks_to_nothing() -> None:
     stage = Stage([action for hz in np.linspace(2.2e9, 2.4e9, 10).tolist() for action in point(hz)], slot_s=3.0)
     stage.run()
     assert stage.progress.indices == list(range(10))
-    assert [bench_left_s for _, bench_left_s in stage.progress.lefts] == pytest.approx(
-        [30.0 - 3.0 * k for k in range(10)]
-    )
-    assert all(left_s >= 0.0 for left_s, _ in stage.progress.lefts)
+    bench_left_s = [bench_left_s for _, bench_left_s in stage.progress.lefts]
+    assert bench_left_s == pytest.approx([30.0 - 3.0 * k for k in range(10)])
+    assert all(left_s > 0.0 for left_s, _ in stage.progress.lefts[:-1])
+    assert stage.progress.lefts[-1][0] == 0.0
+
+
+def test_on_a_real_bench_bench_time_is_time() -> None:
+    stage = Stage([*point(2.2e9), *point(2.3e9)], clock=FakeClock(virtual=False))
+    stage.run()
+    assert all(left_s == bench_left_s for left_s, bench_left_s in stage.progress.lefts)
