@@ -19,6 +19,8 @@ from .made import KNOWN, changed_bench, example_bench, schedule_from
 from .programs import acquires
 
 SLOW = settings(max_examples=40, deadline=None, suppress_health_check=list(HealthCheck))
+#: A few messages, which a round may save.
+LONGEST_WAIT_NS = 5_000_000
 SOURCES = ("probe.level", "probe.frequency", "pump.level", "pump.frequency")
 
 
@@ -149,17 +151,22 @@ def test_every_state_that_sources_are_in_while_rf_is_on_is_among_the_moments_or_
 
 @SLOW
 @given(acquires())
-def test_the_timetable_is_the_sum_of_its_actions(acquire: str) -> None:
-    """With levels that need no ramp every round of a sweep but its first takes the same time."""
+def test_the_timetable_waits_for_its_actions_and_hardly_longer(acquire: str) -> None:
+    """With levels that need no ramp no reading comes late; a round that finds more standing waits.
+
+    Every round but the first is given the second one's time: what the first leaves behind may save a message later.
+    """
     bench = changed_bench(("ramp: 3 dB", "ramp: 99 dB"), ("ramp: 6 dB", "ramp: 99 dB"))
     schedule = schedule_unless_refused(acquire, bench)
     times, at_ns = ActionTimes(bench, Timing(), KNOWN), 0
     for planned in schedule.walk():
         at_ns += times.before_ns(planned.action)
         if planned.reading_index is not None:
-            assert schedule.start_ns(planned.reading_index) == at_ns
+            starts_ns = schedule.start_ns(planned.reading_index)
+            assert 0 <= starts_ns - at_ns <= LONGEST_WAIT_NS
+            at_ns = starts_ns
         at_ns += times.after_ns(planned.action)
-    assert schedule.start_ns(len(schedule)) == at_ns
+    assert 0 <= schedule.start_ns(len(schedule)) - at_ns <= LONGEST_WAIT_NS
 
 
 @SLOW
