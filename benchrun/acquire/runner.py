@@ -96,8 +96,8 @@ class _Run:
                     break
                 self._performer.perform(ahead)
             stopped = KeyboardInterrupt() if stop.requested else None
+            stop.deaf = True  # before the machine moves on: from there nothing but making safe is allowed
             self._machine.feed(Event.STOP if stopped else Event.END)
-            stop.deaf = True
         except BaseException as error:  # every way out, also SystemExit, goes through the safe state
             stop.deaf = True  # nothing is called before this: no signal can come between
             self._machine.feed(Event.FAIL)

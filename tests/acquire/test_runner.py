@@ -19,6 +19,7 @@ from benchrun.acquire import (
     acquire,
     outcome_of,
 )
+from benchrun.acquire.machine import Event, Machine
 from benchrun.acquire.performer import LEAD_NS
 from benchrun.contract.actions import Action, AskAction, ProcedureAction, ReadAction, SetAction, SettleAction
 from benchrun.contract.capture import WaveData
@@ -631,3 +632,26 @@ def test_on_a_real_bench_bench_time_is_time() -> None:
     stage = Stage([*point(2.2e9), *point(2.3e9)], clock=FakeClock(virtual=False))
     stage.run()
     assert all(left_s == bench_left_s for left_s, bench_left_s in stage.progress.lefts)
+
+
+@pytest.mark.parametrize("asked_before", [False, True])
+def test_signals_while_the_run_turns_to_making_safe_do_not_keep_it_from_that(
+    monkeypatch: pytest.MonkeyPatch, asked_before: bool
+) -> None:
+    stage = Stage([UP, *point(2.2e9)])
+    if asked_before:
+        stage.writer = MemoryWriter(on_commit=lambda: stage.stop.request("Ctrl-C"))
+    feed = Machine.feed
+
+    def interrupted(machine: Machine, event: Event, *told: Any, **more: Any) -> Any:
+        commands = feed(machine, event, *told, **more)
+        if event in (Event.END, Event.STOP):
+            stage.stop.request("Ctrl-C")
+            stage.stop.request("Ctrl-C")
+        return commands
+
+    monkeypatch.setattr(Machine, "feed", interrupted)
+    outcome = stage.fails(StoppedError)[1] if asked_before else stage.run()
+    assert outcome.safe.safe
+    assert stage.bench.dark
+    assert stage.bench.supply_.on == {"gate": False, "drain": False}
