@@ -13,6 +13,9 @@ from benchrun.errors import Problem
 from benchrun.quantities import show
 from benchrun.yaml_source import Source
 
+#: Part of a drain's range below which it may count as off: what is left must harm nothing when the gate goes.
+RELEASED_SHARE = 0.1
+
 
 def bench_problems(bench: Bench, source: Source, roles: Mapping[str, str] | None = None) -> list[Problem]:
     """Return every mistake between the parts of a bench; `roles` are those of the installed drivers, where known."""
@@ -76,6 +79,13 @@ def _one_bias(name: str, bias: Bias, source: Source) -> Iterator[Problem]:
         yield source.problem((*where, "over-voltage"), message)
     if bias.pinch_off is not None and not bias.voltage[0] <= bias.pinch_off <= bias.voltage[1]:
         yield source.problem((*where, "pinch-off"), "pinch-off lies outside the voltage range of this bias.")
+    if bias.released_below is not None and bias.released_below > RELEASED_SHARE * largest:
+        most = show(RELEASED_SHARE * largest, "voltage")
+        message = (
+            f"at {show(bias.released_below, 'voltage')} this bias is not off, and the gate would be released: it must "
+            f"be {most} or less, a tenth of its range."
+        )
+        yield source.problem((*where, "released-below"), message)
     for bias_name, key in (("gate", "pinch_off"), ("drain", "released_below")):
         if name == bias_name and getattr(bias, key) is None:
             message = f"'{name}' needs '{key.replace('_', '-')}': the safe state depends on it."

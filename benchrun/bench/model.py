@@ -76,8 +76,8 @@ class Device(Strict):
     reflection: Fraction = Field(description="largest reflection expected at its output")
     conversion: Fraction = Field(description="largest |T22| expected")
     return_gain: Ratio = Field(description="largest |S12 S21| expected")
-    input_match: Ratio = Field(description="reflection of the bench, seen from the device's input")
-    output_match: Ratio = Field(description="reflection of the bench, seen from the device's output")
+    input_match: Ratio = Field(lt=0.0, description="reflection of the bench, seen from the device's input")
+    output_match: Ratio = Field(lt=0.0, description="reflection of the bench, seen from the device's output")
     maximum: Maximum
 
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 
 from benchrun.contract.hooks import BenchAccess
-from benchrun.errors import InstrumentError
+from benchrun.errors import InputError, InstrumentError
 
 GATE, DRAIN = "gate", "drain"
 #: Largest step of each voltage on the way up, and the pause after it.
@@ -36,6 +36,15 @@ class DeviceBias:
         self._limits = {bias: access.bias_limits(bias) for bias in (GATE, DRAIN)}
         self._pinch_off_v = self._limits[GATE].get("pinch_off_v", self._limits[GATE]["voltage_low_v"])
         self.gate_v = self._pinch_off_v
+
+    def require_above_pinch_off(self, lowest_v: float) -> None:
+        """Raise InputError where the gate is to go below its pinch-off, which then cannot be where no current flows."""
+        if lowest_v < self._pinch_off_v:
+            raise InputError(
+                f"bring-up: the gate is to go to {lowest_v:g} V, and the bench file says that {self._pinch_off_v:g} V "
+                "pinches it off. One of them is wrong; with a pinch-off that is none the device would be on while it "
+                "is thought to be off. The drain was not switched on"
+            )
 
     def begin_released(self) -> None:
         """Take the drain off and see it released, whatever stood before; then program all trips, the gate's first."""

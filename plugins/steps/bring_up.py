@@ -6,6 +6,7 @@ This is software: the bench's hardware interlock is what protects people and dev
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping
 from typing import Any
 
@@ -69,8 +70,12 @@ def expand(model: BringUpModel, scope: StepScope) -> Iterator[Action]:
 
 
 def execute(parameters: Mapping[str, Any], access: BenchAccess) -> Mapping[str, float]:
-    """Bring the device up and return gate_v, drain_v, drain_a. Raises InstrumentError with what was found."""
+    """Bring the device up and return gate_v, drain_v, drain_a. Raises InstrumentError with what was found.
+
+    Raises InputError, before anything is switched, where the bench file's pinch-off is none for these gate voltages.
+    """
     bias = DeviceBias(access)
+    bias.require_above_pinch_off(min(float(parameters["gate_v"]), float(parameters.get("gate_low_v", math.inf))))
     bias.begin_released()
     bias.pinch_off()
     bias.raise_drain(float(parameters["drain_v"]))

@@ -46,6 +46,25 @@ def test_the_small_bench_is_right(told: Told) -> None:
             "'5' has no unit: a level is written with one, like -10 dBm.",
         ),
         (
+            "released-below: 1 V",
+            "released-below: 27 V",
+            "27 V",
+            "at 27 V this bias is not off, and the gate would be released: it must be 3 V or less, "
+            "a tenth of its range.",
+        ),
+        (
+            "input-match: -22 dB",
+            "input-match: 22 dB",
+            "22 dB",
+            "'22 dB' must be below 0.",
+        ),
+        (
+            "output-match: -22 dB",
+            "output-match: 0 dB",
+            "0 dB",
+            "'0 dB' must be below 0.",
+        ),
+        (
             "ramp: 3 dB",
             "ramp: -3 dB",
             "-3 dB",

@@ -185,3 +185,15 @@ def test_steps_are_even_small_enough_and_arrive(start: float, end: float, larges
     found = [start, *steps(start, end, largest)]
     assert found[-1] == end or abs(start - end) < 1e-8
     assert all(abs(b - a) <= largest * (1 + 1e-6) for a, b in itertools.pairwise(found))
+
+
+@pytest.mark.parametrize("changes", [{}, {"quiescent": None, "within": None, "gate-range": None}])
+def test_a_pinch_off_above_the_gates_own_voltages_is_refused_before_anything_is_switched(
+    changes: dict[str, Any], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    bench = DeviceOnSupply()
+    limits = bench.bias_limits
+    monkeypatch.setattr(bench, "bias_limits", lambda bias: {**limits(bias), "pinch_off_v": -1.0})
+    with pytest.raises(InputError, match=r"says that -1 V pinches it off"):
+        bring_up.execute(parameters(**changes), bench)
+    assert bench.log == []
