@@ -94,6 +94,11 @@ class Wire:
             return LinkError(
                 f"{self.name}: {self.address!r} is not a VISA address (such as TCPIP0::192.0.2.21::hislip0::INSTR)"
             )
+        if isinstance(error, ValueError):  # pyvisa-py, where a package for this kind of link is not installed
+            return LinkError(
+                f"{self.where}: this computer cannot open such an address yet ({reason(error)}). Install that, or name "
+                "another backend in the bench file (visa: {backend: ...})"
+            )
         return LinkError(
             f"{self.where}: cannot be opened, nothing answers there ({reason(error)}). "
             "Check that it is on, the cable, and the address"

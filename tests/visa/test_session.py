@@ -481,6 +481,18 @@ class TestBus:
         ):
             bench.bus.open("meter", address_of("nowhere"), dialect(), clock=bench.clock)
 
+    def test_a_kind_of_link_that_this_computer_lacks_a_package_for(
+        self, bench: Bench, monkeypatch: pytest.MonkeyPatch
+    ) -> None:
+        """Then the cable is not to blame."""
+
+        def lacking(*_: Any, **__: Any) -> None:
+            raise ValueError("Please install PyUSB to use this resource type.\nNo module named 'usb'")
+
+        monkeypatch.setattr(bench.bus._manager, "open_resource", lacking)
+        with pytest.raises(LinkError, match=r"cannot open such an address yet \(Please install PyUSB.*another backend"):
+            bench.bus.open("meter", "USB0::1::2::3::INSTR", dialect(), clock=bench.clock)
+
     def test_an_address_that_is_none(self, bench: Bench) -> None:
         with Bus("py") as bus, pytest.raises(LinkError, match=r"is not a VISA address"):
             bus.open("meter", "192.0.2.23", dialect(), clock=bench.clock)
