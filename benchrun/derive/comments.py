@@ -32,6 +32,14 @@ def conversion_comment(bound: float, *, coherent: bool) -> str:
     return f"{what}; within {bound:.4f} of the device's own (first-order bound from the bench file)"
 
 
+def match_note(bound: float, *, one_sideband: bool, coherent: bool) -> str:
+    """Return the sentence that stands beside a hot match's numbers, with the largest bound of all of them."""
+    what = f"output reflection is the device's with this bench at port 1: within {bound:.4f} of S22, to first order"
+    if one_sideband:
+        return f"{what}, the bias of the one sideband that was read included"
+    return what if coherent else f"{what}; T22 is a magnitude, as the tones were not captured coherently"
+
+
 def cold_comment(plane: str) -> str:
     """Return the line that says what a reflection without a pump is."""
     return f"S11 column: reflection of the device at the {plane} plane, with this bench at its other port"

@@ -48,7 +48,14 @@ def hot_match_step(work: Work, values: Values) -> Results:
         for chosen, conditions in groups(corrected.points)
         for network in _hot_networks(work, corrected, match, chosen, conditions)
     ]
-    notes = (_drive_note(work, values.get("drive"), corrected.points), *_drift_notes(corrected), *flag_notes(flags))
+    bound = float(np.max(match.reflection_bound))
+    about = comments.match_note(bound, one_sideband=match.conversion is None, coherent=match.coherent)
+    notes = (
+        _drive_note(work, values.get("drive"), corrected.points),
+        about,
+        *_drift_notes(corrected),
+        *flag_notes(flags),
+    )
     return Results((hot_table(corrected, match),), tuple(networks), {}, notes, counted(flags))
 
 

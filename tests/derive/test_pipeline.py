@@ -214,6 +214,7 @@ def test_retuned_receivers_give_the_magnitude_of_t22_within_its_bound():
         if network.quantity == "T22":
             assert np.all(network.values.imag == 0.0)
             assert "magnitude only" in "\n".join(network.comments)
+    assert "T22 is a magnitude, as the tones were not captured coherently" in found.notes[1]
     assert not any("phase" in name for name in found.tables[0].columns if name.startswith("t22"))
     assert not any(name.startswith("optimum_load") for name in found.tables[0].columns)
 
@@ -227,6 +228,7 @@ def test_one_sideband_is_marked_and_inside_its_bound(bench):
         rows = found.tables[0].columns["drive_dbm"] == network.conditions["drive_dbm"]
         assert np.all(np.abs(network.values - s) <= bias[rows] + 1e-5)
     assert "bias of the one sideband that was read included" in "\n".join(found.networks[0].comments)
+    assert "of S22, to first order, the bias of the one sideband that was read included" in found.notes[1]
 
 
 def test_a_run_that_stopped_half_way_is_derived_as_far_as_it_came(bench):

@@ -199,6 +199,9 @@ def test_the_optimum_load_is_near_the_conjugate_at_small_signal(table: dict[str,
 def test_the_notes_say_what_must_be_known(demo: Way) -> None:
     notes = (demo.hot / "notes.txt").read_text("utf-8")
     assert "levelled by 'drive'" in notes
+    assert "with this bench at port 1: within 0.0122 of S22, to first order" in notes
+    assert "sideband" not in notes
+    assert "magnitude" not in notes
     assert list(demo.result.notes) == notes.splitlines()
 
 
