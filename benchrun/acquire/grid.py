@@ -19,7 +19,9 @@ class Grid:
     def __init__(self, bench: OpenBench, signals: Mapping[str, str]) -> None:
         self.sources = {name: bench.signal(name) for name in signals}
         self._bench = bench
-        self._own = tuple(name for name, source in self.sources.items() if isinstance(source, WaveReceiver))
+        #: The signal that the receiver makes itself, one or none, and the name of its frequency.
+        self._own = tuple(name for name, source in self.sources.items() if isinstance(source, WaveReceiver))[:1]
+        self._own_frequency = "".join(f"{name}.frequency" for name in self._own)
         self._frequency = {f"{name}.frequency": name for name in signals}
         self._stands: dict[str, float] = {}
         self._capture: Capture | None = None
@@ -42,7 +44,7 @@ class Grid:
         for one in action.values:
             if one[0] in frequency:
                 self._set(*one)
-                if frequency[one[0]] in self._own:
+                if one[0] == self._own_frequency:
                     self._capture = None
             else:
                 later.append(one)
@@ -60,7 +62,7 @@ class Grid:
     def moving(self, capture: Capture) -> tuple[str, ...]:
         """Return the signals that setting up for `capture` moves."""
         grid, stands = capture.frequencies_hz, self._stands
-        moved = tuple(name for name in self._own if len(grid) > 1 or stands.get(f"{name}.frequency") != grid[0])
+        moved = () if len(grid) == 1 and stands.get(self._own_frequency) == grid[0] else self._own
         return moved + self._followers(capture) + self._listed if capture.follow or self._listed else moved
 
     def set_up(self, capture: Capture) -> None:
@@ -73,8 +75,7 @@ class Grid:
                 self._load_list(name, capture)
         self.receiver.configure(capture)
         grid = capture.frequencies_hz
-        for name in self._own:
-            self._stands[f"{name}.frequency"] = grid[0] if len(grid) == 1 else math.nan
+        self._stands[self._own_frequency] = grid[0] if len(grid) == 1 else math.nan
         self._capture = capture
 
     def forget(self) -> None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -83,13 +83,17 @@ class Performer:
         self._origin_ns = clock.now_ns()
         self._teller.begin()
 
-    def perform(self, ahead: Ahead) -> None:
-        """Carry out one action."""
-        action = ahead.planned.action
-        if self._skipping is None or isinstance(action, AskAction):
-            self._does[type(action)](action, ahead)
-        else:
-            self._skip(ahead.planned)
+    def perform(self, schedule: Iterable[Ahead]) -> None:
+        """Carry out a schedule; return at its end, or where a stop was asked for."""
+        does, stop = self._does, self._around.stop
+        for ahead in schedule:
+            if stop.reason:
+                return
+            action = ahead.planned.action
+            if self._skipping is None or isinstance(action, AskAction):
+                does[type(action)](action, ahead)
+            else:
+                self._skip(ahead.planned)
 
     def finish(self) -> None:
         """Write down what is not written yet."""
@@ -99,9 +103,10 @@ class Performer:
 
     def _feed(self, event: Event, signals: Signals = ()) -> None:
         """Tell the machine, and switch RF as it says."""
+        sources = self._grid.sources
         for verb, signal in self._machine.feed(event, signals):
             if signal:
-                self._grid.sources[signal].output(verb is Verb.RF_ON)
+                sources[signal].output(verb is Verb.RF_ON)
 
     def _radiate(self, signals: tuple[str, ...]) -> None:
         """Have exactly these signals on; nothing is done where that is so already."""

@@ -91,10 +91,8 @@ class _Run:
         try:
             self._begin()
             self._performer.begin()
-            for ahead in look_ahead(self._around.schedule, self._start, timed=self._around.clock.virtual):
-                if stop.reason:
-                    break
-                self._performer.perform(ahead)
+            ahead = look_ahead(self._around.schedule, self._start, timed=self._around.clock.virtual)
+            self._performer.perform(ahead)
             stopped = KeyboardInterrupt() if stop.requested else None
             stop.deaf = True  # before the machine moves on: from there nothing but making safe is allowed
             self._machine.feed(Event.STOP if stopped else Event.END)

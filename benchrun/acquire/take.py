@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import sys
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -43,7 +43,7 @@ class Taker:
         action: ReadAction,
         conditions: Mapping[str, float | str],
         start_ns: int,
-        drains: Iterable[str] = (),
+        drains: Collection[str] = (),
     ) -> Reading:
         """Return reading `index`, started at the timetable's `start_ns` where time is virtual. Raises BenchError.
 
@@ -55,7 +55,8 @@ class Taker:
         started_ns, started_utc = self.clock.now_ns(), utc_now()
         data, coherent = self._waves(capture, flags)
         scalars = self._scalars(action, flags)
-        flags += [f"{TRIPPED}:{drain}" for drain in drains if self.bench.supply(drain).tripped(drain)]
+        if drains:
+            flags += [f"{TRIPPED}:{drain}" for drain in drains if self.bench.supply(drain).tripped(drain)]
         return Reading(
             index=index,
             name=action.name,

@@ -47,6 +47,7 @@ class OpenBench:
         self._bench = bench
         self._identities = identities
         self._settables = bench.settables()
+        self._places: dict[str, Place] = {}
         self.instruments: Mapping[str, Instrument] = MappingProxyType(dict(drivers))
         self.sessions: Mapping[str, Session] = MappingProxyType(dict(sessions))
 
@@ -92,12 +93,12 @@ class OpenBench:
         """
         self._in_range(self.settable(target), value)
         place = self._place(target)
-        return self._driver(place.instrument).set(place.quantity, value)
+        return self.instruments[place.instrument].set(place.quantity, value)
 
     def read(self, target: str) -> float:
         """Read a scalar (SI, dBm) by full name. Raises BenchError."""
         place = self._place(target)
-        return self._driver(place.instrument).read(place.quantity)
+        return self.instruments[place.instrument].read(place.quantity)
 
     def identities(self) -> Mapping[str, Identity]:
         """Return who answered, by the instrument's name."""
@@ -134,6 +135,13 @@ class OpenBench:
         return self.instruments[name]
 
     def _place(self, full_name: str) -> Place:
+        """Return where a full name leads, looked up once."""
+        found = self._places.get(full_name)
+        if found is None:
+            found = self._places[full_name] = self._resolved(full_name)
+        return found
+
+    def _resolved(self, full_name: str) -> Place:
         """Resolve a full name: of a signal, of a bias, or of an instrument itself."""
         first, _, quantity = full_name.partition(".")
         if first in self._bench.signals and quantity in ("frequency", "level"):

@@ -63,7 +63,7 @@ class State:
 
     def conditions(self) -> dict[str, float | str]:
         """Return what is in force, named with units ("pump.level_dbm"); words as they are."""
-        columns = self._columns
-        found: dict[str, float | str] = {columns[name]: value for name, value in self.values.items()}
+        columns = map(self._columns.__getitem__, self.values)
+        found: dict[str, float | str] = dict(zip(columns, self.values.values(), strict=True))
         found.update(self.words)
         return found

@@ -20,6 +20,7 @@ import threading
 import time
 from collections.abc import Iterator
 from contextlib import contextmanager
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any, TypedDict
 
@@ -233,10 +234,10 @@ class Stage:
             if row or n:
                 receiver.output(False)
                 pump.output(False)
-            receiver.set("frequency", hz)
-            pump.set("frequency", hz - 7e6)
+            bench.set("probe.frequency", hz)
+            bench.set("pump.frequency", hz - 7e6)
             if not n:
-                pump.set("level", level_dbm)
+                bench.set("pump.level", level_dbm)
             receiver.configure(Capture(WAVES, TONES, OFFSETS_HZ, (hz,), 1e3))
             receiver.output(True)
             pump.output(True)
@@ -260,7 +261,7 @@ class Stage:
                 Reading(
                     row * len(FREQUENCIES_HZ) + n, "hot", 0, conditions, (hz,), TONES, OFFSETS_HZ, WAVES,
                     found.data, found.coherent, scalars, flags, started_ns, clock.now_ns(),
-                    "2026-12-01T00:00:00.000+00:00",
+                    datetime.now(UTC).isoformat(),
                 )
             )  # fmt: skip
 
