@@ -136,7 +136,8 @@ def _make_absent(
             listener.message(f"Calibration '{name}' is absent: {path} is rehearsed first.")
             chain = (*wanted_by, inputs.path)
             result = rehearse(path, to, bench=bench, seed=seed, real_time=real_time, listener=listener, wanted_by=chain)
-            listener.message(str(result.folder))
+            for line in (*result.notes, str(result.folder)):
+                listener.message(line)
 
 
 @contextmanager

@@ -234,3 +234,10 @@ def test_the_levelling_covers_every_drive_that_is_asked_for(demo: Way) -> None:
         by_level.setdefault(float(row["pump_level_dbm"]), []).append(float(row["power_dbm"]))
     assert max(by_level[min(by_level)]) < 14.0
     assert min(by_level[max(by_level)]) > 30.0
+
+
+def test_a_calibration_that_is_made_on_the_way_shows_its_residuals(shared: Way) -> None:
+    told = "\n".join(shared.messages)
+    for standard in ("open", "short", "match", "offset-short-1", "offset-short-2"):
+        assert re.search(rf"residuals.*\b{standard} 0\.00\d\d", told), told
+    assert re.search(r"levelling 'drive': .* dBm at the input plane", told), told
