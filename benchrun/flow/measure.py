@@ -20,6 +20,7 @@ from benchrun.errors import DiskError, IdentityError, StoppedError, UnsafeError
 from benchrun.flow.fits import require_fit
 from benchrun.flow.folders import make_run_folder
 from benchrun.flow.inputs import Inputs
+from benchrun.flow.kit_prompts import with_label
 from benchrun.flow.known import Made, given, known_of, newest, require_names
 from benchrun.flow.planning import Known, plan
 from benchrun.flow.produce import keep_used, produce
@@ -186,12 +187,13 @@ def _acquired(writer: ArchiveWriter, inputs: Inputs, schedule: Schedule, setting
     from benchrun.visa.session import Bus
 
     clock, steps = setting.clock, inputs.registry.steps
+    prompter = with_label(setting.prompter, inputs.kit)
     with Bus(setting.visa) as bus:
         bench = open_bench(inputs.bench, inputs.registry, bus, clock, setting.addresses or None)
         try:
             _keep_identities(writer, bench, inputs, setting)
             return acquire(
-                schedule, bench, inputs.bench, steps, writer, clock, setting.prompter, setting.listener,
+                schedule, bench, inputs.bench, steps, writer, clock, prompter, setting.listener,
                 start=setting.start,
             )  # fmt: skip
         finally:

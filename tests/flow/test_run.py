@@ -12,12 +12,14 @@ import numpy as np
 import pytest
 import skrf
 
-from benchrun.acquire.prompts import Answer, Prompt
+from benchrun.acquire.prompts import Answer, Prompt, RefusingPrompter
 from benchrun.archive import open_archive
+from benchrun.bench import load_kit
 from benchrun.errors import StoppedError
 from benchrun.flow import ServedBench, run, show, simulate
+from benchrun.flow.kit_prompts import with_label
 from tests.flow.conftest import Way
-from tests.flow.stage import BENCH, CALIBRATE, HOT, LEVEL, SMALL, Silence, recipes_in
+from tests.flow.stage import BENCH, CALIBRATE, HOT, LEVEL, RECIPES, SMALL, Silence, recipes_in
 
 
 class Person:
@@ -85,7 +87,17 @@ def test_the_person_is_asked_for_every_connection_with_rf_and_drain_read_back(ca
     ]
     for prompt in person.prompts:
         assert prompt.confirmed.startswith("RF off and drain off, read back at ")
-    assert "torque" in " ".join([person.prompts[0].text, *person.prompts[0].cautions])
+        assert "Clean, gauge, torque to the connector's value." in prompt.cautions
+        assert prompt.cautions[-1] == "Connector of Field kit, type N, 50 ohm: type N, torque 1.1 N m."
+
+
+def test_a_kit_that_says_nothing_of_its_connectors_is_not_quoted() -> None:
+    kit, _ = load_kit(RECIPES / "field-kit.kit.yaml")
+    prompter = RefusingPrompter()
+    assert kit is not None
+    assert with_label(prompter, None) is prompter
+    assert with_label(prompter, kit.model_copy(update={"connector": None})) is prompter
+    assert not with_label(prompter, kit).available
 
 
 def test_what_is_measured_is_called_real(hot: Path) -> None:
