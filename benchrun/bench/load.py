@@ -11,7 +11,7 @@ from benchrun.bench.kit import Kit, Measured
 from benchrun.bench.model import Bench
 from benchrun.contract.roles import ROLES
 from benchrun.errors import Problem
-from benchrun.yaml_source import Source, check, read_source
+from benchrun.yaml_source import Source, apart_from, check, read_source, salvage
 
 
 def load_bench(path: Path | str, roles: Mapping[str, str] | None = None) -> tuple[Bench | None, list[Problem]]:
@@ -24,12 +24,14 @@ def load_bench(path: Path | str, roles: Mapping[str, str] | None = None) -> tupl
     if source.data is None:
         return None, source.problems
     files: dict[str, str] = {}
-    bench, problems = check(source, Bench, context={"folder": Path(path).parent, "files": files})
+    context = {"folder": Path(path).parent, "files": files}
+    bench, problems = check(source, Bench, context=context)
     problems += source.problems
-    if bench is not None:
+    sound, left_out = (bench, frozenset[str]()) if bench is not None else salvage(source, Bench, context)
+    if sound is not None:
         known = {**dict(zip(ROLES, ROLES, strict=True)), **(roles or {})}
-        bench.remember(Path(path), source.text, known, files)
-        problems += bench_problems(bench, source, roles)
+        sound.remember(Path(path), source.text, known, files)
+        problems += apart_from(bench_problems(sound, source, roles), left_out)
     return (None if problems else bench), sorted(set(problems))
 
 

@@ -16,7 +16,7 @@ from benchrun.recipe.between import problems_between
 from benchrun.recipe.entries import DERIVE, SAVE
 from benchrun.recipe.messages import no_such
 from benchrun.recipe.model import Entry, Place, Recipe, RecipeFile
-from benchrun.yaml_source import Path_, Placed, Source, check, read_source
+from benchrun.yaml_source import Path_, Placed, Source, apart_from, check, read_source, salvage
 
 
 def recipe_source(path: Path) -> tuple[RecipeFile | None, Source, list[Problem]]:
@@ -48,8 +48,10 @@ def load_recipe(path: Path, bench: Bench | None, steps: Mapping[str, StepSpec]) 
     derive, derive_problems = _entries(source, data.get("derive"), "derive", DERIVE)
     save, save_problems = _entries(source, data.get("save"), "save", SAVE)
     problems += [*reader.problems, *derive_problems, *save_problems]
-    if file is not None:
-        problems += problems_between(source, file, derive, None if reader.incomplete else reader.readings, bench)
+    sound, left_out = (file, frozenset[str]()) if file is not None else salvage(source, RecipeFile)
+    if sound is not None:
+        readings = None if reader.incomplete else reader.readings
+        problems += apart_from(problems_between(source, sound, derive, readings, bench), left_out)
     if file is None or problems:
         return None, sorted(set(problems))
     return Recipe(file, acquire, derive, save, path.name, source.text, str(path)), []

@@ -3,6 +3,7 @@
 from benchrun.yaml_source.checking import Strict, check
 from benchrun.yaml_source.places import Mark, Path_, Placed, PlacedList, Source
 from benchrun.yaml_source.reader import MAX_BYTES, MAX_DEPTH, MAX_NODES, read_source, read_text
+from benchrun.yaml_source.salvage import apart_from, salvage
 from benchrun.yaml_source.schema import json_schema
 
 __all__ = [
@@ -15,8 +16,10 @@ __all__ = [
     "PlacedList",
     "Source",
     "Strict",
+    "apart_from",
     "check",
     "json_schema",
     "read_source",
     "read_text",
+    "salvage",
 ]
