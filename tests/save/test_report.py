@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from benchrun.archive import Event
@@ -336,6 +336,7 @@ def test_readings_without_waves_have_no_levels() -> None:
     st.complex_numbers(max_magnitude=0.35),
     st.complex_numbers(max_magnitude=0.9),
 )
+@example(b=1 + 0j, s=0j, t=2.2e-309 + 0j, other=0j)
 def test_the_device_behind_an_optimum_load_takes_into_any_load_what_derive_says(
     b: complex, s: complex, t: complex, other: complex
 ) -> None:

@@ -33,8 +33,8 @@ def source_wave(table: Table) -> ComplexArray:
 def source_of(s: ComplexArray, t: ComplexArray, load: ComplexArray, power_w: FloatArray) -> ComplexArray:
     """Return B (...) as source_wave does, from S22, T22, the optimum load and its power in watt, all (...)."""
     away = load - np.conj(s)
-    turned = np.where(np.abs(away) > 0.0, t / np.where(np.abs(away) > 0.0, away, 1.0), 1.0)
-    b = np.sqrt(power_w / (1.0 - np.abs(load) ** 2)) * np.exp(0.5j * np.angle(turned))
+    turned = np.where(np.abs(away) > 0.0, np.angle(t) - np.angle(away), 0.0)  # no quotient: both may be next to nothing
+    b = np.sqrt(power_w / (1.0 - np.abs(load) ** 2)) * np.exp(0.5j * turned)
     return np.asarray(b - s * load * b - t * np.conj(load * b))
 
 
